@@ -1,0 +1,329 @@
+"""What was found: modes, suspect loops, the model behind them and how far it may be trusted."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass, field
+from typing import Any, Literal, TypeAlias
+
+import numpy as np
+from numpy.typing import NDArray
+
+from polefit.estimates import Estimate
+from polefit.responses import Channel, ResponseSet, Source
+
+Verdict: TypeAlias = Literal["unstable", "undecided", "stable"]
+
+
+@dataclass(frozen=True)
+class Evidence:
+    """One named test of a mode, with its outcome.
+
+    Parameters
+    ----------
+    name : str
+        Short name, such as "stable-model misfit".
+    passed : bool or None
+        Whether the test supports the mode's verdict; None when it could not be made.
+    detail : str
+        One sentence with the numbers.
+    """
+
+    name: str
+    passed: bool | None
+    detail: str
+
+    def __str__(self) -> str:
+        mark = {True: "passed", False: "failed", None: "not made"}[self.passed]
+        return f"{self.name}: {mark}"
+
+
+@dataclass(frozen=True)
+class NodeView:
+    """How one mode shows at one channel.
+
+    Parameters
+    ----------
+    channel : Channel
+        Where.
+    residue : complex
+        Residue of the response at the pole, in its unit times rad/s.
+    residue_std : float or None
+        Standard uncertainty of |residue|.
+    share : float
+        |residue| / |σ or half the spacing| relative to the channel's rms response: how
+        strongly the mode shapes this channel (0 … large).
+    leverage : Estimate or None
+        Damping leverage −dσ/dG = Re(residue) for driving-point impedances, in 1/(s·S).
+    """
+
+    channel: Channel
+    residue: complex
+    residue_std: float | None = None
+    share: float = 0.0
+    leverage: Estimate | None = None
+
+
+@dataclass(frozen=True)
+class Mode:
+    """One natural mode of the circuit as terminated: a conjugate pole pair, or a real pole.
+
+    Parameters
+    ----------
+    pole_rad_per_s : complex
+        The pole, with non-negative imaginary part.
+    covariance : ((float, float), (float, float))
+        Covariance of (Re, Im) of the pole in (rad/s)².
+    frequency_hz, natural_frequency_hz, damping_ratio, growth_rate_per_s : Estimate
+        Im(p)/2π, |p|/2π, −Re(p)/|p| and Re(p).
+    verdict : {"unstable", "undecided", "stable"}
+        By the sign of the growth rate at the stated confidence, all evidence agreeing.
+    probability_unstable : float
+        Probability that Re(p) > 0 given data and model.
+    significance : float
+        Standard deviations by which the mode stands out of the noise, over all channels.
+    in_band : bool
+        Whether it lies inside the band, so that it may decide the verdict.
+    evidence : tuple of Evidence
+        The tests it passed or failed.
+    nodes : tuple of NodeView
+        One for each channel, strongest first.
+    """
+
+    pole_rad_per_s: complex
+    covariance: tuple[tuple[float, float], tuple[float, float]]
+    frequency_hz: Estimate
+    natural_frequency_hz: Estimate
+    damping_ratio: Estimate
+    growth_rate_per_s: Estimate
+    verdict: Verdict
+    probability_unstable: float
+    significance: float
+    in_band: bool
+    evidence: tuple[Evidence, ...] = ()
+    nodes: tuple[NodeView, ...] = ()
+
+    @property
+    def real(self) -> bool:
+        """Whether the mode is a real pole, which grows or decays without ringing."""
+        return self.pole_rad_per_s.imag == 0
+
+
+@dataclass(frozen=True)
+class BackgroundPole:
+    """A pole of the model that is not claimed as a mode, with the reason.
+
+    Parameters
+    ----------
+    pole_rad_per_s : complex
+        The pole, with non-negative imaginary part.
+    reason : str
+        One sentence.
+    """
+
+    pole_rad_per_s: complex
+    reason: str
+
+
+@dataclass(frozen=True)
+class Loop:
+    """A suspect loop: one mode together with the nodes at which it shows.
+
+    Parameters
+    ----------
+    mode : int
+        Index into the modes.
+    nodes : tuple of str
+        Node names, strongest leverage first.
+    """
+
+    mode: int
+    nodes: tuple[str, ...]
+
+
+@dataclass(frozen=True)
+class FitQuality:
+    """How well the model describes the data.
+
+    Parameters
+    ----------
+    order : int
+        Number of poles.
+    order_reason : str
+        Why this order was taken.
+    rms_relative : float
+        Root mean square of |model − data| / |data| over all samples.
+    noise_relative : float
+        Typical standard deviation of the noise over |data|, both parts together.
+    noise_origin : str
+        The noise law, and where it came from.
+    residual_white : bool
+        Whether the residual looks like noise.
+    stable_model_misfit : float or None
+        Misfit of the best model without right-half-plane poles over that of the free model.
+    """
+
+    order: int
+    order_reason: str
+    rms_relative: float
+    noise_relative: float
+    noise_origin: str
+    residual_white: bool
+    stable_model_misfit: float | None = None
+
+
+@dataclass(frozen=True, eq=False)
+class RationalModel:
+    """H_k(s) = Σ_i residues[i, k] / (s − poles[i]) + constant[k] + proportional[k] · s.
+
+    Parameters
+    ----------
+    poles : (n,) complex ndarray
+        rad/s; conjugates are both listed.
+    residues : (n, K) complex ndarray
+        In the unit of the responses times rad/s.
+    constant, proportional : (K,) float ndarray
+        Direct terms.
+    channels : tuple of Channel
+        The K channels.
+    """
+
+    poles: NDArray[np.complex128]
+    residues: NDArray[np.complex128]
+    constant: NDArray[np.float64]
+    proportional: NDArray[np.float64]
+    channels: tuple[Channel, ...]
+
+    def response(self, frequency_hz: NDArray[np.float64]) -> NDArray[np.complex128]:
+        """Evaluate the model.
+
+        Parameters
+        ----------
+        frequency_hz : (N,) float ndarray
+            Hertz.
+
+        Returns
+        -------
+        (N, K) complex ndarray
+        """
+        s = 2j * np.pi * np.asarray(frequency_hz, dtype=np.float64)
+        total: NDArray[np.complex128] = (1.0 / (s[:, np.newaxis] - self.poles)) @ self.residues
+        total += self.constant + s[:, np.newaxis] * self.proportional
+        return total
+
+
+@dataclass(frozen=True, eq=False)
+class Detection:
+    """What would have gone unnoticed: the smallest mode found with the stated power.
+
+    Parameters
+    ----------
+    frequency_hz : (M,) float ndarray
+        Frequencies at which a hidden mode was supposed.
+    damping_ratio : float
+        Its damping ratio.
+    power : float
+        Probability with which a mode at the limit would have been found.
+    residue : (M, K) float ndarray
+        Smallest |residue| found, for each channel, in the unit of the response times rad/s.
+    """
+
+    frequency_hz: NDArray[np.float64]
+    damping_ratio: float
+    power: float
+    residue: NDArray[np.float64]
+
+
+@dataclass(frozen=True, eq=False)
+class Identification:
+    """The answer for one circuit: verdict, modes, loops, and what they rest on.
+
+    Parameters
+    ----------
+    verdict : {"unstable", "undecided", "stable"}
+        Of the whole run.
+    reason : str
+        One sentence that justifies it.
+    confidence : float
+        Confidence of the verdicts.
+    band_hz : (float, float)
+        Band in which modes may decide.
+    responses : tuple of ResponseSet
+        The data, as used.
+    modes : tuple of Mode
+        Most dangerous first.
+    background : tuple of BackgroundPole
+        Poles of the model that are not claimed.
+    loops : tuple of Loop
+        Suspect loops, for the modes that are unstable, undecided or lightly damped.
+    fit : FitQuality
+        How well the model describes the data.
+    model : RationalModel
+        The model itself.
+    detection : Detection or None
+        What would have gone unnoticed.
+    next_points_hz : tuple of float
+        What to simulate next.
+    notes : tuple of str
+        What was assumed, and what limits the verdict.
+    """
+
+    verdict: Verdict
+    reason: str
+    confidence: float
+    band_hz: tuple[float, float]
+    responses: tuple[ResponseSet, ...]
+    modes: tuple[Mode, ...]
+    background: tuple[BackgroundPole, ...]
+    loops: tuple[Loop, ...]
+    fit: FitQuality
+    model: RationalModel = field(repr=False)
+    detection: Detection | None = field(default=None, repr=False)
+    next_points_hz: tuple[float, ...] = ()
+    notes: tuple[str, ...] = ()
+
+    @property
+    def quantity(self) -> str:
+        """Quantity of the responses."""
+        return self.responses[0].quantity
+
+    @property
+    def pump_hz(self) -> float | None:
+        """Fundamental of the periodic drive, if any."""
+        return self.responses[0].pump_hz
+
+    @property
+    def termination(self) -> str:
+        """The terminations for which the modes hold."""
+        return "; ".join(dict.fromkeys(r.termination for r in self.responses))
+
+    @property
+    def channels(self) -> tuple[Channel, ...]:
+        """All channels, in the order of the model."""
+        return tuple(c for r in self.responses for c in r.channels)
+
+    @property
+    def sources(self) -> tuple[Source, ...]:
+        """The files behind the responses."""
+        return tuple(r.source for r in self.responses if r.source is not None)
+
+    def to_dict(self) -> dict[str, Any]:
+        """Return plain data in the layout of the schema ``polefit.identification``."""
+        from polefit.report.json import identification_dict
+
+        return identification_dict(self)
+
+    def __str__(self) -> str:
+        from polefit.report.text import identification_text
+
+        return identification_text(self)
+
+    def _repr_html_(self) -> str:
+        from polefit.report.html import identification_fragment
+
+        return identification_fragment(self)
+
+
+def in_node_order(names: Sequence[str]) -> tuple[str, ...]:
+    """Drop repeated names, keeping the first of each."""
+    return tuple(dict.fromkeys(names))
