@@ -1,0 +1,95 @@
+"""What every reader shares: the options of ``read``, file bytes with their digest, digits."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Sequence
+from dataclasses import dataclass, fields
+from typing import Literal
+
+from polefit.errors import ArgumentError
+from polefit.precision import Printed
+
+
+@dataclass(frozen=True)
+class ReadOptions:
+    """Options that settle what a file leaves open; None means: find out, and say so.
+
+    Parameters
+    ----------
+    quantity : str, optional
+        What the values are; scattering, impedance and admittance matrices are converted to it.
+    driven : str, optional
+        Node driven by the 1 A (or 1 V) source, for files that hold node voltages or currents.
+    select : sequence of str, optional
+        Outputs to keep.
+    node : str, optional
+        Name of the node of a one-port file; by default the stem of the file name.
+    decimal : {".", ","}, optional
+        Decimal mark of a text file.
+    delimiter : str, optional
+        Field separator of a text file.
+    frequency_unit : str, optional
+        Hz, kHz, MHz, GHz or THz, where a text file does not say.
+    form : {"real-imaginary", "magnitude-angle", "decibel-angle"}, optional
+        What the two numbers of a sample are, where a text file does not say.
+    angle_unit : {"deg", "rad"}, optional
+        Unit of angles, where a text file does not say.
+    scaling : {"normalised", "absolute"}, optional
+        Whether Z, Y, H, G numbers of a Touchstone 1.x file are normalised to the reference.
+    reference_ohm : float, optional
+        Reference resistance, where scattering data do not say, or to convert into them.
+    """
+
+    quantity: str | None = None
+    driven: str | None = None
+    select: tuple[str, ...] | None = None
+    node: str | None = None
+    decimal: Literal[".", ","] | None = None
+    delimiter: str | None = None
+    frequency_unit: str | None = None
+    form: Literal["real-imaginary", "magnitude-angle", "decibel-angle"] | None = None
+    angle_unit: Literal["deg", "rad"] | None = None
+    scaling: Literal["normalised", "absolute"] | None = None
+    reference_ohm: float | None = None
+
+    def refuse_unused(self, used: Iterable[str], format_name: str) -> None:
+        """Raise ArgumentError for an option that has no meaning for this format."""
+        known = {*used, "quantity", "select"}
+        for option in fields(self):
+            if getattr(self, option.name) is not None and option.name not in known:
+                raise ArgumentError(
+                    f"{option.name}: has no meaning for a {format_name} file; leave it out"
+                )
+
+
+def printed_form(tokens: Sequence[str]) -> Printed | None:
+    """Tell how one column of a text file was printed, from a sample of its numbers.
+
+    Parameters
+    ----------
+    tokens : sequence of str
+        Numbers as printed, with "." as the decimal mark.
+
+    Returns
+    -------
+    Printed or None
+        Fixed decimal places if all numbers, without exponent, share them while their
+        significant digits differ; else the largest count of significant digits. None when
+        the column carries 15 digits or more (double precision) or nothing can be told.
+    """
+    decimals: set[int] = set()
+    significant: set[int] = set()
+    exponents = False
+    for token in tokens:
+        mantissa, _, exponent = token.strip().lower().replace("d", "e").partition("e")
+        exponents |= bool(exponent)
+        digits = mantissa.lstrip("+-")
+        decimals.add(len(digits.partition(".")[2]))
+        count = len(digits.replace(".", "").lstrip("0"))
+        if count:
+            significant.add(count)
+    if not significant or max(significant) >= 15:
+        return None
+    if not exponents and len(decimals) == 1 and len(significant) > 1 and decimals != {0}:
+        return Printed(decimals=decimals.pop())
+    return Printed(significant=max(significant))
