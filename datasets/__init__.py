@@ -1,0 +1,1 @@
+"""Bundled example data; README.md in this folder tells where each came from."""
