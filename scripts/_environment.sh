@@ -41,11 +41,13 @@ newest_python() {
 # Quick when nothing changed: a stamp in the environment records what it was made for.
 prepare() {
     local extra=$1 base stamp wanted
-    if [ ! -e .venv ] || ! suits "$python" pip; then
+    if [ ! -e .venv ]; then
         base=$(newest_python) || exit
         echo "making .venv with $base" >&2
-        "$base" -m venv --clear .venv || stop "cannot make $root/.venv: remove it and run this again"
+        "$base" -m venv .venv || stop "cannot make $root/.venv: remove it and run this again"
     fi
+    suits "$python" pip ||
+        stop "$root/.venv holds no working Python 3.11 or newer with pip: remove it and run this again"
     wanted="$(cksum <pyproject.toml) $root $("$python" -V)"
     for stamp in ".venv/polefit-stamp-$extra" .venv/polefit-stamp-test; do
         if [ -f "$stamp" ] && [ "$(cat "$stamp")" = "$wanted" ]; then

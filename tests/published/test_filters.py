@@ -76,6 +76,13 @@ TABLE = {
         (2.425515, 5.437645), 1e-5,
     ),
 }  # fmt: skip
+# As printed: the normalised denominators that designers copy, to the digits printed.
+WINDER = {
+    "Chebyshev 0.5 dB 2": (0.71281 - 1.00404j,),
+    "Chebyshev 0.5 dB 3": (0.62646, 0.31323 - 1.02193j),
+    "Chebyshev 0.5 dB 4": (0.42334 - 0.42095j, 0.17535 - 1.01625j),
+    "Chebyshev 0.5 dB 5": (0.36232, 0.29312 - 0.62518j, 0.11196 - 1.01156j),
+}
 SCIPY = {
     "Butterworth": lambda n: scipy.signal.buttap(n)[1],
     "Chebyshev 0.5 dB": lambda n: scipy.signal.cheb1ap(n, 0.5)[1],
@@ -105,6 +112,14 @@ def test_table_equals_scipy(name):
     for pole in TABLE[name].poles:
         # ten digits are printed
         assert np.min(np.abs(reference - pole)) < 1e-10
+
+
+@pytest.mark.parametrize("name", WINDER)
+def test_table_equals_the_printed_one(name):
+    """Five decimals: half a unit of the last, and a little for its rounding."""
+    for exact, printed in zip(TABLE[name].poles, WINDER[name], strict=True):
+        assert abs((exact + printed).real) < 0.6e-5
+        assert abs((exact + printed).imag) < 0.6e-5
 
 
 @every_prototype
