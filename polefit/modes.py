@@ -266,6 +266,9 @@ class Identification:
         What to simulate next.
     notes : tuple of str
         What was assumed, and what limits the verdict.
+    noise_std : tuple of (N, K) float ndarray
+        Standard deviation of the noise of each complex sample (both parts together), one array
+        for each of `responses`, in their unit. Empty where only ``fit.noise_relative`` is known.
     """
 
     verdict: Verdict
@@ -281,6 +284,7 @@ class Identification:
     detection: Detection | None = field(default=None, repr=False)
     next_points_hz: tuple[float, ...] = ()
     notes: tuple[str, ...] = ()
+    noise_std: tuple[NDArray[np.float64], ...] = field(default=(), repr=False)
 
     @property
     def quantity(self) -> str:
