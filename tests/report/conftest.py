@@ -88,7 +88,7 @@ def example(verdict="unstable", nodes=NODES, points=301, noise=2e-3, wide=False,
     damping = {"unstable": -0.0123, "stable": 0.0145, "undecided": -0.00004}[verdict]
     poles = np.array([pole_of(POLES[0][0], damping), *(pole_of(f, z) for f, z, _ in POLES[1:])])
     weights = rng.uniform(0.15, 1.0, (3, len(nodes))) * np.exp(1j * rng.normal(0, 0.2, (3, 1)))
-    weights *= np.sqrt(np.array([[6e10], [3e10], [4e9]]))
+    weights *= np.sqrt(np.array([[6e11], [4e11], [6e10]]))
     weights[0, -1] *= 0.02
     weights[0, 1 % len(nodes)] *= 1j  # there a shunt resistor makes it worse
     model = build_model(poles, weights, channels, list(nodes))
@@ -136,7 +136,7 @@ def example(verdict="unstable", nodes=NODES, points=301, noise=2e-3, wide=False,
         damping_ratio=-0.01,
         power=0.95,
         residue=np.abs(
-            rng.uniform(0.6, 1.6, len(channels)) * np.geomspace(2e6, 4e8, 40)[:, np.newaxis]
+            rng.uniform(0.6, 1.6, len(channels)) * np.geomspace(2e7, 2e9, 40)[:, np.newaxis]
         ),
     )
     return Identification(

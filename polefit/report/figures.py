@@ -1,0 +1,275 @@
+"""Figures of an identification: poles, responses, nodes, detection limit.
+
+Each ``plot_…`` function draws into the axes it is given, or into a new figure of its own, and
+returns the axes; none touches pyplot's state.
+"""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Sequence
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+from matplotlib.axes import Axes
+from matplotlib.figure import Figure
+from matplotlib.lines import Line2D
+from numpy.typing import NDArray
+
+from polefit.atomic import whole_file
+from polefit.errors import ArgumentError
+from polefit.estimates import si
+from polefit.modes import Identification
+from polefit.report import drawing, units, wording
+from polefit.report.pole_map import plot_poles
+from polefit.report.response_plot import plot_overview, plot_response
+from polefit.responses import UNITS
+
+FORMATS = ("png", "svg", "pdf")
+_MOST_BARS = 12
+_MOST_NAMED = 6
+
+__all__ = [
+    "FORMATS",
+    "plot_detection",
+    "plot_nodes",
+    "plot_overview",
+    "plot_poles",
+    "plot_response",
+    "save_figures",
+]
+
+
+def plot_nodes(result: Identification, loop_index: int, *, ax: Axes | None = None) -> Axes:
+    """Draw the nodes of a suspect loop, strongest first, with 95 % error bars.
+
+    Parameters
+    ----------
+    result : Identification
+        The answer.
+    loop_index : int
+        Index into ``result.loops``.
+    ax : matplotlib.axes.Axes, optional
+        Where; by default a new figure.
+
+    Returns
+    -------
+    matplotlib.axes.Axes
+
+    Raises
+    ------
+    ArgumentError
+        If there is no such loop.
+
+    Notes
+    -----
+    From driving-point impedances the bars are the damping ratio that 1 mS to ground adds, to
+    first order. Otherwise they are residues relative to the strongest.
+    """
+    if not -len(result.loops) <= loop_index < len(result.loops):
+        raise ArgumentError(
+            f"loop_index: {loop_index} is not one of the {len(result.loops)} suspect loops"
+        )
+    loop = result.loops[loop_index]
+    mode = result.modes[loop.mode]
+    bars, name = _bars(wording.node_strengths(mode))
+    shown = bars[:_MOST_BARS]
+    ax = drawing.axes_or_new(ax, 7.2, 1.2 + 0.34 * max(len(shown), 2))
+    drawing.dress(ax, f"Nodes of mode {loop.mode + 1}, {wording.label(mode)}")
+    for y, (_, value, half) in enumerate(shown):
+        worse = value < 0
+        ax.barh(
+            y,
+            value,
+            height=0.62,
+            color=drawing.VERMILLION if worse else drawing.SKY,
+            edgecolor=drawing.INK,
+            linewidth=0.6,
+            hatch="////" if worse else None,
+            xerr=half if half > 0 else None,
+            error_kw={"ecolor": drawing.INK, "capsize": 3, "elinewidth": 1.0},
+        )
+    labels = [f"{wording.plain(label, 26)}{' (worse)' if v < 0 else ''}" for label, v, _ in shown]
+    ax.set_yticks(range(len(shown)), labels, parse_math=False)
+    ax.set_ylim(max(len(shown), 1) - 0.4, -0.6)
+    ax.axvline(0, color=drawing.INK, linewidth=1.0)
+    ax.grid(visible=False, axis="y")
+    reach = max((abs(v) + h for _, v, h in shown), default=1.0)
+    units.powers_of_ten(ax.xaxis, reach, name)
+    ax.set_xlim(
+        min(0.0, *(1.08 * (v - h) for _, v, h in shown), 0.0),
+        max(0.0, *(1.08 * (v + h) for _, v, h in shown), 0.0) or 0.05 * reach,
+    )
+    if len(bars) > len(shown):
+        drawing.text(
+            ax,
+            1.0,
+            0.02,
+            f"and {len(bars) - len(shown)} weaker",
+            transform=ax.transAxes,
+            ha="right",
+        )
+    return ax
+
+
+def _bars(strengths: Sequence[wording.NodeStrength]) -> tuple[list[tuple[str, float, float]], str]:
+    """Choose what the bars show, and return (name, value, half width at 95 %) of each."""
+    usable = [s for s in strengths if s.damping_per_ms is not None]
+    if usable and len(usable) >= len(strengths) / 2:
+        bars = [
+            (s.name, s.damping_per_ms.value, 1.96 * (s.damping_per_ms.std or 0.0))
+            for s in usable
+            if s.damping_per_ms is not None
+        ]
+        caption = "damping ratio added by 1 mS to ground, first order"
+    else:
+        bars = [(s.name, s.relative, 0.0) for s in strengths]
+        caption = "residue relative to the strongest"
+    return sorted(bars, key=lambda bar: -abs(bar[1])), caption
+
+
+def plot_detection(result: Identification, *, ax: Axes | None = None) -> Axes:
+    """Draw what would have gone unnoticed: the smallest peak found, over frequency.
+
+    Parameters
+    ----------
+    result : Identification
+        The answer; its `detection` must be given.
+    ax : matplotlib.axes.Axes, optional
+        Where; by default a new figure.
+
+    Returns
+    -------
+    matplotlib.axes.Axes
+
+    Raises
+    ------
+    ArgumentError
+        If the result has no detection limit.
+    """
+    found = result.detection
+    if found is None:
+        raise ArgumentError("result: it holds no detection limit; there is nothing to draw")
+    ax = drawing.axes_or_new(ax, 7.2, 3.6)
+    drawing.dress(
+        ax,
+        f"Found with {wording.percent(found.power)} probability above the line: a mode with "
+        f"damping ratio {si(found.damping_ratio, '', 2)}",
+    )
+    low, high = drawing.shown_band(result)
+    frequency = np.asarray(found.frequency_hz, dtype=float)
+    omega = 2 * np.pi * np.where(frequency > 0, frequency, np.nan)
+    peaks = found.residue / (abs(found.damping_ratio) * omega[:, np.newaxis])
+    peaks = np.where(np.isfinite(peaks) & (peaks > 0), peaks, np.nan)
+    names = [str(c) for c in result.channels]
+    named = len(names) <= _MOST_NAMED
+    styles: tuple[Any, ...] = ("-", "--", "-.", ":", (0, (5, 1, 1, 1, 1, 1)), (0, (1, 3)))
+    handles = []
+    for k, name in enumerate(names):
+        style: Any = styles[k % len(styles)] if named else "-"
+        (line,) = ax.plot(
+            frequency,
+            peaks[:, k],
+            color=drawing.BLUE if named else drawing.FAINT,
+            linestyle=style,
+            linewidth=1.2 if named else 0.6,
+        )
+        if named:
+            handles.append(Line2D([], [], color=drawing.BLUE, linestyle=style))
+            handles[-1].set_label(wording.plain(name, 20))
+    best = np.fmin.reduce(peaks, axis=1)
+    (line,) = ax.plot(frequency, best, color=drawing.INK, linewidth=2.2, label="the best node")
+    ax.set_yscale("log")
+    drawing.frequency_axis(ax, low, high)
+    seen = peaks[np.isfinite(peaks)]
+    unit = UNITS.get(result.quantity, "")
+    name = f"smallest peak found of |{wording.SYMBOL[result.quantity]}|"
+    if seen.size:
+        bottom, top = 0.7 * float(seen.min()), 1.4 * float(seen.max())
+        ax.set_ylim(bottom, top)
+        units.log_axis(ax.yaxis, bottom, top, name, unit)
+    _mark_blind(ax, frequency, best)
+    drawing.legend_below(ax, [*handles, line], 7)
+    return ax
+
+
+def _mark_blind(ax: Axes, frequency: NDArray[np.float64], best: NDArray[np.float64]) -> None:
+    """Shade the frequencies at which no node would have shown the mode."""
+    for at in np.flatnonzero(~np.isfinite(best)).tolist():
+        left = float(frequency[max(at - 1, 0)])
+        right = float(frequency[min(at + 1, frequency.size - 1)])
+        ax.axvspan(left, right, color=drawing.ORANGE, alpha=0.25, linewidth=0)
+        drawing.text(
+            ax, frequency[at], 0.5, "blind", transform=ax.get_xaxis_transform(), rotation=90
+        )
+
+
+def save_figures(
+    result: Identification, directory: str | Path, formats: Sequence[str] = ("png",)
+) -> tuple[Path, ...]:
+    """Write all figures of a result, each file whole or not at all.
+
+    Parameters
+    ----------
+    result : Identification
+        The answer.
+    directory : str or pathlib.Path
+        Where; made if missing.
+    formats : sequence of {"png", "svg", "pdf"}
+        One file for each.
+
+    Returns
+    -------
+    tuple of pathlib.Path
+        The files written: ``poles``, ``overview``, ``nodes-…``, ``response-…``, ``detection``.
+
+    Raises
+    ------
+    ArgumentError
+        If a format is not known.
+    FileError
+        If a file cannot be written.
+    """
+    unknown = [kind for kind in formats if kind not in FORMATS]
+    if unknown or not formats:
+        wrong = repr(unknown[0]) if unknown else "none"
+        raise ArgumentError(f"formats: {wrong} is not known; use {', '.join(FORMATS)}")
+    folder = Path(directory)
+    written: list[Path] = []
+    for name, figure in figures_of(result):
+        for kind in formats:
+            path = folder / f"{name}.{kind}"
+            with whole_file(path) as temporary:
+                temporary.write_bytes(drawing.figure_bytes(figure, kind))
+            written.append(path)
+    return tuple(written)
+
+
+def figures_of(result: Identification) -> list[tuple[str, Figure]]:
+    """Return all figures with the names of their files, in the order of a report."""
+    with drawing.quiet_drawing():
+        figures = [("poles", _figure(plot_poles(result)))]
+        figures += [
+            (f"nodes-{i + 1}", _figure(plot_nodes(result, i))) for i in range(len(result.loops))
+        ]
+        if len(result.channels) > 1:
+            figures.append(("overview", plot_overview(result)))
+        width = len(str(len(result.channels)))
+        for k, channel in enumerate(result.channels):
+            name = f"response-{k + 1:0{width}d}-{_slug(str(channel))}"
+            figures.append((name, _figure(plot_response(result, k)[0])))
+        if result.detection is not None:
+            figures.append(("detection", _figure(plot_detection(result))))
+    return figures
+
+
+def _figure(ax: Axes) -> Figure:
+    figure = ax.get_figure(root=True)
+    assert isinstance(figure, Figure), "axes made here belong to a figure"
+    return figure
+
+
+def _slug(name: str) -> str:
+    """Turn a channel name into part of a file name that every system accepts."""
+    return re.sub(r"[^A-Za-z0-9_-]+", "_", name).strip("_")[:40] or "channel"

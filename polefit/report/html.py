@@ -1,0 +1,230 @@
+"""The report as one self-contained page, and as a fragment for notebooks."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+from functools import cache
+from importlib import resources
+from typing import Any
+
+import numpy as np
+from jinja2 import Environment, FunctionLoader, StrictUndefined
+from markupsafe import Markup, escape
+from matplotlib.axes import Axes
+from matplotlib.figure import Figure
+
+import polefit
+from polefit.estimates import si
+from polefit.modes import Identification, Mode
+from polefit.report import drawing, wording
+from polefit.report.figures import plot_detection, plot_nodes, plot_overview, plot_poles
+from polefit.report.response_plot import plot_response, trace_of
+
+SIGNS = {"unstable": "▲", "undecided": "◆", "stable": "●"}
+_OPEN = 3  # channels whose figures are open when there are many
+_MANY = 6
+_ROWS = 12  # nodes in the table of a loop
+_NAME = 60
+
+
+def identification_html(result: Identification) -> str:
+    """Return the report as one HTML page that needs no other file and no network.
+
+    Parameters
+    ----------
+    result : Identification
+        The answer.
+
+    Returns
+    -------
+    str
+        Figures are inline SVG. Names from files are escaped, and the page forbids scripts.
+    """
+    return identifications_html([result])
+
+
+def identifications_html(results: Sequence[Identification]) -> str:
+    """Return one page with several separate identifications, one after the other."""
+    with drawing.quiet_drawing():
+        views = [_view(result, f"r{i}") for i, result in enumerate(results)]
+    title = f"{views[0]['verdict']}: {views[0]['heading']}" if len(views) == 1 else "polefit"
+    return (
+        _templates()
+        .get_template("page.html.j2")
+        .render(
+            views=views,
+            title=wording.plain(title, 80),
+            version=polefit.__version__,
+            style=Markup(_file("style.css")),
+            dark=Markup(_file("dark.css")),
+        )
+    )
+
+
+def identification_fragment(result: Identification) -> str:
+    """Return verdict, modes, pole map and cautions as a ``<div>`` for a notebook."""
+    with drawing.quiet_drawing():
+        view = {
+            **_summary(result),
+            "poles": _svg(plot_poles(result), "nb", "Pole map"),
+        }
+    template = _templates().get_template("fragment.html.j2")
+    return template.render(view=view, style=Markup(_file("style.css")))
+
+
+@cache
+def _templates() -> Environment:
+    return Environment(
+        autoescape=True, loader=FunctionLoader(_file), undefined=StrictUndefined, trim_blocks=True
+    )
+
+
+@cache
+def _file(name: str) -> str:
+    return (resources.files("polefit.report") / "templates" / name).read_text(encoding="utf-8")
+
+
+def _svg(drawn: Axes | Figure, prefix: str, caption: str) -> Markup:
+    figure = drawn if isinstance(drawn, Figure) else drawn.get_figure(root=True)
+    assert isinstance(figure, Figure), "axes made here belong to a figure"
+    return Markup(drawing.inline_svg(figure, prefix, str(escape(caption))))
+
+
+def _summary(result: Identification) -> dict[str, Any]:
+    """Collect what the top of the page and the notebook fragment share."""
+    word, _, sentence = wording.verdict_sentence(result).partition(":")
+    leverage = any(view.leverage is not None for m in result.modes for view in m.nodes)
+    return {
+        "verdict": result.verdict,
+        "sign": SIGNS[result.verdict],
+        "word": f"{word}:",
+        "sentence": wording.glued(wording.plain(sentence, 2000)),
+        "reason": wording.plain(result.reason, 2000),
+        "modes": [_mode(m) for m in result.modes],
+        "node_note": wording.LEVERAGE_NOTE if leverage else wording.RESIDUE_NOTE,
+        "cautions": wording.CAUTIONS,
+    }
+
+
+def _mode(mode: Mode) -> dict[str, Any]:
+    strengths = wording.node_strengths(mode)
+    shown = ", ".join(wording.plain(s.brief, 40) for s in strengths[:4])
+    rest = len(strengths) - 4
+    ratio = mode.damping_ratio
+    interval = (
+        f"{si(ratio.low, '', 4)} to {si(ratio.high, '', 4)}"
+        if ratio.low is not None and ratio.high is not None and not mode.real
+        else ""
+    )
+    frequency = mode.frequency_hz.text("Hz")
+    if mode.real:
+        frequency = f"real pole, |p|/2π {mode.natural_frequency_hz.text('Hz')}"
+    return {
+        "verdict": mode.verdict,
+        "sign": SIGNS[mode.verdict],
+        "word": mode.verdict,
+        "in_band": mode.in_band,
+        "frequency": frequency,
+        "damping": si(ratio.value) if mode.real else ratio.text(),
+        "interval": interval,
+        "time": f"{wording.trend(mode)}, {wording.time_constant(mode)}",
+        "probability": wording.probability(mode.probability_unstable),
+        "nodes": shown + (f" and {rest} more" if rest > 0 else ""),
+    }
+
+
+def _view(result: Identification, prefix: str) -> dict[str, Any]:
+    """Collect everything the page shows of one result."""
+    names = [wording.plain(s.file, _NAME) for s in result.sources]
+    many = len(result.channels) > _MANY
+    return {
+        **_summary(result),
+        "heading": wording.listed(names, 3, _NAME) if names else f"{result.quantity} from arrays",
+        "next": wording.glued(" ".join(wording.next_points(result))),
+        "poles": _svg(plot_poles(result), f"{prefix}p", "Pole map"),
+        "loops": [_loop(result, i, prefix) for i in range(len(result.loops))],
+        "overview": _svg(plot_overview(result), f"{prefix}o", "All channels") if many else None,
+        "channels": _channels(result, prefix),
+        "evidence": _evidence(result),
+        "detection": None
+        if result.detection is None
+        else _svg(plot_detection(result), f"{prefix}d", "Detection limit"),
+        "basis": [(head, wording.glued(text)) for head, text in wording.basis(result)],
+        "notes": [wording.plain(n, 2000) for n in result.notes],
+        "background": [wording.background_row(p) for p in result.background],
+        "sources": [
+            {
+                "file": wording.plain(r.source.file, 120),
+                "format": wording.plain(r.source.format),
+                "points": r.points,
+                "sha256": r.source.sha256,
+            }
+            for r in result.responses
+            if r.source is not None
+        ],
+        "assumptions": [
+            wording.plain(a, 2000)
+            for a in dict.fromkeys(a for s in result.sources for a in s.assumptions)
+        ],
+    }
+
+
+def _loop(result: Identification, index: int, prefix: str) -> dict[str, Any]:
+    loop = result.loops[index]
+    table = wording.loop_table(result, index, _ROWS)
+    rest = len(loop.nodes) - _ROWS
+    return {
+        "mode": loop.mode + 1,
+        "label": wording.label(result.modes[loop.mode]),
+        "figure": _svg(
+            plot_nodes(result, index), f"{prefix}n{index}", f"Nodes of mode {loop.mode + 1}"
+        ),
+        "headings": table[0],
+        "rows": table[1:],
+        "more": f"and {rest} more nodes at which it shows less" if rest > 0 else "",
+    }
+
+
+def _channels(result: Identification, prefix: str) -> list[dict[str, Any]]:
+    """Channels in the order in which the most dangerous mode shows; the first ones open."""
+    order = {str(v.channel): i for i, v in enumerate(result.modes[0].nodes)} if result.modes else {}
+    names = [str(c) for c in result.channels]
+    ranked = sorted(range(len(names)), key=lambda k: order.get(names[k], len(names)))
+    most = _OPEN if len(names) > _MANY else len(names)
+    views = []
+    for place, k in enumerate(ranked):
+        trace = trace_of(result, k)
+        size = np.abs(trace.data)
+        good = size > 0
+        rms = math.sqrt(float(np.mean((np.abs(trace.model - trace.data)[good] / size[good]) ** 2)))
+        views.append(
+            {
+                "name": wording.plain(names[k], _NAME),
+                "note": f"{trace.frequency_hz.size} points, residual {si(rms, '', 2)} (rms)",
+                "open": place < most,
+                "figure": _svg(plot_response(result, k)[0], f"{prefix}c{k}", f"Channel {names[k]}"),
+            }
+        )
+    return views
+
+
+def _evidence(result: Identification) -> list[dict[str, Any]]:
+    outcome = {True: "passed", False: "failed", None: "not-made"}
+    return [
+        {
+            "mode": i + 1,
+            "label": wording.label(mode),
+            "tests": [
+                {
+                    "name": wording.plain(test.name),
+                    "outcome": outcome[test.passed],
+                    "outcome_word": outcome[test.passed].replace("-", " "),
+                    "detail": wording.plain(test.detail, 2000),
+                }
+                for test in mode.evidence
+            ],
+        }
+        for i, mode in enumerate(result.modes)
+        if mode.evidence
+    ]
