@@ -8,6 +8,29 @@ from typing import Literal
 
 from polefit.errors import ArgumentError
 from polefit.precision import Printed
+from polefit.responses import ResponseSet
+
+
+@dataclass(frozen=True)
+class Parsed:
+    """What a parser found in a file.
+
+    Parameters
+    ----------
+    responses : ResponseSet
+        The responses, without their source.
+    format : str
+        Short name of the format, such as "Touchstone 1.1".
+    assumptions : tuple of str
+        One sentence for every reading that was not forced by the file.
+    warnings : tuple of str
+        One sentence for everything about the file that deserves a second look.
+    """
+
+    responses: ResponseSet
+    format: str
+    assumptions: tuple[str, ...]
+    warnings: tuple[str, ...]
 
 
 @dataclass(frozen=True)
