@@ -23,7 +23,20 @@ _HOME = {
     "identify": "polefit.analysis.identify",
     "read": "polefit.readers",
 }
-__all__ = [*sorted(_HOME), "__version__"]  # noqa: PLE0604
+__all__ = [
+    "ArgumentError",
+    "Channel",
+    "DataError",
+    "Estimate",
+    "FileError",
+    "Identification",
+    "NotSupportedError",
+    "PolefitError",
+    "ResponseSet",
+    "__version__",
+    "identify",
+    "read",
+]
 
 if TYPE_CHECKING:
     from polefit.analysis.identify import identify

@@ -1,0 +1,82 @@
+"""Sampled, weighted data in the form that least squares needs.
+
+A block holds the channels that share one frequency axis. Each complex sample becomes two real
+rows, scaled by the inverse of their standard deviations; where the noise acts along and across
+the phasor, as with magnitude and angle printed to a few digits, the sample is first turned.
+"""
+
+from __future__ import annotations
+
+from typing import NamedTuple
+
+import numpy as np
+from numpy.typing import NDArray
+
+FloatArray = NDArray[np.float64]
+ComplexArray = NDArray[np.complex128]
+
+
+class Block(NamedTuple):
+    """Channels on one frequency axis.
+
+    Attributes
+    ----------
+    s : (N,) complex ndarray
+        Normalised complex frequency.
+    values : (K, N) complex ndarray
+        Responses.
+    weight : (K, 2, N) float ndarray
+        Inverse standard deviation of the two parts of each sample.
+    turn : (K, N) complex ndarray or None
+        Unit phasors by which samples are multiplied before they are taken apart.
+    target : (K, 2N) float ndarray
+        The weighted samples.
+    """
+
+    s: ComplexArray
+    values: ComplexArray
+    weight: FloatArray
+    turn: ComplexArray | None
+    target: FloatArray
+
+    @property
+    def channels(self) -> int:
+        """Number of channels K."""
+        return int(self.values.shape[0])
+
+    @property
+    def rows(self) -> int:
+        """Number of real samples, 2·N·K."""
+        return int(2 * self.values.size)
+
+
+def make_block(
+    s: ComplexArray, values: ComplexArray, weight: FloatArray, turn: ComplexArray | None = None
+) -> Block:
+    """Build a block; see :class:`Block` for the shapes."""
+    turned = values if turn is None else values * turn
+    target = np.concatenate((turned.real * weight[:, 0], turned.imag * weight[:, 1]), axis=1)
+    return Block(s, values, weight, turn, target)
+
+
+def weighted(block: Block, columns: ComplexArray) -> FloatArray:
+    """Return the weighted real rows of complex columns.
+
+    Parameters
+    ----------
+    block : Block
+        Its weights and turns apply.
+    columns : (N, m) or (K, N, m) complex ndarray
+        Columns common to all channels, or one set for each channel.
+
+    Returns
+    -------
+    (K, 2N, m) float ndarray
+    """
+    points = block.s.size
+    if block.turn is not None:
+        columns = columns * block.turn[:, :, np.newaxis]
+    rows = np.empty((block.channels, 2 * points, columns.shape[-1]))
+    np.multiply(columns.real, block.weight[:, 0, :, np.newaxis], out=rows[:, :points])
+    np.multiply(columns.imag, block.weight[:, 1, :, np.newaxis], out=rows[:, points:])
+    return rows

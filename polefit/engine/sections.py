@@ -1,0 +1,189 @@
+"""Poles as first- and second-order sections with real coefficients.
+
+A conjugate pair, or two real poles, is the section s² + c1·s + c0; a single real pole is s + c.
+These parameters stay smooth where a pair meets on the real axis and splits, and the left half
+plane is the box c1 > 0, c0 > 0, c > 0 (Routh-Hurwitz for degrees one and two).
+Frequencies are normalised: s = jω / (scale of the problem).
+"""
+
+from __future__ import annotations
+
+from typing import NamedTuple
+
+import numpy as np
+from numpy.typing import NDArray
+
+FloatArray = NDArray[np.float64]
+ComplexArray = NDArray[np.complex128]
+
+
+class Sections(NamedTuple):
+    """Denominator sections.
+
+    Attributes
+    ----------
+    c1, c0 : (P,) float ndarray
+        Coefficients of the second-order sections.
+    c : (R,) float ndarray
+        Coefficients of the first-order sections.
+    """
+
+    c1: FloatArray
+    c0: FloatArray
+    c: FloatArray
+
+    @property
+    def order(self) -> int:
+        """Number of poles, 2P + R."""
+        return 2 * self.c1.size + self.c.size
+
+    @property
+    def count(self) -> int:
+        """Number of sections, P + R."""
+        return self.c1.size + self.c.size
+
+    def vector(self) -> FloatArray:
+        """Return the parameters (c1, c0, c) as one vector of length `order`."""
+        return np.concatenate((self.c1, self.c0, self.c))
+
+    def with_vector(self, vector: FloatArray) -> Sections:
+        """Return sections of the same kinds with other parameters."""
+        p = self.c1.size
+        return Sections(vector[:p], vector[p : 2 * p], vector[2 * p :])
+
+    def weights(self) -> FloatArray:
+        """Return the scale √|c0| of each second-order section."""
+        scale: FloatArray = np.sqrt(np.abs(self.c0))
+        return np.maximum(scale, 1e-150)
+
+    def split(self) -> Sections:
+        """Return the same poles with every second-order section of real poles split in two."""
+        discriminant = self.c1**2 / 4 - self.c0
+        real = discriminant >= 0
+        if not real.any():
+            return self
+        # the larger root first, the other from the product: no cancellation
+        half = self.c1[real] / 2
+        large = half + np.where(half >= 0, 1.0, -1.0) * np.sqrt(discriminant[real])
+        safe = np.where(large == 0, 1.0, large)
+        small = np.where(large == 0, 0.0, self.c0[real] / safe)
+        return Sections(self.c1[~real], self.c0[~real], np.concatenate((self.c, large, small)))
+
+    def poles(self) -> ComplexArray:
+        """Return all poles; upper members of pairs, then lower, then real poles."""
+        flat = self.split()
+        upper = -flat.c1 / 2 + 1j * np.sqrt(np.maximum(flat.c0 - flat.c1**2 / 4, 0.0))
+        return np.concatenate((upper, upper.conj(), -flat.c.astype(np.complex128)))
+
+    def drop(self, index: int) -> Sections:
+        """Return the sections without number `index` (second-order ones count first)."""
+        p = self.c1.size
+        if index < p:
+            return Sections(np.delete(self.c1, index), np.delete(self.c0, index), self.c)
+        return Sections(self.c1, self.c0, np.delete(self.c, index - p))
+
+    def keep(self, mask: NDArray[np.bool_]) -> Sections:
+        """Return the sections where `mask`, of length `count`, is true."""
+        p = self.c1.size
+        return Sections(self.c1[mask[:p]], self.c0[mask[:p]], self.c[mask[p:]])
+
+    def join(self, other: Sections) -> Sections:
+        """Return the sections of both."""
+        return Sections(*(np.concatenate(pair) for pair in zip(self, other, strict=True)))
+
+
+def from_poles(poles: ComplexArray) -> Sections:
+    """Build sections from upper-half-plane and real poles; lower ones are implied.
+
+    Parameters
+    ----------
+    poles : (n,) complex ndarray
+        Poles with Im < 0 are ignored: they are taken as conjugates of listed ones.
+    """
+    upper = poles[poles.imag > 0]
+    real = poles[poles.imag == 0].real
+    return Sections(-2 * upper.real, np.abs(upper) ** 2, -real)
+
+
+class Basis(NamedTuple):
+    """Section responses on a grid.
+
+    Attributes
+    ----------
+    s : (N,) complex ndarray
+        Normalised complex frequency.
+    inverse2, inverse1 : (N, P), (N, R) complex ndarray
+        1/(s² + c1·s + c0) and 1/(s + c).
+    columns : (N, 2P + R + direct) complex ndarray
+        s/q, √|c0|/q, 1/(s + c), then 1 and s as asked for.
+    """
+
+    s: ComplexArray
+    inverse2: ComplexArray
+    inverse1: ComplexArray
+    columns: ComplexArray
+
+
+def evaluate(sections: Sections, s: ComplexArray, direct: int) -> Basis:
+    """Evaluate the partial-fraction basis.
+
+    Parameters
+    ----------
+    sections : Sections
+        P second-order and R first-order sections.
+    s : (N,) complex ndarray
+        Normalised complex frequency.
+    direct : int
+        0: none, 1: constant, 2: constant and s.
+
+    Returns
+    -------
+    Basis
+    """
+    column = s[:, np.newaxis]
+    p, r = sections.c1.size, sections.c.size
+    inverse2 = 1.0 / ((column + sections.c1) * column + sections.c0)
+    inverse1 = 1.0 / (column + sections.c)
+    columns = np.empty((s.size, 2 * p + r + direct), dtype=np.complex128)
+    np.multiply(column, inverse2, out=columns[:, :p])
+    np.multiply(sections.weights(), inverse2, out=columns[:, p : 2 * p])
+    columns[:, 2 * p : 2 * p + r] = inverse1
+    if direct:
+        columns[:, 2 * p + r] = 1.0
+    if direct > 1:
+        columns[:, 2 * p + r + 1] = s
+    return Basis(s, inverse2, inverse1, columns)
+
+
+def section_columns(sections: Sections, index: int) -> list[int]:
+    """Return the basis columns that belong to one section."""
+    p = sections.c1.size
+    return [index, p + index] if index < p else [p + index]
+
+
+def section_parameters(sections: Sections, index: int) -> list[int]:
+    """Return the entries of the parameter vector that belong to one section."""
+    return section_columns(sections, index)
+
+
+def residues(sections: Sections, coefficients: FloatArray) -> ComplexArray:
+    """Return the residues at the poles of :meth:`Sections.poles`, for sections without real pairs.
+
+    Parameters
+    ----------
+    sections : Sections
+        All second-order sections must hold conjugate pairs (see :meth:`Sections.split`).
+    coefficients : (K, m) float ndarray
+        Coefficients of the basis columns, for each channel.
+
+    Returns
+    -------
+    (order, K) complex ndarray
+    """
+    p, r = sections.c1.size, sections.c.size
+    omega = np.sqrt(sections.c0 - sections.c1**2 / 4)
+    upper = -sections.c1 / 2 + 1j * omega
+    along, across = coefficients[:, :p], coefficients[:, p : 2 * p] * sections.weights()
+    pair = (along * upper + across) / (2j * omega)
+    real = coefficients[:, 2 * p : 2 * p + r].astype(np.complex128)
+    return np.concatenate((pair, pair.conj(), real), axis=1).T

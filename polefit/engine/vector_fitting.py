@@ -1,0 +1,123 @@
+"""Relaxed vector fitting: starting poles from linear least squares, no pole ever flipped.
+
+B. Gustavsen, "Improving the pole relocating properties of vector fitting", IEEE Trans. Power
+Delivery 21(3), 1587-1592, 2006, doi 10.1109/TPWRD.2005.860281; QR form for many responses with
+shared poles: D. Deschrijver, M. Mrozowski, T. Dhaene, D. De Zutter, "Macromodeling of multiport
+systems using a fast implementation of the vector fitting method", IEEE Microwave and Wireless
+Components Letters 18(6), 383-385, 2008.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+import numpy as np
+import scipy.linalg
+
+from polefit.engine.blocks import Block, ComplexArray, FloatArray, weighted
+from polefit.engine.sections import Sections, evaluate, from_poles
+
+
+def starting_sections(low: float, high: float, order: int, damping: float = 0.01) -> Sections:
+    """Return lightly damped pairs spread over a band.
+
+    Parameters
+    ----------
+    low, high : float
+        Band edges, normalised rad/s.
+    order : int
+        Number of poles; an odd one adds a real pole.
+    damping : float
+        Damping ratio of the pairs.
+
+    Returns
+    -------
+    Sections
+        Evenly spaced pairs; half of them logarithmically when the band spans over a decade.
+    """
+    pairs = max(order // 2, 0)
+    low = max(low, high * 1e-7)
+    spread = np.linspace(max(low, high / (4 * pairs + 4)), high, pairs)
+    if high > 10 * low and pairs > 1:
+        logarithmic = np.geomspace(low, high, pairs)
+        spread = np.sort(np.concatenate((spread[::2], logarithmic[::2])))[:pairs]
+        # where both kinds coincide, poles would be defective
+        spread = spread * (1 + 1e-3 * np.arange(pairs) / max(pairs, 1))
+    poles = spread * (-damping + 1j)
+    real = [-high / 2] if order % 2 else []
+    return from_poles(np.concatenate((poles, np.asarray(real, dtype=np.complex128))))
+
+
+def relocate(blocks: Sequence[Block], sections: Sections, direct: int) -> Sections:
+    """Move the poles once: the new poles are the zeros of the relaxed weighting function.
+
+    Parameters
+    ----------
+    blocks : sequence of Block
+        Data.
+    sections : Sections
+        Current poles.
+    direct : int
+        0, 1 or 2 direct terms for each channel.
+
+    Returns
+    -------
+    Sections
+        As many poles as before, wherever they fall.
+    """
+    unknowns = sections.order + 1
+    triangles = []
+    for block in blocks:
+        basis = evaluate(sections, block.s, direct)
+        common = basis.columns
+        sigma = np.concatenate((common[:, : sections.order], np.ones((block.s.size, 1))), axis=1)
+        triangles.append(_reduced(block, common, sigma, unknowns))
+    constraint = np.zeros(unknowns)
+    total = 0.0
+    for block in blocks:
+        basis = evaluate(sections, block.s, 0)
+        constraint[:-1] += basis.columns.real.sum(axis=0)
+        constraint[-1] += block.s.size
+        total += float(np.sum(block.target**2))
+    stacked = np.concatenate(triangles, axis=0)
+    scale = np.sqrt(total) / constraint[-1]
+    system = np.concatenate((stacked, scale * constraint[np.newaxis]), axis=0)
+    right = np.zeros(system.shape[0])
+    right[-1] = scale * constraint[-1]
+    norms = np.linalg.norm(system, axis=0)
+    norms[norms == 0] = 1.0
+    solution = scipy.linalg.lstsq(system / norms, right, lapack_driver="gelsy", check_finite=False)
+    weights = solution[0] / norms
+    if abs(weights[-1]) < 1e-8:  # the constant must not vanish (section IV of the 2006 paper)
+        weights[-1] = 1e-8 if weights[-1] >= 0 else -1e-8
+    return zeros_of_weighting(sections, weights)
+
+
+def _reduced(block: Block, common: ComplexArray, sigma: ComplexArray, unknowns: int) -> FloatArray:
+    """Triangular factors that remain of the shared unknowns, channels stacked."""
+    left = weighted(block, common)
+    right = weighted(block, -block.values[:, :, np.newaxis] * sigma)
+    factor = np.linalg.qr(np.concatenate((left, right), axis=2), mode="r")
+    rest: FloatArray = factor[:, left.shape[2] :, left.shape[2] :]
+    return rest.reshape(-1, unknowns)
+
+
+def zeros_of_weighting(sections: Sections, weights: FloatArray) -> Sections:
+    """Return the zeros of Σ weights·basis + constant as sections.
+
+    Each second-order section is realised with the states (s/q, √|c0|/q), so that the zeros are
+    the eigenvalues of A − b·cᵀ/d.
+    """
+    p, r = sections.c1.size, sections.c.size
+    n = sections.order
+    scale = sections.weights()
+    matrix = np.zeros((n, n))
+    index = np.arange(p)
+    matrix[index, index] = -sections.c1
+    matrix[index, p + index] = -sections.c0 / scale
+    matrix[p + index, index] = scale
+    tail = 2 * p + np.arange(r)
+    matrix[tail, tail] = -sections.c
+    drive = np.concatenate((np.ones(p), np.zeros(p), np.ones(r)))
+    matrix -= np.outer(drive, weights[:-1] / weights[-1])
+    return from_poles(scipy.linalg.eigvals(matrix, check_finite=False))
