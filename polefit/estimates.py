@@ -93,11 +93,11 @@ def with_uncertainty(value: float, std: float | None, unit: str = "") -> str:
     if not math.isfinite(value):
         return si(value, unit)
     if std is None or math.isnan(std):
-        return f"{si(value, unit, 6)} (uncertainty {NOT_KNOWN})"
+        return f"{si(value, unit, 6)} (± {NOT_KNOWN})"
     if math.isinf(std):
-        return f"{si(value, unit, 6)} (uncertainty without bound)"
+        return f"{si(value, unit, 6)} (± without bound)"
     if std == 0:
-        return f"{si(value, unit, _MOST_DIGITS)} (no uncertainty)"
+        return f"{si(value, unit, _MOST_DIGITS)} (± 0)"
     number, spread = Decimal(repr(float(value))), Decimal(repr(abs(float(std))))
     if spread < _SPLIT * abs(number):
         place = max(_place(spread), number.adjusted() - _MOST_DIGITS + 1)

@@ -67,10 +67,10 @@ def test_one_prefix_for_both(value, std, unit, expected):
         (NAN, 1.0, "not known"),
         (INF, 1.0, "infinite"),
         (-INF, None, "−infinite"),
-        (1.5e9, None, "1.5 GHz (uncertainty not known)"),
-        (1.5e9, NAN, "1.5 GHz (uncertainty not known)"),
-        (1.5e9, INF, "1.5 GHz (uncertainty without bound)"),
-        (1.5e9, 0.0, "1.5 GHz (no uncertainty)"),
+        (1.5e9, None, "1.5 GHz (± not known)"),
+        (1.5e9, NAN, "1.5 GHz (± not known)"),
+        (1.5e9, INF, "1.5 GHz (± without bound)"),
+        (1.5e9, 0.0, "1.5 GHz (± 0)"),
     ],
 )
 def test_what_cannot_be_given_is_said_in_words(value, std, expected):
@@ -102,7 +102,7 @@ def test_plain_values(value, unit, expected):
 def test_estimate_prints_by_the_same_rule():
     estimate = Estimate.normal(1.504321e9, 8.5e5)
     assert estimate.text("Hz") == with_uncertainty(1.504321e9, 8.5e5, "Hz")
-    assert Estimate.normal(1.0, NAN).text() == "1 (uncertainty not known)"
+    assert Estimate.normal(1.0, NAN).text() == "1 (± not known)"
 
 
 FACTORS = {"": 1.0, "k": 1e3, "M": 1e6, "G": 1e9, "m": 1e-3, "µ": 1e-6, "n": 1e-9, "p": 1e-12}

@@ -14,7 +14,7 @@ from markupsafe import Markup, escape
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
-import polefit
+from polefit import __version__
 from polefit.estimates import si
 from polefit.modes import Identification, Mode
 from polefit.report import drawing, wording
@@ -55,7 +55,7 @@ def identifications_html(results: Sequence[Identification]) -> str:
         .render(
             views=views,
             title=wording.plain(title, 80),
-            version=polefit.__version__,
+            version=__version__,
             style=Markup(_file("style.css")),
             dark=Markup(_file("dark.css")),
         )
@@ -88,7 +88,7 @@ def _file(name: str) -> str:
 def _svg(drawn: Axes | Figure, prefix: str, caption: str) -> Markup:
     figure = drawn if isinstance(drawn, Figure) else drawn.get_figure(root=True)
     assert isinstance(figure, Figure), "axes made here belong to a figure"
-    return Markup(drawing.inline_svg(figure, prefix, str(escape(caption))))
+    return Markup(drawing.inline_svg(figure, prefix, str(escape(wording.plain(caption, 80)))))
 
 
 def _summary(result: Identification) -> dict[str, Any]:

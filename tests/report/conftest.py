@@ -183,7 +183,7 @@ def undecided():
     return example("undecided")
 
 
-@pytest.fixture
+@pytest.fixture(scope="session")
 def build():
     """The builder itself, for tests that need other node names or axes."""
     return example

@@ -1,0 +1,169 @@
+"""The page: whole, harmless, free of the network, readable with thirty channels."""
+
+import re
+from dataclasses import replace
+from html.parser import HTMLParser
+
+import pytest
+
+from polefit.report.html import identification_fragment, identification_html, identifications_html
+
+HOSTILE = (
+    "<script>alert(1)</script>",
+    '"><img src=x onerror=alert(1)>',
+    "{{ 7 * 7 }}",
+    "$\\frac{1}{0}$ & co",
+    "x" * 400,
+    "a\x1b[31m\u202eb",
+    "</style></svg></main>",
+)
+VOID = {"meta", "img", "br", "hr", "link", "input"}
+
+
+class Page(HTMLParser):
+    """Checks that elements nest, and collects tags, ids, references and text."""
+
+    def __init__(self, text):
+        super().__init__()
+        self.open, self.tags, self.ids, self.references, self.words = [], [], [], set(), []
+        self.attributes = []
+        self.feed(text)
+        self.close()
+        assert not self.open
+
+    def handle_starttag(self, tag, attrs):
+        self.handle_startendtag(tag, attrs)
+        if tag not in VOID:
+            self.open.append(tag)
+
+    def handle_startendtag(self, tag, attrs):
+        self.tags.append(tag)
+        for name, value in attrs:
+            self.attributes.append((name, value or ""))
+            if name == "id":
+                self.ids.append(value)
+            self.references.update(re.findall(r"url\(#([^)]*)\)", value or ""))
+            if name == "href":
+                assert value.startswith("#")
+                self.references.add(value[1:])
+
+    def handle_endtag(self, tag):
+        assert self.open.pop() == tag
+
+    def handle_data(self, data):
+        if not self.open or self.open[-1] != "style":
+            self.words.append(data)
+
+    @property
+    def text(self):
+        return " ".join(" ".join(self.words).split())
+
+
+@pytest.fixture(scope="module")
+def page(build):
+    return identification_html(build("unstable", points=61))
+
+
+def test_it_nests_and_references_resolve(page):
+    parsed = Page(page)
+    assert page.startswith("<!DOCTYPE html>")
+    assert parsed.references <= set(parsed.ids)
+    assert len(parsed.ids) == len(set(parsed.ids))
+
+
+def test_it_needs_no_network_and_runs_nothing(page):
+    parsed = Page(page)
+    assert not {"script", "link", "iframe", "object", "embed", "img", "base"} & set(parsed.tags)
+    assert "http" not in page.replace("http-equiv", "")
+    assert not [n for n, _ in parsed.attributes if n.startswith("on")]
+    assert "default-src 'none'" in page
+    assert "@import" not in page
+
+
+def test_it_says_everything_that_the_text_says(page):
+    text = Page(page).text.replace("\N{NO-BREAK SPACE}", " ")
+    for words in (
+        "UNSTABLE: a mode at 1.5043 GHz grows with time constant 8.60 ± 0.14 ns",
+        "1.50432 ± 0.00030 GHz",
+        "Suspect loop 1: mode 1, 1.504 GHz",
+        "stable-model misfit passed",
+        "rank not made",
+        "order 10; lowest BIC",
+        "every probed port open",
+        "not claimed as modes",
+        "Headings name ohm",
+        "confirm on the bench",
+        "Radio-frequency power burns",
+    ):
+        assert words in text, words
+    assert "00" * 32 in text  # the digest of the first file, in full
+    assert page.count("<svg") == 1 + 1 + 5 + 1  # poles, nodes, five channels, detection
+
+
+@pytest.mark.parametrize("verdict", ["stable", "undecided"])
+def test_the_other_verdicts(build, verdict):
+    text = Page(identification_html(build(verdict, points=31))).text
+    assert f"{verdict.upper()}:" in text
+    assert ("What to simulate next" in text) is (verdict == "undecided")
+
+
+def test_hostile_names_stay_text(build):
+    result = build("unstable", nodes=HOSTILE, points=31)
+    result = replace(result, notes=("<b>note</b>",), reason="<i>reason</i>")
+    markup = identification_html(result)
+    parsed = Page(markup)
+    assert not {"script", "img", "b>note"} & set(parsed.tags)
+    assert "<b>note" not in markup
+    assert "<i>reason" not in markup
+    assert "<script>alert(1)</script>" in parsed.text
+    assert "{{ 7 * 7 }}" in parsed.text
+    assert "\x1b" not in markup
+    assert "\u202e" not in markup
+    assert not [n for n, _ in parsed.attributes if n.startswith("on")]
+    assert "x" * 100 not in markup
+
+
+def test_thirty_channels_stay_usable(build):
+    markup = identification_html(
+        build("stable", nodes=tuple(f"n{i}" for i in range(30)), points=51)
+    )
+    assert markup.count("<details open>") == 3
+    assert markup.count("<details>") == 27 + 1  # and the poles that are not claimed
+    assert "All channels" in markup
+    assert len(markup) < 5_000_000
+
+
+def test_arrays_without_files(build):
+    text = Page(identification_html(build(nodes=("gate2",), files=False, points=31))).text
+    assert "Arrays, not files." in text
+    assert "impedance from arrays" in text
+
+
+def test_nothing_found(stable):
+    empty = replace(stable, modes=(), loops=(), background=(), detection=None, notes=())
+    text = Page(identification_html(empty)).text
+    assert "No mode was found" in text
+    assert "No test of a mode was recorded" in text
+
+
+def test_several_results_share_one_page(build):
+    results = [build("unstable", nodes=("a",), points=31), build("stable", nodes=("b",), points=31)]
+    parsed = Page(identifications_html(results))
+    assert parsed.tags.count("main") == 2
+    assert len(parsed.ids) == len(set(parsed.ids))
+    assert parsed.references <= set(parsed.ids)
+
+
+def test_notebook_fragment(unstable):
+    fragment = unstable._repr_html_()
+    assert fragment == identification_fragment(unstable)
+    parsed = Page(fragment)
+    assert parsed.tags[0] == "div"
+    assert not {"html", "body", "script"} & set(parsed.tags)
+    assert "UNSTABLE:" in parsed.text
+    assert "confirm on the bench" in parsed.text
+
+
+def test_the_same_result_gives_the_same_page(build):
+    result = build(nodes=("gate2",), points=31)
+    assert identification_html(result) == identification_html(result)
