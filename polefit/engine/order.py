@@ -1,0 +1,237 @@
+"""The order of the model: up in a few large steps, then down by pruning from one rich fit.
+
+Ascending one pair at a time spends most of the work on orders that are thrown away and can stop
+at a local optimum; descending goes from a good optimum to a good optimum. Sections leave when
+the misfit rises by less than noise alone would explain, counting the places at which a spare
+pair could have settled.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+from typing import NamedTuple
+
+import numpy as np
+
+from polefit.engine.blocks import Block, FloatArray
+from polefit.engine.projection import Solution, solve
+from polefit.engine.refinement import refine
+from polefit.engine.sections import Sections, from_poles
+from polefit.engine.significance import (
+    Information,
+    information,
+    scan,
+    section_scores,
+    threshold,
+)
+from polefit.engine.vector_fitting import relocate, starting_sections
+
+KEEP_CHANCE = 0.01
+"""Chance per run that a section fitted to pure noise is kept in the model."""
+FIRST_ORDER = 12
+LARGEST_ORDER = 96
+RELOCATIONS = 5
+
+
+class Found(NamedTuple):
+    """Outcome of the search.
+
+    Attributes
+    ----------
+    solution : Solution
+        The refined model.
+    richest : Solution
+        The rich model from which it was pruned.
+    reason : str
+        Why this order was taken.
+    """
+
+    solution: Solution
+    richest: Solution
+    reason: str
+
+
+def search(blocks: Sequence[Block]) -> Found:
+    """Find order and poles for data whose noise level is free but whose noise shape is known."""
+    richest = _rich_fit(blocks)
+    places = sum(block.s.size for block in blocks)
+    pruned = prune(blocks, richest, places)
+    grown = grow(blocks, pruned, places)
+    if grown.sections.order > pruned.sections.order:
+        grown = prune(blocks, grown, places)
+    final = drop_direct(blocks, grown)
+    reason = (
+        f"pruned from {richest.sections.order} poles; removing any further one raises the misfit "
+        f"more than noise explains (chance {KEEP_CHANCE:g} over {places} places)"
+    )
+    return Found(final, richest, reason)
+
+
+def _samples(blocks: Sequence[Block]) -> int:
+    return sum(block.rows for block in blocks)
+
+
+def _parameters(blocks: Sequence[Block], solution: Solution) -> int:
+    channels = sum(block.channels for block in blocks)
+    n = solution.sections.order
+    return n + channels * (n + solution.direct)
+
+
+def variance_factor(blocks: Sequence[Block], solution: Solution) -> float:
+    """Return χ² per degree of freedom."""
+    freedom = _samples(blocks) - _parameters(blocks, solution)
+    return solution.misfit / max(freedom, 1)
+
+
+def _criterion(blocks: Sequence[Block], solution: Solution) -> float:
+    """Return BIC with the noise level free (G. Schwarz, Ann. Statist. 6, 461, 1978)."""
+    samples = _samples(blocks)
+    level = max(solution.misfit / samples, 1e-300)
+    return samples * math.log(level) + _parameters(blocks, solution) * math.log(samples)
+
+
+def largest_order(blocks: Sequence[Block]) -> int:
+    """Return the largest order that leaves at least as many samples as parameters, halved."""
+    points = min(block.s.size for block in blocks)
+    return max(1, min(LARGEST_ORDER, (2 * points - 3) // 4))
+
+
+def _rich_fit(blocks: Sequence[Block]) -> Solution:
+    """Double the order until the criterion no longer improves."""
+    low = min(float(block.s[0].imag) for block in blocks)
+    low = low or min(float(block.s[min(1, block.s.size - 1)].imag) for block in blocks)
+    high = max(float(block.s[-1].imag) for block in blocks)
+    most = largest_order(blocks)
+    order = min(FIRST_ORDER, most)
+    start = starting_sections(low, high, order)
+    best = _vector_fit(blocks, start)
+    while order < most:
+        order = min(2 * order, most)
+        extra = starting_sections(low, high, order - best.sections.order)
+        richer = _vector_fit(blocks, best.sections.join(extra))
+        if _criterion(blocks, richer) >= _criterion(blocks, best):
+            break
+        best = richer
+    return best
+
+
+def _vector_fit(blocks: Sequence[Block], start: Sections) -> Solution:
+    """Relocate a few times and keep the best, then refine a little."""
+    sections = start
+    best: Solution | None = None
+    for _ in range(RELOCATIONS):
+        sections = relocate(blocks, sections, 2)
+        trial = solve(blocks, sections, 2)
+        if best is None or trial.misfit < best.misfit:
+            improved = best is None or trial.misfit < 0.98 * best.misfit
+            best = trial
+            if not improved:
+                break
+    assert best is not None
+    return refine(blocks, split(blocks, best), iterations=6, tolerance=1.0)
+
+
+def split(blocks: Sequence[Block], solution: Solution) -> Solution:
+    """Let real poles of second-order sections stand alone, so that each may be judged."""
+    flat = solution.sections.split()
+    if flat.c.size == solution.sections.c.size:
+        return solution
+    return solve(blocks, flat, solution.direct)
+
+
+def prune(blocks: Sequence[Block], start: Solution, places: int) -> Solution:
+    """Remove sections that noise alone explains, weakest first, refining after each step."""
+    channels = sum(block.channels for block in blocks)
+    pair = threshold(channels, places, KEEP_CHANCE)
+    real = threshold(channels, places, KEEP_CHANCE, columns=1)
+    current = split(blocks, start)
+    kept = np.zeros(current.sections.count, dtype=bool)
+    batch_allowed = True
+    while current.sections.count:
+        info = information(blocks, current)
+        limit = np.where(np.arange(current.sections.count) < current.sections.c1.size, pair, real)
+        level = variance_factor(blocks, current)
+        score = section_scores(current, info) / level / limit
+        score[kept] = np.inf
+        weak = np.argsort(score)
+        weak = weak[score[weak] < 1.0]
+        if weak.size == 0:
+            break
+        take = weak[: max(1, weak.size // 2)] if batch_allowed else weak[:1]
+        mask = np.ones(current.sections.count, dtype=bool)
+        mask[take] = False
+        trial = solve(blocks, current.sections.keep(mask), current.direct)
+        trial = refine(blocks, trial, iterations=8, tolerance=0.1)
+        if trial.misfit - current.misfit < level * float(limit[take].sum()) / (
+            1 if take.size == 1 else 2
+        ):
+            flat = split(blocks, trial)
+            kept = kept[mask] if flat is trial else np.zeros(flat.sections.count, dtype=bool)
+            current = flat
+        elif take.size > 1:
+            batch_allowed = False
+        else:
+            kept[take] = True
+    return refine(blocks, current, iterations=30, tolerance=1e-3)
+
+
+def trial_grid(
+    blocks: Sequence[Block], damping: float, count: int
+) -> FloatArray:
+    """Return frequencies at which to try a further mode: where the samples are."""
+    axis = np.unique(np.concatenate([block.s.imag for block in blocks]))
+    axis = axis[axis > 0]
+    if axis.size <= count:
+        return axis
+    return axis[np.unique(np.linspace(0, axis.size - 1, count).astype(int))]
+
+
+def grow(blocks: Sequence[Block], start: Solution, places: int) -> Solution:
+    """Add pairs where the residual still holds one, until none stands out of the noise."""
+    channels = sum(block.channels for block in blocks)
+    limit = threshold(channels, places, KEEP_CHANCE)
+    current = start
+    frequencies = trial_grid(blocks, 0.0, 120)
+    for _ in range(6):
+        if current.sections.order + 2 > largest_order(blocks):
+            break
+        info = information(blocks, current)
+        level = variance_factor(blocks, current)
+        place, gain = _best_place(blocks, current, info, frequencies)
+        if gain < limit * level:
+            break
+        trial = solve(blocks, current.sections.join(from_poles(np.array([place]))), current.direct)
+        trial = refine(blocks, trial, iterations=20, tolerance=0.1)
+        if current.misfit - trial.misfit < limit * level:
+            break
+        current = split(blocks, trial)
+    return current
+
+
+def _best_place(
+    blocks: Sequence[Block], current: Solution, info: Information, frequencies: FloatArray
+) -> tuple[complex, float]:
+    gap = np.gradient(frequencies) if frequencies.size > 1 else frequencies
+    best = 0j, 0.0
+    for width in (1.0, 4.0):
+        poles = -np.minimum(width * gap, 0.5 * frequencies) + 1j * frequencies
+        result = scan(blocks, current, info, poles)
+        at = int(np.argmax(result.gain))
+        if result.gain[at] > best[1]:
+            best = complex(poles[at]), float(result.gain[at])
+    return best
+
+
+def drop_direct(blocks: Sequence[Block], start: Solution) -> Solution:
+    """Leave out the s-proportional term when no channel needs it."""
+    if start.direct < 2:
+        return start
+    channels = sum(block.channels for block in blocks)
+    trial = solve(blocks, start.sections, 1)
+    trial = refine(blocks, trial, iterations=8, tolerance=0.1)
+    level = variance_factor(blocks, start)
+    rise = trial.misfit - start.misfit
+    if rise < level * threshold(channels, 1, KEEP_CHANCE, columns=1):
+        return trial
+    return start
