@@ -74,9 +74,7 @@ def first_guess(size: FloatArray, known: FloatArray) -> NoiseLaw:
     return NoiseLaw(np.full(channels, 1e-6), 1e-8 * middle)
 
 
-def estimate(
-    residual: FloatArray, size: FloatArray, known: FloatArray, spent: float
-) -> NoiseLaw:
+def estimate(residual: FloatArray, size: FloatArray, known: FloatArray, spent: float) -> NoiseLaw:
     """Estimate the law from the residuals of a fit.
 
     Parameters

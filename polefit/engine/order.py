@@ -52,10 +52,30 @@ class Found(NamedTuple):
     reason: str
 
 
-def search(blocks: Sequence[Block]) -> Found:
-    """Find order and poles for data whose noise level is free but whose noise shape is known."""
-    richest = _rich_fit(blocks)
-    places = sum(block.s.size for block in blocks)
+def count_places(blocks: Sequence[Block]) -> int:
+    """Return the number of frequencies at which a spare pair could settle."""
+    return int(np.unique(np.concatenate([block.s.imag for block in blocks])).size)
+
+
+def search(blocks: Sequence[Block], start: Solution | None = None) -> Found:
+    """Find order and poles for data whose noise level is free but whose noise shape is known.
+
+    Parameters
+    ----------
+    blocks : sequence of Block
+        Data.
+    start : Solution, optional
+        A rich model from a search with other weights, to be taken up again.
+
+    Returns
+    -------
+    Found
+    """
+    if start is None:
+        richest = _rich_fit(blocks)
+    else:
+        richest = refine(blocks, solve(blocks, start.sections, 2), iterations=10, tolerance=0.1)
+    places = count_places(blocks)
     pruned = prune(blocks, richest, places)
     grown = grow(blocks, pruned, places)
     if grown.sections.order > pruned.sections.order:
@@ -68,11 +88,13 @@ def search(blocks: Sequence[Block]) -> Found:
     return Found(final, richest, reason)
 
 
-def _samples(blocks: Sequence[Block]) -> int:
+def samples(blocks: Sequence[Block]) -> int:
+    """Return the number of real samples."""
     return sum(block.rows for block in blocks)
 
 
-def _parameters(blocks: Sequence[Block], solution: Solution) -> int:
+def parameters(blocks: Sequence[Block], solution: Solution) -> int:
+    """Return the number of real parameters: poles, and residues and direct terms per channel."""
     channels = sum(block.channels for block in blocks)
     n = solution.sections.order
     return n + channels * (n + solution.direct)
@@ -80,15 +102,15 @@ def _parameters(blocks: Sequence[Block], solution: Solution) -> int:
 
 def variance_factor(blocks: Sequence[Block], solution: Solution) -> float:
     """Return χ² per degree of freedom."""
-    freedom = _samples(blocks) - _parameters(blocks, solution)
+    freedom = samples(blocks) - parameters(blocks, solution)
     return solution.misfit / max(freedom, 1)
 
 
 def _criterion(blocks: Sequence[Block], solution: Solution) -> float:
     """Return BIC with the noise level free (G. Schwarz, Ann. Statist. 6, 461, 1978)."""
-    samples = _samples(blocks)
+    samples = samples(blocks)
     level = max(solution.misfit / samples, 1e-300)
-    return samples * math.log(level) + _parameters(blocks, solution) * math.log(samples)
+    return samples * math.log(level) + parameters(blocks, solution) * math.log(samples)
 
 
 def largest_order(blocks: Sequence[Block]) -> int:
@@ -176,9 +198,7 @@ def prune(blocks: Sequence[Block], start: Solution, places: int) -> Solution:
     return refine(blocks, current, iterations=30, tolerance=1e-3)
 
 
-def trial_grid(
-    blocks: Sequence[Block], damping: float, count: int
-) -> FloatArray:
+def trial_grid(blocks: Sequence[Block], count: int) -> FloatArray:
     """Return frequencies at which to try a further mode: where the samples are."""
     axis = np.unique(np.concatenate([block.s.imag for block in blocks]))
     axis = axis[axis > 0]
@@ -192,7 +212,7 @@ def grow(blocks: Sequence[Block], start: Solution, places: int) -> Solution:
     channels = sum(block.channels for block in blocks)
     limit = threshold(channels, places, KEEP_CHANCE)
     current = start
-    frequencies = trial_grid(blocks, 0.0, 120)
+    frequencies = trial_grid(blocks, 120)
     for _ in range(6):
         if current.sections.order + 2 > largest_order(blocks):
             break

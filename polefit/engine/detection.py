@@ -1,0 +1,71 @@
+"""What would have gone unnoticed: the smallest residue found with a given power.
+
+At each frequency the Fisher information of a further pair's residue, everything else free, gives
+the noncentrality of the test that would have found it (S. M. Kay, Fundamentals of Statistical
+Signal Processing: Detection Theory, 1998, from memory: generalised likelihood ratio).
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+import numpy as np
+import scipy.optimize
+import scipy.stats
+
+from polefit.engine.blocks import Block, FloatArray
+from polefit.engine.projection import Solution
+from polefit.engine.significance import Information, scan
+
+
+def residue_limits(
+    blocks: Sequence[Block],
+    solution: Solution,
+    info: Information,
+    frequencies: FloatArray,
+    *,
+    damping_ratio: float,
+    power: float,
+    threshold: float,
+    level: float,
+) -> FloatArray:
+    """Return the smallest |residue| of a hidden pair that would have been found.
+
+    Parameters
+    ----------
+    frequencies : (C,) float ndarray
+        Im of the pole, normalised rad/s.
+    damping_ratio : float
+        Of the hidden pair; negative grows.
+    power : float
+        Probability of finding it.
+    threshold : float
+        χ² above which a pair is claimed.
+    level : float
+        Noise variance of the weighted samples.
+
+    Returns
+    -------
+    (C, K) float ndarray
+        For the least favourable phase of the residue; infinite where a channel is blind.
+    """
+    tilt = -damping_ratio / np.sqrt(1 - damping_ratio**2)
+    poles = frequencies * (tilt + 1j)
+    found = scan(blocks, solution, info, poles).information
+    a, b, c = found[..., 0, 0], found[..., 1, 1], found[..., 0, 1]
+    smallest = (a + b) / 2 - np.sqrt(((a - b) / 2) ** 2 + c**2)
+    scale = np.maximum((a + b) / 2, 1e-300)
+    usable = smallest > 1e-9 * scale
+    needed = noncentrality(threshold, 2, power) * level
+    limits = np.where(usable, np.sqrt(needed / np.where(usable, smallest, 1.0)), np.inf)
+    result: FloatArray = limits.T
+    return result
+
+
+def noncentrality(threshold: float, freedom: int, power: float) -> float:
+    """Return λ for which a non-central χ² exceeds `threshold` with probability `power`."""
+
+    def excess(value: float) -> float:
+        return float(scipy.stats.ncx2.sf(threshold, freedom, value)) - power
+
+    return float(scipy.optimize.brentq(excess, 1e-6, 4 * threshold + 100.0))

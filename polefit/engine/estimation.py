@@ -1,0 +1,217 @@
+"""From responses to a fitted model with its noise law: everything before judgement.
+
+The noise law and the model are found in turn: a first fit with the shape of the noise guessed,
+the law from its residuals, the search again with proper weights.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from typing import NamedTuple
+
+import numpy as np
+
+from polefit.engine.blocks import Block, ComplexArray, FloatArray, make_block
+from polefit.engine.noise import NoiseLaw, estimate, first_guess, variance
+from polefit.engine.order import (
+    Found,
+    count_places,
+    largest_order,
+    parameters,
+    samples,
+    search,
+    split,
+    trial_grid,
+    variance_factor,
+)
+from polefit.engine.projection import Solution, solve
+from polefit.engine.refinement import refine
+from polefit.engine.sections import from_poles
+from polefit.engine.significance import Information, information, scan, section_scores
+from polefit.engine.whiteness import Whiteness, judge_whiteness
+
+
+class Measured(NamedTuple):
+    """Responses on one frequency axis, as the engine takes them.
+
+    Attributes
+    ----------
+    s : (N,) complex ndarray
+        Normalised complex frequency.
+    values : (K, N) complex ndarray
+        Responses.
+    known : (K, 2, N) float ndarray
+        Known noise variance of the two parts of each sample.
+    turn : (K, N) complex ndarray or None
+        Unit phasors, where the parts lie along and across the sample.
+    """
+
+    s: ComplexArray
+    values: ComplexArray
+    known: FloatArray
+    turn: ComplexArray | None
+
+
+class Estimation(NamedTuple):
+    """A fitted model and what judgement needs.
+
+    Attributes
+    ----------
+    blocks : tuple of Block
+        Weighted data.
+    laws : tuple of NoiseLaw
+        Noise law of each block.
+    noise : tuple of (K, 2, N) float ndarray
+        Variance of the parts, scaled so that χ² per degree of freedom is one.
+    solution : Solution
+        The model.
+    info : Information
+        Its Fisher information.
+    level : float
+        χ² per degree of freedom with the weights used.
+    scores : (sections,) float ndarray
+        Wald χ² of each section in units of the noise.
+    past : Solution
+        A model somewhat past the order taken, to see what moves.
+    richest : Solution
+        The rich model from which the search pruned.
+    whiteness : Whiteness
+        Of the residual.
+    places : int
+        Number of places at which a spare pair could settle.
+    reason : str
+        Why this order was taken.
+    """
+
+    blocks: tuple[Block, ...]
+    laws: tuple[NoiseLaw, ...]
+    noise: tuple[FloatArray, ...]
+    solution: Solution
+    info: Information
+    level: float
+    scores: FloatArray
+    past: Solution
+    richest: Solution
+    whiteness: Whiteness
+    places: int
+    reason: str
+
+
+def estimate_model(
+    data: Sequence[Measured], progress: Callable[[str], None] = lambda _: None
+) -> Estimation:
+    """Fit order, poles, residues and noise law.
+
+    Parameters
+    ----------
+    data : sequence of Measured
+        One for each frequency axis.
+    progress : callable
+        Told what is being done.
+
+    Returns
+    -------
+    Estimation
+    """
+    laws = tuple(first_guess(np.abs(m.values), m.known) for m in data)
+    blocks = _weigh(data, laws, None)
+    progress("searching the order")
+    found = search(blocks)
+    for _ in range(2):
+        progress("estimating the noise")
+        laws = _laws(data, blocks, found.solution)
+        blocks = _weigh(data, laws, found.solution)
+        found = _again(blocks, found)
+    solution = refine(
+        blocks,
+        solve(blocks, found.solution.sections, found.solution.direct),
+        iterations=40,
+        tolerance=1e-5,
+    )
+    solution = split(blocks, solution)
+    level = variance_factor(blocks, solution)
+    info = information(blocks, solution)
+    progress("checking what moves with the order")
+    return Estimation(
+        blocks=blocks,
+        laws=laws,
+        noise=tuple(
+            level * variance(law, _size(part_values), m.known)
+            for law, m, part_values in zip(laws, data, _models(solution), strict=True)
+        ),
+        solution=solution,
+        info=info,
+        level=level,
+        scores=section_scores(solution, info) / level,
+        past=go_past(blocks, solution, info),
+        richest=found.richest,
+        whiteness=judge_whiteness(solution.parts),
+        places=count_places(blocks),
+        reason=found.reason,
+    )
+
+
+def _again(blocks: tuple[Block, ...], found: Found) -> Found:
+    """Search again from the rich model, unless the new weights hardly change anything."""
+    return search(blocks, start=found.richest)
+
+
+def _models(solution: Solution) -> list[ComplexArray]:
+    return [part.coefficients @ part.basis.columns.T for part in solution.parts]
+
+
+def _size(values: ComplexArray) -> FloatArray:
+    result: FloatArray = np.abs(values)
+    return result
+
+
+def _weigh(
+    data: Sequence[Measured], laws: Sequence[NoiseLaw], solution: Solution | None
+) -> tuple[Block, ...]:
+    """Weight by the law, at the size of the model once there is one: the data are noisy."""
+    sizes = (
+        [_size(m.values) for m in data]
+        if solution is None
+        else [_size(values) for values in _models(solution)]
+    )
+    return tuple(
+        make_block(m.s, m.values, 1.0 / np.sqrt(variance(law, size, m.known)), m.turn)
+        for m, law, size in zip(data, laws, sizes, strict=True)
+    )
+
+
+def _laws(
+    data: Sequence[Measured], blocks: Sequence[Block], solution: Solution
+) -> tuple[NoiseLaw, ...]:
+    channels = sum(m.values.shape[0] for m in data)
+    spent = parameters(blocks, solution) / channels
+    laws = []
+    for m, model in zip(data, _models(solution), strict=True):
+        rest = m.values - model
+        if m.turn is not None:
+            rest = rest * m.turn
+        parts = np.stack((rest.real, rest.imag), axis=1)
+        laws.append(estimate(parts, _size(model), m.known, spent))
+    return tuple(laws)
+
+
+def go_past(blocks: Sequence[Block], solution: Solution, info: Information) -> Solution:
+    """Add two pairs where they help most, wanted or not, and refine: what depends on the order?"""
+    frequencies = trial_grid(blocks, 100)
+    if solution.sections.order + 4 > largest_order(blocks) or frequencies.size < 4:
+        return solution
+    gap = np.gradient(frequencies)
+    poles = -np.minimum(2 * gap, 0.5 * frequencies) + 1j * frequencies
+    gain = scan(blocks, solution, info, poles).gain
+    first = int(np.argmax(gain))
+    away = np.abs(np.arange(gain.size) - first) > gain.size // 10
+    second = int(np.argmax(np.where(away, gain, -1.0)))
+    richer = solution.sections.join(from_poles(poles[[first, second]]))
+    return split(
+        blocks, refine(blocks, solve(blocks, richer, solution.direct), iterations=15, tolerance=0.1)
+    )
+
+
+def freedom(estimation: Estimation) -> int:
+    """Return the degrees of freedom of the residual."""
+    return samples(estimation.blocks) - parameters(estimation.blocks, estimation.solution)

@@ -1,0 +1,86 @@
+"""The best model without right-half-plane poles, its order free: what stability would cost."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+from typing import NamedTuple
+
+import numpy as np
+
+from polefit.engine.blocks import Block
+from polefit.engine.order import parameters, samples, split
+from polefit.engine.projection import Solution, solve
+from polefit.engine.refinement import refine
+from polefit.engine.sections import Sections
+
+
+class StableModel(NamedTuple):
+    """Comparison of the best confined model with the free one.
+
+    Attributes
+    ----------
+    misfit_ratio : float
+        Root of χ² confined over χ² free.
+    rise : float
+        Increase of χ², corrected for the numbers of parameters as BIC counts them, in units
+        of the noise variance.
+    order : int
+        Order of the confined model.
+    """
+
+    misfit_ratio: float
+    rise: float
+    order: int
+
+
+def reflected(sections: Sections) -> Sections:
+    """Return the sections with every coefficient made non-negative: a start, not an answer."""
+    return Sections(np.abs(sections.c1), np.abs(sections.c0), np.abs(sections.c))
+
+
+def on_axis(sections: Sections) -> Sections:
+    """Return the sections with right-half-plane pairs moved to the axis: another start."""
+    return Sections(
+        np.maximum(sections.c1, 1e-9 * np.sqrt(np.abs(sections.c0))),
+        np.abs(sections.c0),
+        np.maximum(sections.c, 0.0),
+    )
+
+
+def compare_with_stable(
+    blocks: Sequence[Block], free: Solution, richer: Sequence[Solution], level: float
+) -> StableModel:
+    """Fit models confined to the left half-plane.
+
+    Parameters
+    ----------
+    blocks : sequence of Block
+        Data.
+    free : Solution
+        The free model.
+    richer : sequence of Solution
+        Models of higher order, whose poles serve as further starts: a stable model may be
+        allowed more poles than the free one if it pays for them.
+    level : float
+        Noise variance of the weighted samples.
+
+    Returns
+    -------
+    StableModel
+    """
+    count = samples(blocks)
+    best: tuple[float, Solution] | None = None
+    starts = [on_axis(free.sections), reflected(free.sections)]
+    starts += [reflected(solution.sections) for solution in richer]
+    for start in starts:
+        confined = split(blocks, solve(blocks, start, free.direct))
+        confined = refine(blocks, confined, iterations=25, tolerance=0.1, left_half_plane=True)
+        price = parameters(blocks, confined) * math.log(count)
+        cost = confined.misfit / level + price
+        if best is None or cost < best[0]:
+            best = cost, confined
+    assert best is not None
+    rise = best[0] - free.misfit / level - parameters(blocks, free) * math.log(count)
+    ratio = math.sqrt(best[1].misfit / max(free.misfit, 1e-300))
+    return StableModel(ratio, rise, best[1].sections.order)

@@ -1,0 +1,77 @@
+"""Does the residual look like noise, and if not, how much less do the samples tell?
+
+Portmanteau test of G. M. Ljung and G. E. P. Box, "On a measure of lack of fit in time series
+models", Biometrika 65(2), 297-303, 1978 (from memory), along the frequency axis of each channel.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from typing import NamedTuple
+
+import numpy as np
+import scipy.stats
+
+from polefit.engine.projection import Projected
+
+CHANCE = 1e-3
+"""Probability with which white noise would be called coloured, over all channels."""
+
+
+class Whiteness(NamedTuple):
+    """Colour of the residual.
+
+    Attributes
+    ----------
+    white : bool
+        Whether white noise would look like this.
+    probability : float
+        Of so much correlation in white noise.
+    inflation : float
+        Factor >= 1 by which correlated residuals raise the variance of estimates; 1 when white.
+    """
+
+    white: bool
+    probability: float
+    inflation: float
+
+
+def judge_whiteness(parts: Sequence[Projected]) -> Whiteness:
+    """Test the weighted residuals of all channels.
+
+    Parameters
+    ----------
+    parts : sequence of Projected
+        Their residuals, (K, 2N) each.
+
+    Returns
+    -------
+    Whiteness
+    """
+    statistic, freedom = 0.0, 0
+    factors: list[float] = []
+    for part in parts:
+        channels, rows = part.residual.shape
+        points = rows // 2
+        lags = min(10, points // 5)
+        if lags < 1:
+            continue
+        series = part.residual.reshape(channels, 2, points)
+        energy = np.sum(series**2, axis=(1, 2))
+        energy[energy == 0] = 1.0
+        lag = np.arange(1, lags + 1)
+        correlation = np.stack(
+            [np.sum(series[..., k:] * series[..., :-k], axis=(1, 2)) / energy for k in lag], axis=1
+        )
+        # each lag sums two independent parts: variance about 1 / (2 N)
+        scaled = correlation**2 * (2 * points) * (points + 2) / (points - lag)
+        statistic += float(scaled.sum())
+        freedom += channels * lags
+        weight = 1 - lag / (lags + 1)
+        factors.extend(1 + 2 * correlation @ weight)
+    if freedom == 0:
+        return Whiteness(True, 1.0, 1.0)
+    probability = float(scipy.stats.chi2.sf(statistic, freedom))
+    white = probability > CHANCE
+    inflation = 1.0 if white else max(1.0, float(np.mean(factors)))
+    return Whiteness(white, probability, inflation)
