@@ -1,0 +1,66 @@
+"""``polefit identify FILE…``: from response files to a verdict."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import click
+
+from polefit.cli import options
+from polefit.cli.output import Outputs, check_paths, deliver
+from polefit.cli.progress import Progress
+from polefit.cli.reading import read_files
+
+
+@click.command()
+@click.argument("files", nargs=-1, required=True, metavar="FILE…")
+@options.band_option
+@click.option(
+    "--confidence",
+    type=options.Number(0, 1, min_open=True, max_open=True),
+    default=0.95,
+    metavar="P",
+    show_default=True,
+    help="Confidence of the verdicts.",
+)
+@click.option("--separately", is_flag=True, help="Each FILE is a circuit of its own.")
+@options.json_option
+@options.html_option
+@options.hdf5_option
+@options.figures_option
+@options.figure_format_option
+@options.quiet_option
+@options.reading_options
+def identify(
+    files: tuple[str, ...],
+    band: tuple[float, float] | None,
+    confidence: float,
+    separately: bool,
+    json: str | None,
+    html: str | None,
+    hdf5: str | None,
+    figures: str | None,
+    figure_format: tuple[str, ...],
+    quiet: bool,
+    **reading: Any,
+) -> int:
+    """Find the natural modes in response files and say whether one grows.
+
+    Several FILEs are several probes of one circuit and share their modes; a one-port file names
+    its node by its stem. Exit status: 0 nothing unstable, 1 unstable, 3 undecided, 2 bad input.
+    """
+    outputs = Outputs(json, html, hdf5, figures, figure_format, quiet)
+    check_paths(outputs)
+    band_hz = options.checked_band(band)
+    with Progress(quiet) as progress:
+        responses = read_files(files, reading, progress)
+        progress("loading the numerics")
+        from polefit.analysis.identify import identify as identify_responses
+
+        groups = [[r] for r in responses] if separately else [responses]
+        results = [
+            identify_responses(group, band_hz=band_hz, confidence=confidence, progress=progress)
+            for group in groups
+        ]
+        progress("writing the report")
+        return deliver(results, outputs, separately=separately)

@@ -1,0 +1,187 @@
+"""Options that several commands share. Nothing heavy is imported here: ``--help`` is quick."""
+
+from __future__ import annotations
+
+import math
+import re
+from collections.abc import Callable
+from functools import reduce
+from typing import TYPE_CHECKING, Any, TypeVar
+
+import click
+
+from polefit.errors import ArgumentError
+
+Command = TypeVar("Command", bound=Callable[..., Any])
+
+QUANTITY_NAMES = (
+    "impedance",
+    "admittance",
+    "scattering",
+    "transfer",
+    "hybrid",
+    "inverse-hybrid",
+    "return-difference",
+    "loop-gain",
+)
+_FREQUENCY = re.compile(r"\s*(\+?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?)\s*([A-Za-z]*)\s*")
+_FACTORS = {"": 1.0, "hz": 1.0, "khz": 1e3, "mhz": 1e6, "ghz": 1e9, "thz": 1e12}
+
+
+def as_frequency(text: str) -> float:
+    """Turn ``1.5e9``, ``1.5GHz`` or ``1500 MHz`` into hertz.
+
+    Raises
+    ------
+    ArgumentError
+        If it is neither; ``mHz`` is refused, since it may mean a thousandth.
+    """
+    match = _FREQUENCY.fullmatch(text)
+    unit = match[2] if match else ""
+    if match is None or unit.lower() not in _FACTORS:
+        raise ArgumentError(f"{text!r} is not a frequency; write it like 1.5e9, 1.5GHz or 1500MHz")
+    if unit.lower() == "mhz" and unit[0] == "m":
+        raise ArgumentError(f"{text!r} could mean a thousandth of a hertz; write MHz for 1e6")
+    value = float(match[1]) * _FACTORS[unit.lower()]
+    if value == float("inf"):
+        raise ArgumentError(f"{text!r} is not a finite frequency")
+    return value
+
+
+if TYPE_CHECKING:
+    _FloatType = click.ParamType[float]
+else:
+    _FloatType = click.ParamType
+
+
+class Frequency(_FloatType):
+    """A frequency with or without unit, in hertz."""
+
+    name = "hz"
+
+    def convert(
+        self, value: Any, param: click.Parameter | None, ctx: click.Context | None
+    ) -> float:
+        """Return hertz."""
+        if isinstance(value, float):
+            return value
+        try:
+            return as_frequency(str(value))
+        except ArgumentError as error:
+            self.fail(str(error), param, ctx)
+
+
+class Number(click.FloatRange):
+    """A number between limits; NaN, which no comparison excludes, is none."""
+
+    def convert(
+        self, value: Any, param: click.Parameter | None, ctx: click.Context | None
+    ) -> float:
+        """Return the number."""
+        number = float(super().convert(value, param, ctx))
+        if not math.isfinite(number):
+            self.fail(f"{value!r} is not a finite number", param, ctx)
+        return number
+
+
+def names(values: tuple[str, ...]) -> tuple[str, ...]:
+    """Split comma lists into names; commas inside brackets, as in v(a,b), stay."""
+    found: list[str] = []
+    for value in values:
+        depth, start = 0, 0
+        for at, letter in enumerate(value):
+            depth += {"(": 1, ")": -1}.get(letter, 0)
+            if letter == "," and depth <= 0:
+                found.append(value[start:at])
+                start = at + 1
+        found.append(value[start:])
+    return tuple(name.strip() for name in found if name.strip())
+
+
+def _together(*options: Callable[[Command], Command]) -> Callable[[Command], Command]:
+    """Apply options so that help lists them in the order given."""
+
+    def decorate(command: Command) -> Command:
+        return reduce(lambda wrapped, option: option(wrapped), reversed(options), command)
+
+    return decorate
+
+
+_FORMS = ("real-imaginary", "magnitude-angle", "decibel-angle")
+
+reading_options = _together(
+    click.option(
+        "--quantity",
+        type=click.Choice(QUANTITY_NAMES),
+        help="What the values are; matrices are converted to it.",
+    ),
+    click.option(
+        "--driven",
+        multiple=True,
+        metavar="NODE",
+        help="Node driven by the source, for files of node voltages; once, or once per FILE.",
+    ),
+    click.option("--select", multiple=True, metavar="NODE,…", help="Outputs to keep."),
+    click.option(
+        "--node",
+        multiple=True,
+        metavar="NAME",
+        help="Node of a one-port file, instead of its stem; once per FILE.",
+    ),
+    click.option("--decimal", type=click.Choice((".", ",")), help="Decimal mark of a text file."),
+    click.option("--delimiter", metavar="NAME", help="comma, semicolon, tab or blanks."),
+    click.option(
+        "--frequency-unit",
+        type=click.Choice(("Hz", "kHz", "MHz", "GHz", "THz")),
+        help="Where a text file does not say.",
+    ),
+    click.option("--form", type=click.Choice(_FORMS), help="The two numbers of a sample."),
+    click.option("--angle-unit", type=click.Choice(("deg", "rad")), help="Unit of angles."),
+    click.option(
+        "--scaling",
+        type=click.Choice(("normalised", "absolute")),
+        help="Of Z, Y, H, G numbers in a Touchstone 1.x file.",
+    ),
+    click.option(
+        "--reference-ohm",
+        type=Number(min=0, min_open=True),
+        metavar="OHM",
+        help="Reference resistance of scattering data.",
+    ),
+)
+
+band_option = click.option(
+    "--band",
+    nargs=2,
+    type=Frequency(),
+    metavar="LO HI",
+    help="Only this band, such as 10MHz 6GHz.",
+)
+json_option = click.option("--json", metavar="PATH", help="Write JSON; - is standard output.")
+html_option = click.option("--html", metavar="PATH", help="Write one self-contained page.")
+figures_option = click.option("--figures", metavar="DIR", help="Write the figures.")
+figure_format_option = click.option(
+    "--figure-format",
+    type=click.Choice(("png", "svg", "pdf")),
+    multiple=True,
+    default=("png",),
+    show_default=True,
+    help="Of the figures; may be given several times.",
+)
+hdf5_option = click.option("--hdf5", metavar="PATH", help="Write data and result as HDF5.")
+quiet_option = click.option(
+    "--quiet", is_flag=True, help="No progress; only the verdict on standard output."
+)
+
+
+def checked_band(band: tuple[float, float] | None) -> tuple[float, float] | None:
+    """Return the band, low before high.
+
+    Raises
+    ------
+    ArgumentError
+        If it is reversed or empty.
+    """
+    if band and not band[0] < band[1]:
+        raise ArgumentError(f"--band: {band[0]:g} to {band[1]:g} Hz is empty; give LO, then HI")
+    return band or None
