@@ -196,7 +196,7 @@ def _laws(
 
 
 def go_past(blocks: Sequence[Block], solution: Solution, info: Information) -> Solution:
-    """Add two pairs where they help most, wanted or not, and refine: what depends on the order?"""
+    """Add two pairs where they help most, wanted or not, to see what depends on the order."""
     frequencies = trial_grid(blocks, 100)
     if solution.sections.order + 4 > largest_order(blocks) or frequencies.size < 4:
         return solution

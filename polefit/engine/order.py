@@ -108,9 +108,9 @@ def variance_factor(blocks: Sequence[Block], solution: Solution) -> float:
 
 def _criterion(blocks: Sequence[Block], solution: Solution) -> float:
     """Return BIC with the noise level free (G. Schwarz, Ann. Statist. 6, 461, 1978)."""
-    samples = samples(blocks)
-    level = max(solution.misfit / samples, 1e-300)
-    return samples * math.log(level) + parameters(blocks, solution) * math.log(samples)
+    count = samples(blocks)
+    level = max(solution.misfit / count, 1e-300)
+    return count * math.log(level) + parameters(blocks, solution) * math.log(count)
 
 
 def largest_order(blocks: Sequence[Block]) -> int:

@@ -84,7 +84,7 @@ def _project(block: Block, sections: Sections, direct: int) -> Projected:
 
 
 def raw_jacobian(block: Block, sections: Sections, part: Projected) -> FloatArray:
-    """Derivatives of the weighted model by the pole parameters, linear parameters held.
+    """Differentiate the weighted model by the pole parameters, linear parameters held.
 
     Returns
     -------

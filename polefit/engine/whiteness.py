@@ -1,4 +1,4 @@
-"""Does the residual look like noise, and if not, how much less do the samples tell?
+"""Whether the residual looks like noise, and if not, how much less the samples tell.
 
 Portmanteau test of G. M. Ljung and G. E. P. Box, "On a measure of lack of fit in time series
 models", Biometrika 65(2), 297-303, 1978 (from memory), along the frequency axis of each channel.

@@ -1,0 +1,242 @@
+"""Is it stable? From responses to a verdict with modes, loops and what they rest on."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+
+import numpy as np
+from threadpoolctl import threadpool_limits
+
+from polefit.analysis.judgement import CLAIM_CHANCE, Judged, judge
+from polefit.analysis.preparation import Prepared, node_names, prepare
+from polefit.engine.detection import residue_limits
+from polefit.engine.estimation import Estimation, estimate_model
+from polefit.engine.order import trial_grid
+from polefit.engine.sections import residues
+from polefit.engine.significance import threshold
+from polefit.errors import ArgumentError
+from polefit.modes import (
+    Detection,
+    FitQuality,
+    Identification,
+    Loop,
+    Mode,
+    RationalModel,
+    Verdict,
+)
+from polefit.responses import Channel, ResponseSet
+
+DETECTION_DAMPING = -0.01
+DETECTION_POWER = 0.95
+SUSPECT_DAMPING = 0.05
+"""Modes damped less than this are listed as suspect loops (common practice)."""
+POOR_FIT = 0.2
+"""A model that misses the data by this much relative to them carries no verdict."""
+
+
+def identify(
+    responses: ResponseSet | Sequence[ResponseSet],
+    *,
+    band_hz: tuple[float, float] | None = None,
+    confidence: float = 0.95,
+    progress: Callable[[str], None] | None = None,
+) -> Identification:
+    """Identify the natural modes behind frequency responses and judge their stability.
+
+    Parameters
+    ----------
+    responses : ResponseSet or sequence of ResponseSet
+        Responses of one circuit. Several sets, each with its own frequency axis, share their
+        poles; they must leave the circuit terminated in the same way.
+    band_hz : (float, float), optional
+        Use only the points from low to high, in hertz.
+    confidence : float
+        Confidence of the verdict over all modes in the band, between 0.5 and 1.
+    progress : callable, optional
+        Told in a few words what is being done.
+
+    Returns
+    -------
+    Identification
+
+    Raises
+    ------
+    ArgumentError
+        If the sets cannot be identified together, or an argument is out of range.
+    DataError
+        If the data cannot carry a verdict.
+    NotSupportedError
+        For return differences, loop gains and pumped circuits.
+
+    Notes
+    -----
+    Rational model with poles shared by all channels and residues private to each, fitted by
+    maximum likelihood (variable projection) from starting poles by relaxed vector fitting
+    without flipping. See the modules of ``polefit.engine`` for the sources.
+
+    Examples
+    --------
+    >>> import numpy as np, polefit
+    >>> f = np.linspace(1e6, 40e6, 201)
+    >>> s = 2j * np.pi * f
+    >>> z = s * 1e10 / (s**2 - 1e7 * s + 1e16)
+    >>> z = z * (1 + 1e-6 * np.random.default_rng(1).normal(size=201))
+    >>> data = polefit.ResponseSet.from_arrays(f, z, channels=["tank"], quantity="impedance")
+    >>> polefit.identify(data).verdict
+    'unstable'
+    """
+    if not 0.5 < confidence < 1:
+        raise ArgumentError(f"confidence: {confidence} is not between 0.5 and 1; give e.g. 0.95")
+    prepared = prepare(responses, band_hz)
+    with threadpool_limits(limits=1), np.errstate(all="ignore"):
+        estimation = estimate_model(prepared.measured, progress or (lambda _: None))
+        return _answer(prepared, estimation, confidence)
+
+
+def _answer(prepared: Prepared, estimation: Estimation, confidence: float) -> Identification:
+    sets = prepared.responses
+    channels = tuple(c for one in sets for c in one.channels)
+    band = (min(one.band_hz[0] for one in sets), max(one.band_hz[1] for one in sets))
+    judged = judge(
+        estimation, prepared.scale_rad_per_s, band, channels, sets[0].quantity, confidence
+    )
+    model = _model(estimation, prepared.scale_rad_per_s, channels)
+    fit = _quality(prepared, estimation, judged, model)
+    verdict, reason = _run_verdict(judged, fit, band)
+    return Identification(
+        verdict=verdict,
+        reason=reason,
+        confidence=confidence,
+        band_hz=band,
+        responses=sets,
+        modes=judged.modes,
+        background=judged.background,
+        loops=_loops(judged.modes),
+        fit=fit,
+        model=model,
+        detection=_detection(estimation, prepared.scale_rad_per_s),
+        notes=_notes(prepared, estimation, fit),
+        noise_std=tuple(np.sqrt(v.sum(axis=1)).T for v in estimation.noise),
+    )
+
+
+def _model(estimation: Estimation, scale: float, channels: tuple[Channel, ...]) -> RationalModel:
+    solution = estimation.solution
+    order, direct = solution.sections.order, solution.direct
+    coefficients = np.concatenate([part.coefficients for part in solution.parts])
+    constant = coefficients[:, order]
+    slope = coefficients[:, order + 1] / scale if direct > 1 else np.zeros(len(channels))
+    return RationalModel(
+        poles=solution.sections.poles() * scale,
+        residues=residues(solution.sections, coefficients) * scale,
+        constant=constant,
+        proportional=slope,
+        channels=channels,
+    )
+
+
+def _quality(
+    prepared: Prepared, estimation: Estimation, judged: Judged, model: RationalModel
+) -> FitQuality:
+    errors, noises = [], []
+    for part, block, noise in zip(
+        estimation.solution.parts, estimation.blocks, estimation.noise, strict=True
+    ):
+        fitted = part.coefficients @ part.basis.columns.T
+        size = np.abs(block.values)
+        usable = size > 0
+        errors.append((np.abs(fitted - block.values)[usable] / size[usable]) ** 2)
+        noises.append(noise.sum(axis=1)[usable] / size[usable] ** 2)
+    stable = judged.stable_model
+    return FitQuality(
+        order=estimation.solution.sections.order,
+        order_reason=estimation.reason,
+        rms_relative=float(np.sqrt(np.mean(np.concatenate(errors)))),
+        noise_relative=float(np.sqrt(np.median(np.concatenate(noises)))),
+        noise_origin=_noise_origin(prepared, estimation),
+        residual_white=estimation.whiteness.white,
+        stable_model_misfit=None if stable is None else stable.misfit_ratio,
+    )
+
+
+def _noise_origin(prepared: Prepared, estimation: Estimation) -> str:
+    terms = []
+    relative = np.concatenate([law.relative for law in estimation.laws])
+    absolute = np.concatenate([law.absolute for law in estimation.laws])
+    if np.any(relative > 0):
+        terms.append("relative")
+    if np.any(absolute > 0):
+        terms.append("absolute")
+    estimated = f"{' and '.join(terms)} noise estimated from the residual" if terms else ""
+    known = []
+    if any(one.precision is not None and _digits(one) for one in prepared.responses):
+        known.append("rounding of the printed digits")
+    if any(one.sample_std is not None for one in prepared.responses):
+        known.append("the uncertainty given with the data")
+    listed = [*known, *([estimated] if estimated else [])]
+    return "; ".join(listed) if listed else "double precision: no noise above its rounding"
+
+
+def _digits(one: ResponseSet) -> bool:
+    assert one.precision is not None
+    printed = (one.precision.first, one.precision.second)
+    return any(p.significant is not None or p.decimals is not None for p in printed)
+
+
+def _run_verdict(judged: Judged, fit: FitQuality, band: tuple[float, float]) -> tuple[Verdict, str]:
+    inside = [mode for mode in judged.modes if mode.in_band]
+    unstable = [mode for mode in inside if mode.verdict == "unstable"]
+    undecided = [mode for mode in inside if mode.verdict == "undecided"]
+    if fit.rms_relative > POOR_FIT and fit.noise_relative < POOR_FIT:
+        return "undecided", "the model does not describe the data well enough to carry a verdict"
+    if unstable:
+        return "unstable", f"{len(unstable)} mode(s) in the band grow, all evidence agreeing"
+    if undecided:
+        failed = [e for e in undecided[0].evidence if e.passed is False]
+        why = failed[0].detail if failed else "its growth rate cannot be told from zero"
+        return "undecided", f"a mode in the band may grow: {why}"
+    if fit.noise_relative > 0.5:
+        return "undecided", "the data are mostly noise"
+    return "stable", "no mode in the band grows"
+
+
+def _loops(modes: Sequence[Mode]) -> tuple[Loop, ...]:
+    loops = []
+    for index, mode in enumerate(modes):
+        lively = mode.verdict != "stable" or mode.damping_ratio.value < SUSPECT_DAMPING
+        if mode.in_band and lively:
+            loops.append(Loop(index, node_names([view.channel for view in mode.nodes])))
+    return tuple(loops)
+
+
+def _detection(estimation: Estimation, scale: float) -> Detection:
+    frequencies = trial_grid(estimation.blocks, 100)
+    limits = residue_limits(
+        estimation.blocks,
+        estimation.solution,
+        estimation.info,
+        frequencies,
+        damping_ratio=DETECTION_DAMPING,
+        power=DETECTION_POWER,
+        threshold=threshold(1, estimation.places, CLAIM_CHANCE),
+        level=estimation.level * estimation.whiteness.inflation,
+    )
+    return Detection(
+        frequency_hz=frequencies * scale / (2 * np.pi),
+        damping_ratio=DETECTION_DAMPING,
+        power=DETECTION_POWER,
+        residue=limits * scale,
+    )
+
+
+def _notes(prepared: Prepared, estimation: Estimation, fit: FitQuality) -> tuple[str, ...]:
+    notes = list(prepared.notes)
+    for one in prepared.responses:
+        if one.source is not None:
+            notes.extend(one.source.assumptions)
+    if not fit.residual_white:
+        notes.append(
+            "the residual is not noise-like: no low order describes the data to the noise; "
+            f"variances were raised {estimation.whiteness.inflation:.3g} times"
+        )
+    return tuple(dict.fromkeys(notes))

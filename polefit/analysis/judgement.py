@@ -1,0 +1,394 @@
+"""From a fitted model to modes with verdicts: which poles are claimed, and how sure that is."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+import scipy.stats
+
+from polefit.engine.blocks import ComplexArray, FloatArray
+from polefit.engine.estimation import Estimation, freedom
+from polefit.engine.propagation import pole_estimates
+from polefit.engine.sections import residues, section_columns
+from polefit.engine.significance import invert, threshold
+from polefit.engine.stable_model import StableModel, compare_with_stable
+from polefit.estimates import Estimate
+from polefit.modes import BackgroundPole, Evidence, Mode, NodeView, Verdict
+from polefit.responses import Channel
+
+CLAIM_CHANCE = 1e-3
+"""Chance per run that a pole fitted to pure noise is claimed as a mode."""
+STABLE_MODEL_RISE = 10.8
+"""Rise of χ² that speaks against every stable model (χ² with one degree, p = 0.001)."""
+COLOURED_MISFIT = 3.0
+"""With a coloured residual a stable model must fit this many times worse: a passive one-port
+behind an unmodelled line was seen to reach 2."""
+NEAR_BAND = 0.2
+"""Modes up to this share of the band edge outside it are shown; they decide nothing."""
+
+
+@dataclass(frozen=True)
+class Judged:
+    """Modes and poles that are not claimed.
+
+    Parameters
+    ----------
+    modes : tuple of Mode
+        Most dangerous first.
+    background : tuple of BackgroundPole
+        With reasons.
+    stable_model : StableModel or None
+        Comparison with the best stable model, when a right-half-plane mode was in question.
+    """
+
+    modes: tuple[Mode, ...]
+    background: tuple[BackgroundPole, ...]
+    stable_model: StableModel | None
+
+
+@dataclass(frozen=True)
+class Candidate:
+    """One section of the model, in rad/s."""
+
+    index: int
+    pole: complex
+    covariance: FloatArray
+    score: float
+    in_band: bool
+    near_band: bool
+
+
+def judge(
+    estimation: Estimation,
+    scale: float,
+    band_hz: tuple[float, float],
+    channels: Sequence[Channel],
+    quantity: str,
+    confidence: float,
+) -> Judged:
+    """Tell modes from background and give each mode its verdict."""
+    found = [
+        c
+        for i in range(estimation.solution.sections.count)
+        for c in [_candidate(estimation, i, scale, band_hz)]
+    ]
+    claimed, background = _claim(found, estimation, scale)
+    deciding = sum(c.in_band for c in claimed)
+    level = 1 - (1 - confidence ** (1 / max(deciding, 1))) / 2
+    factor = float(scipy.stats.t.ppf(level, max(freedom(estimation), 1)))
+    stable = None
+    if any(c.pole.real > 0 and c.in_band for c in claimed):
+        stable = compare_with_stable(
+            estimation.blocks,
+            estimation.solution,
+            [estimation.past, estimation.richest],
+            estimation.level,
+        )
+    views = _node_views(estimation, scale, channels, quantity)
+    modes = [_mode(c, estimation, stable, factor, scale, views[c.index]) for c in claimed]
+    modes.sort(key=_danger)
+    return Judged(tuple(modes), tuple(background), stable)
+
+
+def _danger(mode: Mode) -> tuple[int, int, float]:
+    rank = {"unstable": 0, "undecided": 1, "stable": 2}[mode.verdict]
+    return (0 if mode.in_band else 1, rank, mode.damping_ratio.value)
+
+
+def _candidate(
+    estimation: Estimation, index: int, scale: float, band_hz: tuple[float, float]
+) -> Candidate:
+    sections = estimation.solution.sections
+    covariance = invert(estimation.info.poles)
+    covariance = covariance * estimation.level * estimation.whiteness.inflation
+    rows = section_columns(sections, index)
+    own = covariance[np.ix_(rows, rows)]
+    if len(rows) == 2:
+        c1, c0 = sections.c1[index], sections.c0[index]
+        omega = math.sqrt(max(c0 - c1**2 / 4, 0.0))
+        slope = np.array([[-0.5, 0.0], [-c1 / (4 * omega), 1 / (2 * omega)]])
+        pole = complex(-c1 / 2, omega)
+        own = slope @ own @ slope.T
+    else:
+        pole = complex(-sections.c[index - sections.c1.size], 0.0)
+        own = np.array([[own[0, 0], 0.0], [0.0, 0.0]])
+    own = own + _order_spread(estimation, pole, own)
+    inside, near = _place(pole * scale, own * scale**2, band_hz, estimation, scale)
+    return Candidate(
+        index, pole * scale, own * scale**2, float(estimation.scores[index]), inside, near
+    )
+
+
+def _nearest(pole: complex, poles: ComplexArray) -> complex | None:
+    same = poles[(poles.imag == 0) == (pole.imag == 0)]
+    if same.size == 0:
+        return None
+    return complex(same[int(np.argmin(np.abs(same - pole)))])
+
+
+def _order_spread(estimation: Estimation, pole: complex, own: FloatArray) -> FloatArray:
+    """Variance added when a model past the order moves the pole by more than noise would."""
+    other = _nearest(pole, estimation.past.sections.poles())
+    zero = np.zeros((2, 2))
+    if other is None:
+        return zero
+    shift = np.array([other.real - pole.real, other.imag - pole.imag])
+    std = np.sqrt(np.maximum(np.diag(own), 0.0))
+    extra = np.maximum(shift**2 - std**2, 0.0)
+    if abs(other - pole) > 0.5 * abs(pole.real) + 10 * float(np.hypot(*std)):
+        return zero  # another pole altogether: persistence fails instead
+    if pole.imag == 0:
+        extra[1] = 0.0
+    return np.diag(extra)
+
+
+def _place(
+    pole: complex,
+    covariance: FloatArray,
+    band_hz: tuple[float, float],
+    estimation: Estimation,
+    scale: float,
+) -> tuple[bool, bool]:
+    """In the band, at least one step and two standard deviations from its edges; or near it."""
+    low, high = (2 * np.pi * edge for edge in band_hz)
+    at = pole.imag if pole.imag > 0 else abs(pole)
+    axis = np.unique(np.concatenate([b.s.imag for b in estimation.blocks])) * scale
+    step = float(np.interp(at, axis[:-1], np.diff(axis)))
+    part = 1 if pole.imag > 0 else 0
+    margin = step + 2 * math.sqrt(max(covariance[part, part], 0.0))
+    if pole.imag > 0:
+        margin = max(margin, min(abs(pole.real), 0.1 * at))
+    inside = low + (margin if low > 0 else 0.0) <= at <= high - margin and abs(pole) <= high
+    near = (1 - NEAR_BAND) * low <= at <= (1 + NEAR_BAND) * high
+    return inside, near
+
+
+def _claim(
+    found: list[Candidate], estimation: Estimation, scale: float
+) -> tuple[list[Candidate], list[BackgroundPole]]:
+    channels = sum(block.channels for block in estimation.blocks)
+    limits = {
+        True: threshold(channels, estimation.places, CLAIM_CHANCE),
+        False: threshold(channels, estimation.places, CLAIM_CHANCE, columns=1),
+    }
+    claimed, background = [], []
+    for c in found:
+        limit = limits[c.pole.imag > 0] * estimation.whiteness.inflation
+        if not c.near_band:
+            reason = "outside the band: it stands for everything beyond the band edge"
+        elif c.score < limit:
+            reason = (
+                f"its residues stand out of the noise by χ² = {c.score:.3g} only; "
+                f"{limit:.3g} would be needed"
+            )
+        else:
+            claimed.append(c)
+            continue
+        background.append(BackgroundPole(c.pole, reason))
+    return claimed, background
+
+
+def _mode(
+    c: Candidate,
+    estimation: Estimation,
+    stable: StableModel | None,
+    factor: float,
+    scale: float,
+    nodes: tuple[NodeView, ...],
+) -> Mode:
+    estimates = pole_estimates(c.pole, c.covariance)
+    std = math.sqrt(max(c.covariance[0, 0], 0.0))
+    distance = c.pole.real / std if std > 0 else math.copysign(math.inf, c.pole.real)
+    evidence = _evidence(c, estimation, stable, distance, factor, scale)
+    return Mode(
+        pole_rad_per_s=c.pole,
+        covariance=(
+            (float(c.covariance[0, 0]), float(c.covariance[0, 1])),
+            (float(c.covariance[1, 0]), float(c.covariance[1, 1])),
+        ),
+        frequency_hz=estimates.frequency_hz,
+        natural_frequency_hz=estimates.natural_frequency_hz,
+        damping_ratio=estimates.damping_ratio,
+        growth_rate_per_s=estimates.growth_rate_per_s,
+        verdict=_verdict(distance, factor, evidence),
+        probability_unstable=float(scipy.stats.norm.cdf(distance)),
+        significance=math.sqrt(c.score),
+        in_band=c.in_band,
+        evidence=evidence,
+        nodes=nodes,
+    )
+
+
+def _verdict(distance: float, factor: float, evidence: Sequence[Evidence]) -> Verdict:
+    if distance < -factor:
+        return "stable"
+    if distance > factor and all(item.passed is not False for item in evidence):
+        return "unstable"
+    return "undecided"
+
+
+def _evidence(
+    c: Candidate,
+    estimation: Estimation,
+    stable: StableModel | None,
+    distance: float,
+    factor: float,
+    scale: float,
+) -> tuple[Evidence, ...]:
+    items = [
+        Evidence(
+            "growth rate",
+            abs(distance) > factor,
+            f"the growth rate lies {abs(distance):.3g} standard uncertainties from zero; "
+            f"{factor:.2f} are needed",
+        ),
+        Evidence("residue", True, f"its residues stand out of the noise by χ² = {c.score:.3g}"),
+        _persistence(c, estimation, scale),
+    ]
+    if stable is not None and c.pole.real > 0 and c.in_band:
+        items.append(_against_stable(stable, estimation))
+    return tuple(items)
+
+
+def _persistence(c: Candidate, estimation: Estimation, scale: float) -> Evidence:
+    """Check that the pole is there, on the same side, at a higher order."""
+    pole = c.pole / scale
+    std = math.sqrt(float(np.trace(c.covariance))) / scale
+    allowed = 5 * std + 0.5 * abs(pole.real)
+    name = "persistence over orders"
+    order = estimation.past.sections.order
+    if order == estimation.solution.sections.order:
+        return Evidence(name, None, "too few points for a model of higher order")
+    other = _nearest(pole, estimation.past.sections.poles())
+    shift = math.inf if other is None else abs(other - pole)
+    passed = shift <= allowed
+    detail = (
+        f"with {order} poles instead of {estimation.solution.sections.order} "
+        f"it moves by {shift * scale:.3g} rad/s, {shift * scale / max(abs(c.pole), 1e-300):.2g} "
+        "of its magnitude"
+        if other is not None
+        else f"with {order} poles it is not found"
+    )
+    return Evidence(name, passed, detail)
+
+
+def _against_stable(stable: StableModel, estimation: Estimation) -> Evidence:
+    white = estimation.whiteness.white
+    rise = stable.rise / estimation.whiteness.inflation
+    passed = rise > STABLE_MODEL_RISE and (white or stable.misfit_ratio > COLOURED_MISFIT)
+    detail = (
+        f"the best model without right-half-plane poles ({stable.order} poles) misses the data "
+        f"{stable.misfit_ratio:.4g} times as far"
+    )
+    if not white:
+        detail += f"; as the residual is not noise-like, {COLOURED_MISFIT:g} times are asked for"
+    return Evidence("stable-model misfit", passed, detail)
+
+
+def _node_views(
+    estimation: Estimation, scale: float, channels: Sequence[Channel], quantity: str
+) -> list[tuple[NodeView, ...]]:
+    """Residues with uncertainties of every section, strongest channel first."""
+    solution = estimation.solution
+    sections = solution.sections
+    pairs = sections.c1.size
+    coefficients = np.concatenate([part.coefficients for part in solution.parts])
+    poles = np.concatenate((np.arange(pairs), 2 * pairs + np.arange(sections.c.size)))
+    values = residues(sections, coefficients)[poles] * scale
+    std = residue_std(estimation) * scale
+    rms = np.concatenate(
+        [np.sqrt(np.mean(np.abs(block.values) ** 2, axis=1)) for block in estimation.blocks]
+    )
+    views = []
+    for index in range(sections.count):
+        pole = sections.poles()[poles[index]] * scale
+        width = max(abs(pole.real), 1e-12 * abs(pole))
+        listed = []
+        for k, channel in enumerate(channels):
+            leverage = None
+            if quantity == "impedance" and channel.driving_point:
+                leverage = Estimate.normal(float(values[index, k].real), float(std[index, k, 0]))
+            listed.append(
+                NodeView(
+                    channel=channel,
+                    residue=complex(values[index, k]),
+                    residue_std=float(np.hypot(std[index, k, 0], std[index, k, 1])),
+                    share=float(abs(values[index, k]) / width / max(rms[k], 1e-300)),
+                    leverage=leverage,
+                )
+            )
+        listed.sort(key=_strength, reverse=True)
+        views.append(tuple(listed))
+    return views
+
+
+def _strength(view: NodeView) -> tuple[bool, float]:
+    if view.leverage is not None:
+        return True, abs(view.leverage.value)
+    return False, view.share
+
+
+def residue_std(estimation: Estimation) -> FloatArray:
+    """Standard uncertainties of real and imaginary part of the residues, normalised.
+
+    Returns
+    -------
+    (sections, K, 2) float ndarray
+        From the joint covariance of poles and linear parameters.
+    """
+    sections = estimation.solution.sections
+    pole_covariance = invert(estimation.info.poles)
+    factor = estimation.level * estimation.whiteness.inflation
+    per_block = []
+    for part, linear in zip(estimation.solution.parts, estimation.info.linear, strict=True):
+        out = np.zeros((sections.count, part.coefficients.shape[0], 2))
+        for index in range(sections.count):
+            columns = section_columns(sections, index)
+            rows = linear.inverse[:, columns]
+            slope = linear.slope[:, columns]
+            conditional = rows @ rows.transpose(0, 2, 1)
+            linear_part = conditional + slope @ pole_covariance @ slope.transpose(0, 2, 1)
+            cross = -(slope @ pole_covariance)[:, :, columns]
+            own = pole_covariance[np.ix_(columns, columns)]
+            own = np.broadcast_to(own, (cross.shape[0], *own.shape))
+            joint = np.block([[linear_part, cross], [cross.transpose(0, 2, 1), own]])
+            gradient = _residue_gradient(part.coefficients[:, columns], sections, index)
+            variance = np.einsum("kai,kij,kaj->ka", gradient, joint, gradient)
+            out[index] = np.sqrt(np.maximum(variance, 0.0) * factor)
+        per_block.append(out)
+    return np.concatenate(per_block, axis=1)
+
+
+def _residue_gradient(coefficients: FloatArray, sections: object, index: int) -> FloatArray:
+    """Differentiate (Re, Im) of a residue by (coefficients, pole parameters), for K channels."""
+    from polefit.engine.sections import Sections
+
+    assert isinstance(sections, Sections)
+    channels = coefficients.shape[0]
+    if index >= sections.c1.size:
+        gradient = np.zeros((channels, 2, 2))
+        gradient[:, 0, 0] = 1.0
+        return gradient
+    c1, c0 = sections.c1[index], sections.c0[index]
+    omega = math.sqrt(c0 - c1**2 / 4)
+    pole = complex(-c1 / 2, omega)
+    scale = math.sqrt(abs(c0))
+    a, b = coefficients[:, 0], coefficients[:, 1]
+    top = a * pole + b * scale
+    omega_c1, omega_c0 = -c1 / (4 * omega), 1 / (2 * omega)
+    pole_c1, pole_c0 = complex(-0.5, omega_c1), complex(0.0, omega_c0)
+    below = 2j * omega
+    slopes = np.stack(
+        (
+            np.full(channels, pole / below),
+            np.full(channels, scale / below),
+            a * pole_c1 / below - top / below * omega_c1 / omega,
+            # √c0 in the second basis column varies with c0, but b·√c0 is what the data fix
+            a * pole_c0 / below - top / below * omega_c0 / omega,
+        ),
+        axis=1,
+    )
+    return np.stack((slopes.real, slopes.imag), axis=1)
