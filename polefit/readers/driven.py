@@ -1,0 +1,204 @@
+"""From the node voltages and branch currents of a simulation to responses.
+
+A simulator saves voltages and currents under an AC source of 1 A or 1 V; which node or source
+was driven is not in the file, so the user says it with ``driven=``.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+from polefit.errors import AmbiguousFileError, ArgumentError, FormatError
+from polefit.readers.reading import ReadOptions
+from polefit.responses import Channel, Quantity
+
+
+@dataclass(frozen=True)
+class Vector:
+    """One saved vector.
+
+    Parameters
+    ----------
+    name : str
+        Node or source, without ``v( )`` or ``i( )``.
+    current : bool
+        Whether it is a branch current instead of a node voltage.
+    """
+
+    name: str
+    current: bool = False
+
+
+@dataclass(frozen=True)
+class Responses:
+    """How to make responses from vectors.
+
+    Parameters
+    ----------
+    columns : tuple of int
+        Index of the vector of each response.
+    channels : tuple of Channel
+        Where each response was taken.
+    quantity : str
+        What they are.
+    sign : float
+        Factor on every vector.
+    divide_by : int or None
+        Index of the vector to divide by.
+    assumptions : tuple of str
+        What this reading rests on.
+    """
+
+    columns: tuple[int, ...]
+    channels: tuple[Channel, ...]
+    quantity: Quantity
+    sign: float
+    divide_by: int | None
+    assumptions: tuple[str, ...]
+
+
+def responses_of(vectors: Sequence[Vector], options: ReadOptions) -> Responses:
+    """Settle which responses the vectors are.
+
+    Parameters
+    ----------
+    vectors : sequence of Vector
+        All vectors of the file.
+    options : ReadOptions
+        `driven`, `quantity` and `select` are used. Names are compared without regard to case.
+
+    Returns
+    -------
+    Responses
+
+    Raises
+    ------
+    AmbiguousFileError
+        If `driven` is not given.
+    ArgumentError
+        If a name is not in the file or the quantity cannot be had from such data.
+    FormatError
+        If the file holds no vector of the kind that is needed.
+    """
+    if options.driven is None:
+        raise AmbiguousFileError(
+            f"voltages and currents of a simulation ({_listed(vectors)}), but not what was driven",
+            "say driven= (--driven) with the node fed by the 1 A AC source",
+        )
+    node = _find(vectors, options.driven, current=False)
+    source = _find(vectors, options.driven, current=True)
+    quantity = options.quantity
+    if quantity is None:
+        quantity = "impedance" if node is not None or source is None else "admittance"
+    if quantity == "impedance":
+        return _impedances(vectors, node, options)
+    if quantity == "admittance":
+        return _admittances(vectors, source, options)
+    if quantity == "transfer":
+        return _transfers(vectors, node, source, options)
+    raise ArgumentError(
+        f"quantity: {quantity!r} cannot be had from voltages and currents under one source; "
+        "use impedance, admittance or transfer"
+    )
+
+
+def _impedances(vectors: Sequence[Vector], node: int | None, options: ReadOptions) -> Responses:
+    if node is None:
+        raise _not_there("driven", str(options.driven), vectors, current=False)
+    drive = vectors[node].name
+    columns = _outputs(vectors, options, current=False)
+    return Responses(
+        columns,
+        tuple(Channel(vectors[i].name, drive) for i in columns),
+        "impedance",
+        1.0,
+        None,
+        (f"node voltages taken as impedances: a 1 A AC source feeds {drive}",),
+    )
+
+
+def _admittances(vectors: Sequence[Vector], source: int | None, options: ReadOptions) -> Responses:
+    if source is None:
+        raise _not_there("driven", str(options.driven), vectors, current=True)
+    drive = vectors[source].name
+    columns = _outputs(vectors, options, current=True)
+    return Responses(
+        columns,
+        tuple(Channel(vectors[i].name, drive) for i in columns),
+        "admittance",
+        -1.0,
+        None,
+        (
+            f"source currents taken as admittances under 1 V AC at {drive}, with the sign turned: "
+            "i(v) flows from + through the source, so the circuit draws -i(v)",
+        ),
+    )
+
+
+def _transfers(
+    vectors: Sequence[Vector], node: int | None, source: int | None, options: ReadOptions
+) -> Responses:
+    if node is None and source is None:
+        raise _not_there("driven", str(options.driven), vectors, current=False)
+    drive = vectors[node if node is not None else source or 0].name
+    columns = tuple(i for i in _outputs(vectors, options, current=False) if i != node)
+    if not columns:
+        raise FormatError(f"no node voltage besides v({drive})", "save the voltage of the output")
+    assumed = (
+        f"transfer: node voltages divided by v({drive})"
+        if node is not None
+        else f"transfer: node voltages under a 1 V AC source {drive}"
+    )
+    channels = tuple(Channel(vectors[i].name, drive) for i in columns)
+    return Responses(columns, channels, "transfer", 1.0, node, (assumed,))
+
+
+def _outputs(vectors: Sequence[Vector], options: ReadOptions, *, current: bool) -> tuple[int, ...]:
+    """Find the vectors wanted; currents only of voltage sources unless selected."""
+    if options.select is not None:
+        found = []
+        for name in options.select:
+            index = _find(vectors, name, current=current)
+            if index is None:
+                raise _not_there("select", name, vectors, current=current)
+            if index not in found:
+                found.append(index)
+        if not found:
+            raise ArgumentError("select: names nothing; give at least one name or leave it out")
+        return tuple(found)
+    return tuple(
+        i
+        for i, vector in enumerate(vectors)
+        if vector.current == current and (not current or vector.name[:1] in "vV")
+    )
+
+
+def _find(vectors: Sequence[Vector], name: str, *, current: bool) -> int | None:
+    """Index of the vector called `name`, with or without v( ) or i( ) around it."""
+    wanted = name.strip().lower()
+    letter = "i" if current else "v"
+    if wanted.startswith(f"{letter}(") and wanted.endswith(")"):
+        wanted = wanted[2:-1].strip()
+    for index, vector in enumerate(vectors):
+        if vector.current == current and vector.name.lower() == wanted:
+            return index
+    return None
+
+
+def _not_there(
+    option: str, name: str, vectors: Sequence[Vector], *, current: bool
+) -> ArgumentError:
+    what = "source current" if current else "node voltage"
+    listed = ", ".join(v.name for v in vectors if v.current == current) or "none"
+    return ArgumentError(
+        f"{option}: the file holds no {what} called {name!r}; it holds {listed}"
+        + ("" if option == "select" else f"; save the {what} of {name} too")
+    )
+
+
+def _listed(vectors: Sequence[Vector]) -> str:
+    nodes = [v.name for v in vectors if not v.current]
+    currents = [f"i({v.name})" for v in vectors if v.current]
+    shown = [*(["nodes " + ", ".join(nodes)] if nodes else []), *currents]
+    return ", ".join(shown)
