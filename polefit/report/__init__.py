@@ -1,1 +1,1 @@
-"""report."""
+"""What people see: text, JSON, figures and the page, from a result and nothing else."""

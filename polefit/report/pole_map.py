@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
-from typing import Any
 
 import numpy as np
 from matplotlib.axes import Axes
@@ -114,11 +113,23 @@ def _damping_axis(ax: Axes, result: Identification) -> float:
 def _sides(ax: Axes, bottom: float) -> None:
     ax.axhspan(bottom, 0, facecolor=drawing.VERMILLION, alpha=0.10, linewidth=0, zorder=0)
     ax.axhline(0, color=drawing.INK, linewidth=1.4, zorder=1)
-    how: dict[str, Any] = {"transform": ax.transAxes, "fontweight": "bold", "zorder": 1}
-    drawing.text(
-        ax, 0.01, 0.02, "UNSTABLE side: grows", color=drawing.VERMILLION, va="bottom", **how
-    )
-    drawing.text(ax, 0.01, 0.98, "stable side: decays", color=drawing.BLUE, va="top", **how)
+    border = ax.transAxes.inverted().transform(ax.transData.transform((ax.get_xlim()[0], 0.0)))[1]
+    for words, height, colour in (
+        ("UNSTABLE: grows", border / 2, drawing.VERMILLION),
+        ("stable: decays", (1 + border) / 2, drawing.BLUE),
+    ):
+        drawing.text(
+            ax,
+            1.015,
+            float(height),
+            words,
+            transform=ax.transAxes,
+            color=colour,
+            fontweight="bold",
+            rotation=270,
+            ha="left",
+            va="center",
+        )
 
 
 def _band_limits(ax: Axes, result: Identification, low: float, high: float) -> None:

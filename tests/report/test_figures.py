@@ -78,7 +78,7 @@ def test_pole_map_shows_every_mode_on_its_side(unstable):
         place = (round(mode.natural_frequency_hz.value), round(mode.damping_ratio.value, 12))
         assert place in drawn
     shown = texts(figure_of(ax))
-    assert "UNSTABLE side: grows" in shown
+    assert "UNSTABLE: grows" in shown
     assert "1: 1.504 GHz" in shown
     low, high = ax.get_ylim()
     assert low < -0.0123 < 0 < 1 < high
