@@ -25,9 +25,10 @@ from polefit.readers.delimited_table import (
     precision,
 )
 from polefit.readers.driven import Responses
+from polefit.readers.large_files import Content
 from polefit.readers.reading import Parsed, ReadOptions
 from polefit.readers.spice_print import is_print, load_print
-from polefit.readers.text_blocks import Content, Text, open_text
+from polefit.readers.text_blocks import Text, open_text
 from polefit.responses import ComplexArray, ResponseSet
 
 _HEAD_LINES = 1500

@@ -33,7 +33,7 @@ _COMMA = re.compile(r",[ \t]*")
 _FORTRAN = re.compile(r"(?<=[\d.])[dD](?=[+-]?\d)")
 _TRAILING_NOTE = re.compile(r"[ \t,;]*(?:[#!]|(?<=[ \t])(?:%|//)).*")
 _COMMENT = re.compile(r"\s*(?:[#!%;*]|//)")
-_ANY_COMMENT = re.compile(r"^\s*(?:[#!%;*]|//)", re.MULTILINE)
+_LATER_COMMENT = re.compile(r"\n[ \t\f]*[#!%;*/]")
 _ROW_START = re.compile(r"[\s\"(]*[+-]?\.?\d")
 _SAMPLE_LINES = 200
 _PREAMBLE_LINES = 1000
@@ -77,7 +77,7 @@ class Dialect:
         """Rewrite text so that each row is its fields with this delimiter, decimal point."""
         if "\xe2\x88\x92" in text or "−" in text:
             text = text.replace("\xe2\x88\x92", "-").replace("−", "-")
-        if self.notes or _ANY_COMMENT.search(text):
+        if self.notes or self._has_comments(text):
             text = self._without_comments(text)
         if "\f" in text:
             text = text.replace("\f", " ")
@@ -91,6 +91,12 @@ class Dialect:
         if self.trailing:
             text = re.sub(rf"{re.escape(self.delimiter)}[ \t]*$", "", text, flags=re.MULTILINE)
         return text
+
+    def _has_comments(self, text: str) -> bool:
+        """Whether a line is a comment; quick, since nearly all blocks have none."""
+        if not any(mark in text for mark in "#!%;*/"):
+            return False
+        return is_comment(text) or _LATER_COMMENT.search(text) is not None
 
     def _pairs_marked(self, text: str) -> str:
         if self.complex_style == "bracketed":

@@ -12,6 +12,7 @@ from polefit.errors import AmbiguousFileError, FormatError
 from polefit.precision import Precision, Printed
 from polefit.readers.delimited_dialect import BLANKS, PAIR, Dialect
 from polefit.readers.delimited_layout import Layout, Trace
+from polefit.readers.large_files import Growing
 from polefit.readers.reading import printed_form
 from polefit.readers.text_blocks import Text, numbered_lines
 from polefit.responses import ComplexArray, FloatArray
@@ -68,16 +69,17 @@ def load(text: Text, dialect: Dialect, layout: Layout, first_line: int) -> Table
     FormatError
         With the line, if a row does not fit, a number is not finite, or axes differ.
     """
-    frequency: list[FloatArray] = []
-    parts: list[ComplexArray] = []
+    frequency = Growing(0, np.float64)
+    parts = Growing(len(layout.traces), np.complex128)
     first: list[str] = []
     second: list[str] = []
-    rows_before = 0
+    rows_before = characters = 0
 
     def line_of(row: int) -> int:
         return _line_of_row(text, dialect, first_line, row)
 
     for block in _behind(text, first_line):
+        characters += len(block) * (2 if text.wide else 1)
         rows = dialect.rows(block)
         if not rows:
             continue
@@ -87,29 +89,18 @@ def load(text: Text, dialect: Dialect, layout: Layout, first_line: int) -> Table
         if numbers is None:
             raise _odd_row(text, dialect, layout, first_line)
         axis, values = take(numbers, layout, _shifted(line_of, rows_before))
-        frequency.append(axis)
-        parts.append(values)
+        share = characters / len(text.content)
+        frequency.add(axis, share)
+        parts.add(values, share)
         _sample(rows, dialect, layout, first, second)
         rows_before += len(rows)
-    if not frequency:
+    if not rows_before:
         raise FormatError("no row of numbers", "export the file again")
-    joined = np.concatenate(frequency)
-    return Table(joined, _joined(parts), line_of, first, second)
+    return Table(frequency.finished(), parts.finished(), line_of, first, second)
 
 
 def _shifted(line_of: Callable[[int], int], rows: int) -> Callable[[int], int]:
     return lambda row: line_of(rows + row)
-
-
-def _joined(parts: list[ComplexArray]) -> ComplexArray:
-    """Concatenate, giving up each piece as it is copied."""
-    whole = np.empty((sum(len(p) for p in parts), parts[0].shape[1]), dtype=np.complex128)
-    end = len(whole)
-    while parts:
-        piece = parts.pop()
-        whole[end - len(piece) : end] = piece
-        end -= len(piece)
-    return whole
 
 
 def _behind(text: Text, lines: int) -> Iterator[str]:

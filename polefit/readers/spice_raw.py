@@ -14,9 +14,9 @@ import numpy as np
 from polefit.errors import AmbiguousFileError, FormatError
 from polefit.precision import Precision, Printed
 from polefit.readers.driven import Responses, Vector, responses_of
+from polefit.readers.large_files import Content
 from polefit.readers.reading import Parsed, ReadOptions, printed_form
 from polefit.readers.spice_raw_numbers import Numbers, ascii_numbers, binary_numbers
-from polefit.readers.text_blocks import Content
 from polefit.responses import ComplexArray, FloatArray, ResponseSet
 
 _HEADER_BYTES = 1 << 20

@@ -15,7 +15,8 @@ from typing import Protocol
 import numpy as np
 
 from polefit.errors import FormatError
-from polefit.readers.text_blocks import BLOCK_BYTES, Content
+from polefit.readers.large_files import Content, Growing, release
+from polefit.readers.text_blocks import BLOCK_BYTES
 from polefit.responses import ComplexArray, FloatArray
 
 _AGAIN = "run the simulation again and save its raw file"
@@ -109,7 +110,9 @@ def binary_numbers(content: Content, plot: Header, wanted: tuple[int, ...]) -> N
     values = np.empty((plot.points, len(wanted)), dtype=np.complex128)
     columns = [i + 1 for i in wanted]
     for start in range(0, plot.points, _ROWS_AT_ONCE):
-        values[start : start + _ROWS_AT_ONCE] = table[start : start + _ROWS_AT_ONCE, columns]
+        rows = slice(start, start + _ROWS_AT_ONCE)
+        values[rows] = table[rows, columns]
+        release(content, plot.start + start * row_bytes, plot.start + rows.stop * row_bytes)
     del view, table  # they would keep a mapped file from being closed
     _refuse_not_finite(frequency, values, _point)
     return Numbers(frequency, values, wanted, end, plot.line, _point, ([], []), (assumption,))
@@ -190,23 +193,18 @@ def ascii_numbers(content: Content, plot: Header, wanted: tuple[int, ...]) -> Nu
     parts = 2 if plot.complex_numbers else 1
     width = 1 + parts * len(plot.names)
     reader = _AsciiReader(content, plot, width)
-    frequency: list[FloatArray] = []
-    values: list[ComplexArray] = []
+    frequency = Growing(0, np.float64)
+    values = Growing(len(wanted), np.complex128)
     firsts = [1 + parts * (i + 1) for i in wanted]
     for rows in reader.rows():
-        frequency.append(rows[:, 1].copy())
+        share = (reader.end - plot.start) / (len(content) - plot.start)
+        frequency.add(rows[:, 1], share)
         piece = np.zeros((len(rows), len(firsts)), dtype=np.complex128)
         piece.real = rows[:, firsts]
         if parts == 2:
             piece.imag = rows[:, [f + 1 for f in firsts]]
-        values.append(piece)
-    axis = np.concatenate(frequency)
-    joined = np.empty((len(axis), len(firsts)), dtype=np.complex128)
-    end = len(axis)
-    while values:  # giving up each piece as it is copied
-        piece = values.pop()
-        joined[end - len(piece) : end] = piece
-        end -= len(piece)
+        values.add(piece, share)
+    axis, joined = frequency.finished(), values.finished()
 
     def place_of(row: int) -> tuple[str, int | None]:
         return "", reader.line_of(row)
@@ -261,6 +259,7 @@ class _AsciiReader:
         title = _TITLE.search(piece)
         if title:
             piece, last = piece[: title.start()], True
+        release(self.content, self.end, self.end + len(piece))
         self.end += len(piece)
         return piece, not last
 

@@ -7,19 +7,17 @@ which each byte of a one-byte encoding is one character; headings are decoded pr
 from __future__ import annotations
 
 import codecs
-import re
 from collections.abc import Iterator
 from dataclasses import dataclass
-from mmap import mmap
 
 from polefit.errors import FormatError
-
-Content = bytes | bytearray | mmap
+from polefit.readers.large_files import Content, release
 
 BLOCK_BYTES = 1 << 21
 _HEAD_BYTES = 4096
 # Control characters that no text file holds; tab, line ends and form feed are allowed.
-_CONTROL = re.compile(rb"[\x00-\x08\x0e-\x1a\x1c-\x1f\x7f]")
+_CONTROL = {*range(9), *range(14, 32), 127}
+_ORDINARY = bytes(c for c in range(256) if c not in _CONTROL)
 _RESAVE = "save it as UTF-8 text, or name a file of a supported format"
 
 
@@ -68,7 +66,8 @@ class Text:
         decoder = codecs.getincrementaldecoder(encoding)()
         for at in range(self.start, len(self.content), size):
             piece = bytes(self.content[at : at + size])
-            if not self.wide and _CONTROL.search(piece):
+            release(self.content, at, at + size)
+            if not self.wide and piece.translate(None, _ORDINARY):
                 raise FormatError("binary bytes within a text file", _RESAVE)
             try:
                 yield decoder.decode(piece)
@@ -121,7 +120,7 @@ def open_text(content: Content) -> Text:
         return Text(content, "utf-16-le", 0)
     if odd and even.count(0) >= 0.9 * len(even) and odd.count(0) == 0:
         return Text(content, "utf-16-be", 0)
-    if _CONTROL.search(head):
+    if head.translate(None, _ORDINARY):
         raise FormatError("not a text file", _RESAVE)
     return Text(content, "utf-8", 0)
 
