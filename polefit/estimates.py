@@ -2,8 +2,8 @@
 
 The rule: two significant digits of the standard uncertainty, the value rounded to the same
 decimal place (JCGM 100:2008, GUM, 7.2.6), one SI prefix for both, chosen by the larger of
-them. Where the uncertainty is too small a part of the value to be read at the same place,
-each carries its own prefix. What cannot be given is said in words.
+them. An uncertainty of less than a millionth is only said to be so, after seven digits of the
+value: nobody reads ten. What cannot be given is said in words.
 """
 
 from __future__ import annotations
@@ -17,8 +17,8 @@ PREFIXES = {
     3: "k", 6: "M", 9: "G", 12: "T", 15: "P", 18: "E",
 }  # fmt: skip
 NOT_KNOWN = "not known"
-_SPLIT = Decimal("1e-6")  # below this part of the value, the uncertainty is printed on its own
-_MOST_DIGITS = 10  # of a value whose uncertainty is printed on its own
+_SHARP = Decimal("1e-6")  # an uncertainty below this part of the value is not printed
+_MOST_DIGITS = 7  # of a value as sharp as that
 _PLAIN = range(-4, 6)  # decades in which a number without prefix is written without exponent
 
 
@@ -88,7 +88,7 @@ def with_uncertainty(value: float, std: float | None, unit: str = "") -> str:
     >>> with_uncertainty(-0.0123, 0.0995)
     '−0.01 ± 0.10'
     >>> with_uncertainty(1e9, 2e-3, "Hz")
-    '1.000000000 GHz ± 2.0 mHz'
+    '1.000000 GHz (± < 1 ppm)'
     """
     if not math.isfinite(value):
         return si(value, unit)
@@ -99,10 +99,8 @@ def with_uncertainty(value: float, std: float | None, unit: str = "") -> str:
     if std == 0:
         return f"{si(value, unit, _MOST_DIGITS)} (± 0)"
     number, spread = Decimal(repr(float(value))), Decimal(repr(abs(float(std))))
-    if spread < _SPLIT * abs(number):
-        place = max(_place(spread), number.adjusted() - _MOST_DIGITS + 1)
-        rounded = _at(number, place)
-        return f"{_scaled(rounded, unit)} ± {si(float(spread), unit, 2, keep_zeros=True)}"
+    if spread < _SHARP * abs(number):
+        return f"{si(value, unit, _MOST_DIGITS, keep_zeros=True)} (± < 1 ppm)"
     place = _place(spread)
     return _scaled(_at(number, place), unit, _at(spread, place, ROUND_HALF_UP))
 

@@ -24,6 +24,7 @@ from polefit.report.response_plot import plot_response, trace_of
 SIGNS = {"unstable": "▲", "undecided": "◆", "stable": "●"}
 _OPEN = 3  # channels whose figures are open when there are many
 _MANY = 6
+_FEW = 4  # modes that are all shown with their nodes
 _ROWS = 12  # nodes in the table of a loop
 _NAME = 60
 
@@ -94,6 +95,8 @@ def _svg(drawn: Axes | Figure, prefix: str, caption: str) -> Markup:
 def _summary(result: Identification) -> dict[str, Any]:
     """Collect what the top of the page and the notebook fragment share."""
     word, _, sentence = wording.verdict_sentence(result).partition(":")
+    shown = wording.suspects(result)
+    in_full = [i in shown or len(result.modes) <= _FEW for i in range(len(result.modes))]
     leverage = any(view.leverage is not None for m in result.modes for view in m.nodes)
     return {
         "verdict": result.verdict,
@@ -101,13 +104,13 @@ def _summary(result: Identification) -> dict[str, Any]:
         "word": f"{word}:",
         "sentence": wording.glued(wording.plain(sentence, 2000)),
         "reason": wording.plain(result.reason, 2000),
-        "modes": [_mode(m) for m in result.modes],
+        "modes": [_mode(m, full) for m, full in zip(result.modes, in_full, strict=True)],
         "node_note": wording.LEVERAGE_NOTE if leverage else wording.RESIDUE_NOTE,
         "cautions": wording.CAUTIONS,
     }
 
 
-def _mode(mode: Mode) -> dict[str, Any]:
+def _mode(mode: Mode, full: bool) -> dict[str, Any]:
     strengths = wording.node_strengths(mode)
     shown = ", ".join(wording.plain(s.brief, 40) for s in strengths[:4])
     rest = len(strengths) - 4
@@ -130,6 +133,7 @@ def _mode(mode: Mode) -> dict[str, Any]:
         "interval": interval,
         "time": f"{wording.trend(mode)}, {wording.time_constant(mode)}",
         "probability": wording.probability(mode.probability_unstable),
+        "full": full,
         "nodes": shown + (f" and {rest} more" if rest > 0 else ""),
     }
 
@@ -151,7 +155,7 @@ def _view(result: Identification, prefix: str) -> dict[str, Any]:
         if result.detection is None
         else _svg(plot_detection(result), f"{prefix}d", "Detection limit"),
         "basis": [(head, wording.glued(text)) for head, text in wording.basis(result)],
-        "notes": [wording.plain(n, 2000) for n in result.notes],
+        "notes": [wording.plain(n, 2000) for n in wording.notes(result)],
         "background": [wording.background_row(p) for p in result.background],
         "sources": [
             {
@@ -173,7 +177,7 @@ def _view(result: Identification, prefix: str) -> dict[str, Any]:
 def _loop(result: Identification, index: int, prefix: str) -> dict[str, Any]:
     loop = result.loops[index]
     table = wording.loop_table(result, index, _ROWS)
-    rest = len(loop.nodes) - _ROWS
+    rest = len(loop.nodes) - (len(table) - 1)
     return {
         "mode": loop.mode + 1,
         "label": wording.label(result.modes[loop.mode]),
@@ -182,7 +186,7 @@ def _loop(result: Identification, index: int, prefix: str) -> dict[str, Any]:
         ),
         "headings": table[0],
         "rows": table[1:],
-        "more": f"and {rest} more nodes at which it shows less" if rest > 0 else "",
+        "more": wording.more_nodes(rest) if rest > 0 else "",
     }
 
 

@@ -13,6 +13,7 @@ WIDTH = 100
 _HEADINGS = ("", "", "frequency", "damping ratio", "time constant")
 _GAP = "  "
 _HELD = "\x00"  # a blank at which a line must not break
+_FEW = 4  # modes that are all shown with their nodes
 _NODES_IN_TABLE = 4
 _NODES_IN_LOOP = 8
 _BACKGROUND = 8
@@ -41,7 +42,7 @@ def identification_text(result: Identification) -> str:
         _section("What the verdict rests on", _basis(result)),
         _section("Poles of the model that are not claimed as modes", _background(result)),
         _section("Read", _read(result)),
-        _section("Notes", _bullets(result.notes)),
+        _section("Notes", _bullets(wording.notes(result))),
         _section("Caution", _bullets(wording.CAUTIONS)),
     ]
     text = "\n\n".join("\n".join(block) for block in blocks if block)
@@ -71,35 +72,34 @@ def _modes(result: Identification) -> list[str]:
     rows = [_HEADINGS, *(_row(i, mode) for i, mode in enumerate(result.modes))]
     widths = [max(len(row[c]) for row in rows) for c in range(len(_HEADINGS))]
     lines = []
+    full = wording.suspects(result)
     for i, row in enumerate(rows):
         cells = (cell.ljust(width) for cell, width in zip(row, widths, strict=True))
         lines.append("  " + _GAP.join(cells))
-        if i:
+        if i and (i - 1 in full or len(result.modes) <= _FEW):
             indent = " " * (2 + widths[0] + len(_GAP))
             lines.extend(_wrapped(_second_line(result.modes[i - 1]), indent, indent))
     leverage = any(view.leverage is not None for mode in result.modes for view in mode.nodes)
     note = wording.LEVERAGE_NOTE if leverage else wording.RESIDUE_NOTE
     lines.extend(_wrapped(note, "  ", "  "))
+    if not all(mode.in_band for mode in result.modes):
+        lines.append("  * outside the band: it does not decide the verdict.")
     return lines
 
 
 def _row(index: int, mode: Mode) -> tuple[str, ...]:
     word = mode.verdict.upper() if mode.verdict != "stable" else "stable"
-    frequency = "real pole" if mode.real else mode.frequency_hz.text("Hz")
-    ratio = si(mode.damping_ratio.value) if mode.real else mode.damping_ratio.text()
-    return (
-        str(index + 1),
-        word,
-        frequency,
-        ratio,
-        f"{wording.trend(mode)}, {wording.time_constant(mode)}",
-    )
+    if mode.real:
+        frequency = f"{si(mode.natural_frequency_hz.value, 'Hz', 5)}, real pole"
+        ratio = si(mode.damping_ratio.value)
+    else:
+        frequency, ratio = mode.frequency_hz.text("Hz"), mode.damping_ratio.text()
+    time = f"{wording.trend(mode)}, {wording.time_constant(mode)}"
+    return str(index + 1), word if mode.in_band else f"{word}*", frequency, ratio, time
 
 
 def _second_line(mode: Mode) -> str:
     parts = [f"P(unstable) {wording.probability(mode.probability_unstable)}"]
-    if not mode.in_band:
-        parts.append("outside the band")
     if mode.real:
         parts.append(f"|p|/2π {mode.natural_frequency_hz.text('Hz')}")
     strengths = wording.node_strengths(mode)
@@ -120,9 +120,9 @@ def _loop(result: Identification, index: int) -> list[str]:
         "  " + _GAP.join(cell.ljust(width) for cell, width in zip(row, widths, strict=True))
         for row in rows
     ]
-    rest = len(loop.nodes) - _NODES_IN_LOOP
+    rest = len(loop.nodes) - (len(rows) - 1)
     if rest > 0:
-        lines.append(f"  and {rest} more nodes at which it shows less")
+        lines.append(f"  {wording.more_nodes(rest)}")
     return _section(title, lines)
 
 

@@ -26,6 +26,8 @@ SYMBOL = {
     "return-difference": "F",
     "loop-gain": "T",
 }
+_HARDLY_SEEN = 1e-3  # of the strongest residue
+_ALWAYS = 3  # nodes of a loop that are listed however weak
 CAUTIONS = (
     "The verdict holds for the model, the nodes, the band and the terminations that were "
     "simulated; another bias, temperature, load or layout is another circuit.",
@@ -36,8 +38,7 @@ CAUTIONS = (
 )
 
 LEVERAGE_NOTE = (
-    "Behind each node: damping ratio added by 1 mS from there to ground, to first order; "
-    "negative makes it worse."
+    "Behind each node: damping ratio added by 1 mS to ground, first order; negative makes it worse."
 )
 RESIDUE_NOTE = "Behind each node: its residue, relative to the strongest."
 
@@ -122,6 +123,13 @@ def time_constant(mode: Mode) -> str:
     return Estimate(1 / abs(growth.value), std).text("s")
 
 
+def brief(estimate: Estimate) -> str:
+    """Write an estimate for a sentence: a very sharp one is rounded to four digits."""
+    if estimate.std is not None and estimate.std < 1e-6 * abs(estimate.value):
+        return si(estimate.value, "", 4, keep_zeros=True)
+    return estimate.text()
+
+
 def trend(mode: Mode) -> str:
     """Say what the mode does in time, in one word."""
     return {"unstable": "grows", "stable": "decays"}.get(mode.verdict, "open")
@@ -195,12 +203,13 @@ def _unstable(result: Identification) -> str:
         return f"{result.reason}."
     index, mode = growing[0]
     lead = "" if len(growing) == 1 else f"{len(growing)} modes grow; the most dangerous: "
+    time = si(1 / mode.growth_rate_per_s.value, "s", 3, keep_zeros=True)
     if mode.real:
-        core = f"a real pole grows without ringing, time constant {time_constant(mode)}"
+        core = f"a real pole grows without ringing, time constant {time}"
     else:
         core = (
-            f"a mode at {label(mode, 5)} grows with time constant {time_constant(mode)} "
-            f"(damping ratio {mode.damping_ratio.text()})"
+            f"a mode at {label(mode, 5)} grows with time constant {time} "
+            f"(damping ratio {brief(mode.damping_ratio)})"
         )
     nodes = nodes_in_order(result, index)
     strongest = f"; strongest at {plain(nodes[0], 30)}" if nodes else ""
@@ -218,7 +227,7 @@ def _stable(result: Identification) -> str:
     if ringing:
         mode = min(ringing, key=lambda m: m.damping_ratio.value)
         parts.append(
-            f"lightest damped mode: {label(mode)}, damping ratio {mode.damping_ratio.text()}"
+            f"lightest damped mode: {label(mode)}, damping ratio {brief(mode.damping_ratio)}"
         )
     limit = detection_limit(result)
     if limit is not None:
@@ -307,12 +316,14 @@ def _sentence(text: str) -> str:
 def loop_table(result: Identification, index: int, most: int) -> list[tuple[str, ...]]:
     """Tabulate the nodes of a suspect loop: headings, then at most `most` rows.
 
-    Columns that would stay empty are left out.
+    Columns that would stay empty are left out, and so are nodes that hardly see the mode.
     """
     loop = result.loops[index]
     by_name = {s.name: s for s in node_strengths(result.modes[loop.mode])}
+    seen = [n for n in loop.nodes if n not in by_name or by_name[n].relative >= _HARDLY_SEEN]
+    nodes = loop.nodes[: max(_ALWAYS, len(seen))] if len(seen) < _ALWAYS else tuple(seen)
     rows = [("node", "damping ratio added per mS", "leverage in 1/(s·S)", "residue")]
-    for name in loop.nodes[:most]:
+    for name in nodes[:most]:
         strength = by_name.get(name)
         added = None if strength is None else strength.damping_per_ms
         leverage = None if strength is None else strength.leverage
@@ -326,6 +337,23 @@ def loop_table(result: Identification, index: int, most: int) -> list[tuple[str,
         )
     keep = [c for c in range(4) if c == 0 or any(row[c] for row in rows[1:])]
     return [tuple(row[c] for c in keep) for row in rows]
+
+
+def more_nodes(count: int) -> str:
+    """Say how many nodes of a loop are not listed."""
+    return f"and {count} more node{'' if count == 1 else 's'} at which it shows less"
+
+
+def suspects(result: Identification) -> set[int]:
+    """Return the indices of the modes to look at: those not stable, and those of a suspect loop."""
+    doubtful = {i for i, mode in enumerate(result.modes) if mode.verdict != "stable"}
+    return doubtful | {loop.mode for loop in result.loops}
+
+
+def notes(result: Identification) -> tuple[str, ...]:
+    """Return the notes that are not already listed as assumptions of a file."""
+    listed_before = {a for source in result.sources for a in source.assumptions}
+    return tuple(note for note in result.notes if note not in listed_before)
 
 
 def background_row(pole: BackgroundPole) -> tuple[str, str, str]:
