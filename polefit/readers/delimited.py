@@ -9,6 +9,7 @@ from __future__ import annotations
 import itertools
 import re
 from collections.abc import Sequence
+from dataclasses import dataclass
 
 import numpy as np
 
@@ -16,7 +17,7 @@ from polefit.errors import AmbiguousFileError, ArgumentError, FormatError
 from polefit.readers.delimited_channels import meaning
 from polefit.readers.delimited_dialect import BLANKS, Dialect, Draft, drafts, is_comment
 from polefit.readers.delimited_headings import Heading, parse_headings
-from polefit.readers.delimited_layout import Layout, resolve
+from polefit.readers.delimited_layout import Layout, Trace, resolve
 from polefit.readers.delimited_table import (
     Table,
     complex_values,
@@ -36,6 +37,15 @@ _USED = ("driven", "node", "decimal", "delimiter", "frequency_unit", "form", "an
 _UNIT_WORDS = re.compile(r"[\[(]\S*[\])]|/")
 # One sign or blank, then %.ne, then a blank, to the end of the line: a simulator's wrdata.
 _WRDATA = re.compile(r"(?:[ -]\d\.\d+e[+-]\d\d\d? )+[ \t]*")
+
+
+@dataclass(frozen=True)
+class _Written:
+    """Who wrote the file, and with which decimal mark."""
+
+    format: str
+    decimal: str
+    simulator: bool
 
 
 def parse(content: Content, options: ReadOptions, *, stem: str) -> Parsed:
@@ -69,16 +79,18 @@ def parse(content: Content, options: ReadOptions, *, stem: str) -> Parsed:
     head = _head(text)
     if is_print(head):
         table, layout = load_print(text, options)
-        return _parsed(table, layout, options, stem, "simulator print table", (), True)
+        printed = _Written("simulator print table", ".", True)
+        return _parsed(table, layout, options, stem, printed)
     draft, headings, simulator = _chosen(text, head, options)
     dialect = draft.dialect
     layout = _layout(draft, headings, options, simulator)
     table = load(text, dialect, layout, draft.first_line)
     name = "simulator data columns" if simulator else "delimited text"
+    written = _Written(name, dialect.decimal, simulator)
     notes = [f"read as {dialect}"]
     if text.wide:
         notes.append("characters of 16 bits (UTF-16)")
-    return _parsed(table, layout, options, stem, name, tuple(notes), simulator)
+    return _parsed(table, layout, options, stem, written, tuple(notes))
 
 
 def _check_options(options: ReadOptions) -> None:
@@ -259,15 +271,14 @@ def _parsed(
     layout: Layout,
     options: ReadOptions,
     stem: str,
-    format_name: str,
-    notes: tuple[str, ...],
-    simulator: bool,
+    written: _Written,
+    notes: tuple[str, ...] = (),
 ) -> Parsed:
     """Turn the numbers into responses."""
     what = meaning([t.label for t in layout.traces], options, stem)
     frequency, hertz = frequency_axis(table, layout.frequency_scale)
     traces, degrees = complex_values(table, layout.traces)
-    printed = precision(table, traces, simulator=simulator)
+    printed = precision(table, traces, simulator=written.simulator)
     values = _as_responses(table, what.responses)
     responses = ResponseSet(
         frequency_hz=frequency,
@@ -284,7 +295,24 @@ def _parsed(
         *degrees,
         *what.responses.assumptions,
     )
-    return Parsed(responses, format_name, assumptions, (*layout.warnings, *what.warnings))
+    return Parsed(
+        responses,
+        written.format,
+        assumptions,
+        (*layout.warnings, *what.warnings),
+        decimal_mark=written.decimal,
+        scaling=_scaling(traces, responses.unit),
+    )
+
+
+def _scaling(traces: Sequence[Trace], unit: str) -> str | None:
+    """Tell which prefix the printed numbers carried."""
+    scales = sorted({t.scale for t in traces} - {1.0})
+    if not scales:
+        return None
+    return ", ".join(
+        f"printed numbers × {scale:g}{f' = {unit}' if unit else ''}" for scale in scales
+    )
 
 
 def _as_responses(table: Table, how: Responses) -> ComplexArray:

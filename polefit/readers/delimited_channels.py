@@ -79,7 +79,8 @@ def meaning(labels: Sequence[Heading], options: ReadOptions, stem: str) -> Meani
     quantity, columns = _quantity(labels, options)
     channels, assumptions = _channels([labels[i] for i in columns], options, stem)
     _refuse_repeats(channels)
-    if options.select is not None:
+    if options.select is not None and options.quantity in (None, quantity):
+        # Where a matrix is to be converted first, the selection must wait.
         chosen = selected(channels, options.select)
         columns, channels = [columns[i] for i in chosen], [channels[i] for i in chosen]
     reference, warnings = _reference(quantity, channels, options)

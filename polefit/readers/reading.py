@@ -25,12 +25,18 @@ class Parsed:
         One sentence for every reading that was not forced by the file.
     warnings : tuple of str
         One sentence for everything about the file that deserves a second look.
+    decimal_mark : str, optional
+        "." or "," of a text file.
+    scaling : str, optional
+        How printed numbers became ohm, siemens or a ratio, where it is not one to one.
     """
 
     responses: ResponseSet
     format: str
     assumptions: tuple[str, ...]
     warnings: tuple[str, ...]
+    decimal_mark: str | None = None
+    scaling: str | None = None
 
 
 @dataclass(frozen=True)

@@ -107,7 +107,8 @@ def parse(content: Content, options: ReadOptions, *, stem: str) -> Parsed:
     name = f"SPICE raw ({'binary' if plot.binary else 'ASCII'})"
     taken = [f"plot {plot.name!r} taken; {', '.join(map(repr, others))} left out"] if others else []
     assumptions = (*numbers.assumptions, *taken, *how.assumptions, *silent)
-    return Parsed(responses, name, assumptions, tuple(warnings))
+    mark = None if plot.binary else "."
+    return Parsed(responses, name, assumptions, tuple(warnings), decimal_mark=mark)
 
 
 def _refuse_wide(content: Content) -> None:

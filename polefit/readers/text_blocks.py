@@ -11,7 +11,8 @@ from collections.abc import Iterator
 from dataclasses import dataclass
 
 from polefit.errors import FormatError
-from polefit.readers.large_files import Content, release
+from polefit.readers.large_files import Content as Content
+from polefit.readers.large_files import release
 
 BLOCK_BYTES = 1 << 21
 _HEAD_BYTES = 4096

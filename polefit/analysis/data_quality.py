@@ -1,0 +1,199 @@
+"""What in a set of responses will limit a verdict: points, digits, noise, dead channels."""
+
+from __future__ import annotations
+
+from itertools import combinations
+
+import numpy as np
+
+from polefit.estimates import si
+from polefit.responses import ComplexArray, FloatArray, ResponseSet
+
+FEW_POINTS = 50
+# Rounding to 6 digits leaves about 1e-6 of the response, which is known to raise false alarms
+# where it is taken for nothing.
+COARSE_ROUNDING = 2e-7
+# Interpolation over twice the step errs 2**4 times as much on a smooth curve, once on noise.
+NOISE_RATIO = 3.0
+LEAST_NOISE = 1e-9
+_SAMPLED_POINTS = 4001
+_UNEVEN = 30.0
+_LOW_END = 1e-3
+
+
+def limits(responses: ResponseSet) -> tuple[str, ...]:
+    """Tell what will limit the verdict, one sentence each.
+
+    Parameters
+    ----------
+    responses : ResponseSet
+        Any data.
+
+    Returns
+    -------
+    tuple of str
+    """
+    return (
+        *_sampling(responses.frequency_hz),
+        *_dead(responses),
+        *_copies(responses),
+        *_accuracy(responses),
+    )
+
+
+def _sampling(frequency: FloatArray) -> list[str]:
+    found = []
+    if frequency.size < FEW_POINTS:
+        found.append(
+            f"few points: {frequency.size}; a verdict wants some hundreds over the band, and "
+            "several within each resonance"
+        )
+    if frequency.size < 3:
+        return found
+    low, high = float(frequency[0]), float(frequency[-1])
+    steps = np.diff(frequency)
+    relative = np.diff(np.log(frequency[frequency > 0]))
+    # A logarithmic sweep has steps that grow, a uniform one steps that shrink on a log axis.
+    with np.errstate(all="ignore"):
+        spread = min(steps.max() / steps.min(), relative.max() / relative.min())
+    if spread > _UNEVEN:
+        at = int(np.argmax(steps / np.maximum(frequency[1:], 1e-300)))
+        found.append(
+            f"uneven step: between {si(frequency[at], 'Hz')} and {si(frequency[at + 1], 'Hz')} "
+            "lies a gap in which a narrow mode would be missed"
+        )
+    within = int(np.sum(frequency <= 2 * low)) if low > 0 else 3
+    if low > 0 and within < 3:
+        found.append(
+            f"low end thinly sampled: {within} point{'s' if within > 1 else ''} in the first "
+            f"octave from {si(low, 'Hz')}; slow modes there are hardly seen"
+        )
+    if low > _LOW_END * high:
+        found.append(
+            f"no points below {si(low, 'Hz')}: modes there, such as those of bias networks, "
+            "are not seen"
+        )
+    return found
+
+
+def _dead(responses: ResponseSet) -> list[str]:
+    """Channels that are zero or constant, or zero at some points."""
+    values = responses.values
+    found = []
+    zeros = (values == 0).sum(axis=0)
+    for k, channel in enumerate(responses.channels):
+        if zeros[k] == len(values):
+            found.append(f"{channel}: zero at every point; leave it out with select")
+        elif len(values) > 1 and np.all(values[:, k] == values[0, k]):
+            found.append(f"{channel}: constant over frequency; it shows no mode")
+        elif zeros[k]:
+            found.append(
+                f"{channel}: exactly zero at {zeros[k]} point{'s' if zeros[k] > 1 else ''}"
+            )
+    return found
+
+
+def _copies(responses: ResponseSet) -> list[str]:
+    """Channels with the same numbers, reciprocal pairs and dead channels apart."""
+    values = responses.values
+    alive = values.any(axis=0)
+    first: dict[bytes, list[int]] = {}
+    for k in np.flatnonzero(alive):
+        column = np.ascontiguousarray(values[:, k])
+        first.setdefault(column[:64].tobytes(), []).append(int(k))
+    found = []
+    for group in first.values():
+        for a, b in combinations(group, 2):
+            one, other = responses.channels[a], responses.channels[b]
+            reciprocal = (one.output, one.input) == (other.input, other.output)
+            if not reciprocal and np.array_equal(values[:, a], values[:, b]):
+                found.append(f"{one} and {other} hold the same numbers; one of them adds nothing")
+    return found
+
+
+def _accuracy(responses: ResponseSet) -> list[str]:
+    """Coarse rounding, and noise that shows above it."""
+    frequency, values = _middle(responses)
+    rounding = _rounding(responses, values)
+    found = []
+    if rounding > COARSE_ROUNDING:
+        found.append(
+            f"few digits: rounding leaves about {rounding:.1g} of the response uncertain; "
+            "export more digits"
+        )
+    noise = [visible_noise(frequency, values[:, k]) for k in range(values.shape[1])]
+    worst = int(np.argmax(noise))
+    if noise[worst] > max(3 * rounding, LEAST_NOISE):
+        found.append(
+            f"noise shows: about {noise[worst]:.1g} of the response at {responses.channels[worst]}"
+        )
+    return found
+
+
+def _middle(responses: ResponseSet) -> tuple[FloatArray, ComplexArray]:
+    """Neighbouring points from the middle, enough to judge by."""
+    spare = max(0, responses.points - _SAMPLED_POINTS)
+    part = slice(spare // 2, spare // 2 + _SAMPLED_POINTS)
+    return responses.frequency_hz[part], responses.values[part]
+
+
+def _rounding(responses: ResponseSet, values: ComplexArray) -> float:
+    """Typical standard uncertainty by rounding, over the response; of the worst channel."""
+    if responses.precision is None:
+        return 0.0
+    first, second, _ = responses.precision.rounding_std(values)
+    size = np.abs(values)
+    with np.errstate(divide="ignore", invalid="ignore"):
+        relative = np.where(size > 0, np.hypot(first, second) / size, 0.0)
+    return float(np.median(relative, axis=0).max())
+
+
+def visible_noise(frequency: FloatArray, values: ComplexArray) -> float:
+    """Estimate the noise of one response over its size; zero where none can be seen.
+
+    Parameters
+    ----------
+    frequency : (N,) float ndarray
+        Rising.
+    values : (N,) complex ndarray
+        One response.
+
+    Returns
+    -------
+    float
+        Typical standard deviation of a sample, both parts together, over its size.
+
+    Notes
+    -----
+    Each point is predicted from two neighbours on either side by the cubic through them, once
+    with the nearest and once with every second neighbour. The error of the cubic grows as the
+    fourth power of the step, that of noise not at all.
+    """
+    if frequency.size < 20:
+        return 0.0
+    near = _misfit(frequency, values, 1)
+    far = _misfit(frequency, values, 2)
+    return near if far < NOISE_RATIO * near else 0.0
+
+
+def _misfit(frequency: FloatArray, values: ComplexArray, stride: int) -> float:
+    """Median error of the prediction from neighbours, as the noise of one sample."""
+    reach = 2 * stride
+    at = np.arange(reach, frequency.size - reach)
+    offsets = [-2 * stride, -stride, stride, 2 * stride]
+    nodes = [frequency[at + o] for o in offsets]
+    predicted = np.zeros(at.size, dtype=np.complex128)
+    variance = np.ones(at.size)
+    for i, o in enumerate(offsets):
+        weight = np.ones(at.size)
+        for j in range(4):
+            if j != i:
+                weight *= (frequency[at] - nodes[j]) / (nodes[i] - nodes[j])
+        predicted += weight * values[at + o]
+        variance += weight**2
+    size = np.abs(values[at])
+    with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
+        relative = np.abs(values[at] - predicted) / np.sqrt(variance) / size
+    relative = relative[np.isfinite(relative)]
+    # |complex normal| has the median 0.833 of its root mean square (sqrt(ln 2)).
+    return float(np.median(relative)) / np.sqrt(np.log(2)) if relative.size else 0.0

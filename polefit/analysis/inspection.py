@@ -1,0 +1,254 @@
+"""What a file holds, how it was understood, and what will limit the verdict."""
+
+from __future__ import annotations
+
+import textwrap
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Any, Literal, TypeAlias
+
+import numpy as np
+
+from polefit.analysis.data_quality import limits
+from polefit.estimates import si
+from polefit.precision import Printed
+from polefit.readers import read_with_report
+from polefit.responses import FloatArray, ResponseSet
+
+Spacing: TypeAlias = Literal["single point", "uniform", "logarithmic", "uneven"]
+
+# Frequencies printed with few digits make the steps scatter by about this part.
+_STEP_SCATTER = 2e-3
+_MARKS = {".": "point", ",": "comma"}
+_WIDTH = 96
+
+
+@dataclass(frozen=True)
+class Step:
+    """How the frequencies are spaced.
+
+    Parameters
+    ----------
+    spacing : {"single point", "uniform", "logarithmic", "uneven"}
+        The rule they follow.
+    min_hz, max_hz : float or None
+        Smallest and largest step; None for a single point.
+    points_per_decade : float or None
+        For logarithmic spacing.
+    """
+
+    spacing: Spacing
+    min_hz: float | None = None
+    max_hz: float | None = None
+    points_per_decade: float | None = None
+
+    def __str__(self) -> str:
+        if self.min_hz is None or self.max_hz is None:
+            return self.spacing
+        if self.spacing == "uniform":
+            return f"uniform, {si((self.min_hz + self.max_hz) / 2, 'Hz')}"
+        between = f"{si(self.min_hz, 'Hz')} to {si(self.max_hz, 'Hz')}"
+        if self.points_per_decade is not None:
+            return f"logarithmic, {self.points_per_decade:.4g} points per decade ({between})"
+        return f"uneven, {between}"
+
+
+@dataclass(frozen=True, eq=False)
+class Inspection:
+    """What was read from a file, every assumption made, and what will limit the verdict.
+
+    Parameters
+    ----------
+    file : str
+        The file.
+    format : str
+        Its format.
+    responses : ResponseSet
+        The data themselves.
+    scaling : str
+        How printed numbers became ohm, siemens or a ratio.
+    decimal_mark : str or None
+        "." or "," of a text file.
+    digits : str
+        How the numbers are printed.
+    step : Step
+        How the frequencies are spaced.
+    assumptions : tuple of str
+        Every reading that was not forced by the file.
+    warnings : tuple of str
+        What deserves a second look or will limit the verdict.
+    """
+
+    file: str
+    format: str
+    responses: ResponseSet
+    scaling: str
+    decimal_mark: str | None
+    digits: str
+    step: Step
+    assumptions: tuple[str, ...]
+    warnings: tuple[str, ...]
+
+    def to_dict(self) -> dict[str, Any]:
+        """Return plain data under the schema name ``polefit.inspection``."""
+        data = self.responses
+        source = data.source
+        return {
+            "schema": "polefit.inspection",
+            "version": 1,
+            "source": {
+                "file": self.file,
+                "sha256": None if source is None else source.sha256,
+                "points": data.points,
+                "format": self.format,
+            },
+            "quantity": data.quantity,
+            "unit": data.unit,
+            "scaling": self.scaling,
+            "decimal_mark": self.decimal_mark,
+            "digits": self.digits,
+            "channels": [[c.output, c.input] for c in data.channels],
+            "band_hz": list(data.band_hz),
+            "points": data.points,
+            "step": {
+                "spacing": self.step.spacing,
+                "min_hz": self.step.min_hz,
+                "max_hz": self.step.max_hz,
+                "points_per_decade": self.step.points_per_decade,
+            },
+            "reference_ohm": None if data.reference_ohm is None else list(data.reference_ohm),
+            "pump_hz": data.pump_hz,
+            "termination": data.termination,
+            "assumptions": list(self.assumptions),
+            "warnings": list(self.warnings),
+        }
+
+    def __str__(self) -> str:
+        data = self.responses
+        low, high = data.band_hz
+        names = ", ".join(str(c) for c in data.channels)
+        mark = "" if self.decimal_mark is None else _MARKS.get(self.decimal_mark, "")
+        rows = {
+            "format": self.format,
+            "quantity": f"{data.quantity} in {data.unit}" if data.unit else data.quantity,
+            "scaling": self.scaling,
+            "decimal mark": mark or "none: binary numbers",
+            "digits": self.digits,
+            "channels": f"{len(data.channels)}: {names}",
+            "band": f"{si(low, 'Hz')} to {si(high, 'Hz')}",
+            "points": str(data.points),
+            "step": str(self.step),
+            "termination": data.termination,
+        }
+        if data.pump_hz is not None:
+            rows["pump"] = si(data.pump_hz, "Hz")
+        lines = [self.file, *(_row(name, text) for name, text in rows.items())]
+        lines += ["Assumed:", *_items(self.assumptions or ("nothing: the file says it all",))]
+        lines += ["Take care:", *_items(self.warnings or ("nothing to warn of",))]
+        return "\n".join(lines)
+
+
+def inspect(path: str | Path, **options: Any) -> Inspection:
+    """Read a file and tell what it holds.
+
+    Parameters
+    ----------
+    path : str or pathlib.Path
+        The file.
+    **options
+        As for :func:`polefit.read`.
+
+    Returns
+    -------
+    Inspection
+
+    Raises
+    ------
+    FileError, ArgumentError
+        As :func:`polefit.read` does.
+    """
+    parsed = read_with_report(path, **options)
+    responses = parsed.responses
+    return Inspection(
+        file=str(path),
+        format=parsed.format,
+        responses=responses,
+        scaling=parsed.scaling or _scaling(responses),
+        decimal_mark=parsed.decimal_mark or _usual_mark(parsed.format),
+        digits=_digits(responses),
+        step=step_of(responses.frequency_hz),
+        assumptions=parsed.assumptions,
+        warnings=(*parsed.warnings, *limits(responses)),
+    )
+
+
+def step_of(frequency_hz: FloatArray) -> Step:
+    """Tell how frequencies are spaced.
+
+    Parameters
+    ----------
+    frequency_hz : (N,) float ndarray
+        Rising frequencies in hertz.
+
+    Returns
+    -------
+    Step
+    """
+    if frequency_hz.size < 2:
+        return Step("single point")
+    steps = np.diff(frequency_hz)
+    low, high = float(steps.min()), float(steps.max())
+    if high - low <= _STEP_SCATTER * high:
+        return Step("uniform", low, high)
+    if frequency_hz[0] > 0:
+        decades = np.diff(np.log10(frequency_hz))
+        if decades.max() - decades.min() <= _STEP_SCATTER * decades.max():
+            return Step("logarithmic", low, high, float(1 / decades.mean()))
+    return Step("uneven", low, high)
+
+
+def _scaling(responses: ResponseSet) -> str:
+    precision = responses.precision
+    if precision is None or precision.scale == 1:
+        return "none: numbers as printed"
+    unit = f" = {responses.unit}" if responses.unit else ""
+    return f"printed numbers × {precision.scale:g}{unit}"
+
+
+def _usual_mark(format_name: str) -> str | None:
+    """Decimal mark where the format leaves no choice."""
+    return "." if format_name.startswith("Touchstone") else None
+
+
+def _digits(responses: ResponseSet) -> str:
+    precision = responses.precision
+    if precision is None:
+        return "double precision (15 or more)"
+    names = {
+        "real-imaginary": ("real part", "imaginary part"),
+        "magnitude-angle": ("magnitude", "angle"),
+        "decibel-angle": ("decibels", "angle"),
+    }[precision.form]
+    texts = [_printed(p) for p in (precision.first, precision.second)]
+    if texts[0] == texts[1]:
+        return f"{texts[0]} ({' and '.join(names)})"
+    return "; ".join(f"{name}: {text}" for name, text in zip(names, texts, strict=True))
+
+
+def _printed(printed: Printed) -> str:
+    if printed.decimals is not None:
+        return f"{printed.decimals} decimal places"
+    if printed.significant is not None:
+        return f"{printed.significant} significant"
+    return "double precision (15 or more)"
+
+
+def _row(name: str, text: str) -> str:
+    return textwrap.fill(text, _WIDTH, initial_indent=f"  {name:14}", subsequent_indent=" " * 16)
+
+
+def _items(texts: tuple[str, ...]) -> list[str]:
+    return [
+        textwrap.fill(text, _WIDTH, initial_indent="  - ", subsequent_indent="    ")
+        for text in texts
+    ]
