@@ -332,7 +332,7 @@ def _strength(view: NodeView) -> tuple[bool, float]:
 
 
 def residue_std(estimation: Estimation) -> FloatArray:
-    """Standard uncertainties of real and imaginary part of the residues, normalised.
+    """Return standard uncertainties of both parts of the residues, normalised.
 
     Returns
     -------

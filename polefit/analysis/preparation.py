@@ -155,5 +155,5 @@ def _measured(one: ResponseSet, scale: float) -> Measured:
 
 
 def node_names(channels: Sequence[Channel]) -> tuple[str, ...]:
-    """Names of the observed nodes, each once."""
+    """Return the names of the observed nodes, each once."""
     return tuple(dict.fromkeys(channel.output for channel in channels))

@@ -113,7 +113,7 @@ def estimate_model(
     -------
     Estimation
     """
-    laws = tuple(first_guess(np.abs(m.values), m.known) for m in data)
+    laws = tuple(first_guess(np.abs(m.values)) for m in data)
     blocks = _weigh(data, laws, None)
     progress("searching the order")
     found = search(blocks)
@@ -142,7 +142,7 @@ def estimate_model(
         solution=solution,
         info=info,
         level=level,
-        scores=section_scores(solution, info) / level,
+        scores=section_scores(solution, info).spared / level,
         past=go_past(blocks, solution, info),
         richest=found.richest,
         whiteness=judge_whiteness(solution.parts),

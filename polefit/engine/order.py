@@ -32,6 +32,7 @@ KEEP_CHANCE = 0.01
 FIRST_ORDER = 12
 LARGEST_ORDER = 96
 RELOCATIONS = 5
+GROWTH_TRIALS = 8
 
 
 class Found(NamedTuple):
@@ -101,15 +102,15 @@ def parameters(blocks: Sequence[Block], solution: Solution) -> int:
 
 
 def variance_factor(blocks: Sequence[Block], solution: Solution) -> float:
-    """Return χ² per degree of freedom."""
+    """Return χ² per degree of freedom, at least 1: weights never understate the known noise."""
     freedom = samples(blocks) - parameters(blocks, solution)
-    return solution.misfit / max(freedom, 1)
+    return max(solution.misfit / max(freedom, 1), 1.0)
 
 
 def _criterion(blocks: Sequence[Block], solution: Solution) -> float:
     """Return BIC with the noise level free (G. Schwarz, Ann. Statist. 6, 461, 1978)."""
     count = samples(blocks)
-    level = max(solution.misfit / count, 1e-300)
+    level = max(solution.misfit / count, 1.0)
     return count * math.log(level) + parameters(blocks, solution) * math.log(count)
 
 
@@ -174,7 +175,9 @@ def prune(blocks: Sequence[Block], start: Solution, places: int) -> Solution:
         info = information(blocks, current)
         limit = np.where(np.arange(current.sections.count) < current.sections.c1.size, pair, real)
         level = variance_factor(blocks, current)
-        score = section_scores(current, info) / level / limit
+        scores = section_scores(current, info)
+        score = scores.spared / level / limit
+        glitch = scores.full / level > limit
         score[kept] = np.inf
         weak = np.argsort(score)
         weak = weak[score[weak] < 1.0]
@@ -185,9 +188,9 @@ def prune(blocks: Sequence[Block], start: Solution, places: int) -> Solution:
         mask[take] = False
         trial = solve(blocks, current.sections.keep(mask), current.direct)
         trial = refine(blocks, trial, iterations=8, tolerance=0.1)
-        if trial.misfit - current.misfit < level * float(limit[take].sum()) / (
-            1 if take.size == 1 else 2
-        ):
+        rise = (trial.misfit - current.misfit) / level
+        allowed = float(limit[take].sum()) / (1 if take.size == 1 else 2)
+        if rise < allowed or (take.size == 1 and glitch[take[0]]):
             flat = split(blocks, trial)
             kept = kept[mask] if flat is trial else np.zeros(flat.sections.count, dtype=bool)
             current = flat
@@ -213,20 +216,29 @@ def grow(blocks: Sequence[Block], start: Solution, places: int) -> Solution:
     limit = threshold(channels, places, KEEP_CHANCE)
     current = start
     frequencies = trial_grid(blocks, 120)
-    for _ in range(6):
-        if current.sections.order + 2 > largest_order(blocks):
+    info = information(blocks, current)
+    for _ in range(GROWTH_TRIALS):
+        if current.sections.order + 2 > largest_order(blocks) or frequencies.size < 2:
             break
-        info = information(blocks, current)
         level = variance_factor(blocks, current)
         place, gain = _best_place(blocks, current, info, frequencies)
         if gain < limit * level:
             break
         trial = solve(blocks, current.sections.join(from_poles(np.array([place]))), current.direct)
         trial = refine(blocks, trial, iterations=20, tolerance=0.1)
-        if current.misfit - trial.misfit < limit * level:
-            break
-        current = split(blocks, trial)
+        trial_info = information(blocks, trial)
+        own = trial.sections.c1.size - 1
+        if section_scores(trial, trial_info).spared[own] < limit * variance_factor(blocks, trial):
+            frequencies = frequencies[np.abs(frequencies - place.imag) > 3 * _gap(frequencies)]
+            continue
+        flat = split(blocks, trial)
+        info = trial_info if flat is trial else information(blocks, flat)
+        current = flat
     return current
+
+
+def _gap(frequencies: FloatArray) -> float:
+    return float(np.median(np.diff(frequencies)))
 
 
 def _best_place(

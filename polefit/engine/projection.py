@@ -72,15 +72,26 @@ def _project(block: Block, sections: Sections, direct: int) -> Projected:
     q, r = np.linalg.qr(weighted(block, basis.columns))
     onto = np.matmul(block.target[:, np.newaxis, :], q)
     residual = block.target - np.matmul(q, onto.transpose(0, 2, 1))[:, :, 0]
-    diagonal = np.abs(np.diagonal(r, axis1=1, axis2=2))
-    floor = 1e-14 * diagonal.max(axis=1, keepdims=True)
-    weak = diagonal < floor
-    if weak.any():  # coincident poles: keep the triangular solve finite
-        r = r.copy()
-        k, i = np.nonzero(weak)
-        r[k, i, i] = np.broadcast_to(floor, diagonal.shape)[k, i]
+    r = _regular(r)
     coefficients = np.linalg.solve(r, onto.transpose(0, 2, 1))[:, :, 0]
     return Projected(basis, q, r, coefficients, residual)
+
+
+def _regular(r: FloatArray) -> FloatArray:
+    """Keep triangular factors invertible where poles coincide or lie so far out that they tie.
+
+    The dependent direction gets a pivot that makes its coefficient negligible; the residual,
+    taken from the orthogonal factor, does not change.
+    """
+    norms = np.sqrt(np.sum(r**2, axis=1))
+    pivots = np.abs(np.diagonal(r, axis1=1, axis2=2))
+    weak = pivots < 1e-11 * norms
+    if not weak.any():
+        return r
+    mended = r.copy()
+    k, i = np.nonzero(weak)
+    mended[k, i, i] = np.maximum(norms[k, i], 1e-300)
+    return mended
 
 
 def raw_jacobian(block: Block, sections: Sections, part: Projected) -> FloatArray:
@@ -122,7 +133,7 @@ def normal_equations(blocks: Sequence[Block], solution: Solution) -> tuple[Float
     information = np.zeros((n, n))
     gradient = np.zeros(n)
     for part, block_jacobian in zip(solution.parts, jacobian(blocks, solution), strict=True):
-        flat = block_jacobian.reshape(-1, n)
+        flat = block_jacobian.reshape(part.residual.size, n)
         information += flat.T @ flat
         gradient += flat.T @ part.residual.reshape(-1)
     return information, gradient

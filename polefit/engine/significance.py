@@ -9,6 +9,7 @@ alternative", Biometrika 64(2), 247-254, 1977, from memory).
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 from typing import NamedTuple
 
@@ -60,7 +61,7 @@ def information(blocks: Sequence[Block], solution: Solution) -> Information:
     linear = []
     jacobians = jacobian(blocks, solution)
     for block, part, projected in zip(blocks, solution.parts, jacobians, strict=True):
-        flat = projected.reshape(-1, n)
+        flat = projected.reshape(part.residual.size, n)
         total += flat.T @ flat
         identity = np.broadcast_to(np.eye(part.r.shape[1]), part.r.shape)
         inverse = np.linalg.solve(part.r, identity)
@@ -79,20 +80,77 @@ def invert(matrix: FloatArray) -> FloatArray:
     return result
 
 
-def section_scores(solution: Solution, info: Information) -> FloatArray:
-    """Return the Wald χ² of each section's residues over all channels.
+SPARED_SAMPLES = 3
+"""A pair with its residue passes through any two samples of a channel: what only three
+frequencies say is a glitch, not a mode."""
 
-    Returns
-    -------
-    (P + R,) float ndarray
-        In units of the weighted samples' variance; 2K degrees of freedom for a second-order
-        section and K for a first-order one.
+
+NARROW_STEPS = 6.0
+"""Pairs wider than this many steps cannot be a glitch of single samples."""
+
+
+class Scores(NamedTuple):
+    """Wald χ² of each section's residues over all channels, in units of the weights.
+
+    Attributes
+    ----------
+    full : (P + R,) float ndarray
+        2K degrees of freedom for a second-order section, K for a first-order one.
+    spared : (P + R,) float ndarray
+        What is left of it without the most telling samples.
     """
+
+    full: FloatArray
+    spared: FloatArray
+
+
+def section_scores(solution: Solution, info: Information) -> Scores:
+    """Return how much each section stands out of the noise, with and without its best samples."""
     count = solution.sections.count
-    scores = np.zeros(count)
+    full, spared = np.zeros(count), np.zeros(count)
     for index in range(count):
-        scores[index] = _section_score(solution, info, index)
-    return scores
+        full[index] = _section_score(solution, info, index)
+        spared[index] = full[index]
+        if _narrow(solution, index):
+            spared[index] *= 1 - _concentration(solution, info, index)
+    return Scores(full, spared)
+
+
+def _narrow(solution: Solution, index: int) -> bool:
+    """Tell whether a pair is so narrow that a few samples alone could have made it."""
+    sections = solution.sections
+    if index >= sections.c1.size:
+        return False
+    omega = math.sqrt(max(sections.c0[index] - sections.c1[index] ** 2 / 4, 0.0))
+    width = abs(sections.c1[index])
+    steps = []
+    for part in solution.parts:
+        axis = part.basis.s.imag
+        at = int(np.clip(np.searchsorted(axis, omega), 1, axis.size - 1))
+        steps.append(axis[at] - axis[at - 1])
+    return width < NARROW_STEPS * float(min(steps))
+
+
+def _concentration(solution: Solution, info: Information, index: int) -> float:
+    """Share of a section's evidence that its most telling samples carry."""
+    columns = section_columns(solution.sections, index)
+    energies = []
+    for part, linear in zip(solution.parts, info.linear, strict=True):
+        rows = linear.inverse[:, columns, :]
+        covariance = rows @ rows.transpose(0, 2, 1)
+        covariance = covariance + 1e-14 * np.trace(covariance, axis1=1, axis2=2)[
+            :, np.newaxis, np.newaxis
+        ] * np.eye(len(columns))
+        solved = np.linalg.solve(covariance, part.coefficients[:, columns, np.newaxis])
+        seen = (part.q @ (rows.transpose(0, 2, 1) @ solved))[:, :, 0]
+        points = seen.shape[1] // 2
+        energies.append(np.sum(seen[:, :points] ** 2 + seen[:, points:] ** 2, axis=0))
+    energy = np.concatenate(energies)
+    total = float(energy.sum())
+    if not total > 0 or energy.size <= SPARED_SAMPLES:
+        return 1.0
+    top = np.partition(energy, -SPARED_SAMPLES)[-SPARED_SAMPLES:]
+    return float(top.sum()) / total
 
 
 def _section_score(solution: Solution, info: Information, index: int) -> float:
