@@ -74,7 +74,9 @@ def plot_nodes(result: Identification, loop_index: int, *, ax: Axes | None = Non
     loop = result.loops[loop_index]
     mode = result.modes[loop.mode]
     bars, name = _bars(wording.node_strengths(mode))
-    shown = bars[:_MOST_BARS]
+    reach = max((abs(v) + h for _, v, h in bars), default=0.0) or 1.0
+    seen = [bar for bar in bars if abs(bar[1]) >= wording.HARDLY_SEEN * reach]
+    shown = seen[:_MOST_BARS] if len(seen) >= wording.ALWAYS else bars[: wording.ALWAYS]
     ax = drawing.axes_or_new(ax, 7.2, 1.2 + 0.34 * max(len(shown), 2))
     drawing.dress(ax, f"Nodes of mode {loop.mode + 1}, {wording.label(mode)}")
     for y, (_, value, half) in enumerate(shown):
@@ -90,12 +92,13 @@ def plot_nodes(result: Identification, loop_index: int, *, ax: Axes | None = Non
             xerr=half if half > 0 else None,
             error_kw={"ecolor": drawing.INK, "capsize": 3, "elinewidth": 1.0},
         )
-    labels = [f"{wording.plain(label, 26)}{' (worse)' if v < 0 else ''}" for label, v, _ in shown]
+    labels = [
+        f"{wording.plain(label, 26)}{' (worse)' if v + h < 0 else ''}" for label, v, h in shown
+    ]
     ax.set_yticks(range(len(shown)), labels, parse_math=False)
     ax.set_ylim(max(len(shown), 1) - 0.4, -0.6)
     ax.axvline(0, color=drawing.INK, linewidth=1.0)
     ax.grid(visible=False, axis="y")
-    reach = max((abs(v) + h for _, v, h in shown), default=1.0)
     units.powers_of_ten(ax.xaxis, reach, name)
     ax.set_xlim(
         min(0.0, *(1.08 * (v - h) for _, v, h in shown), 0.0),
@@ -105,7 +108,7 @@ def plot_nodes(result: Identification, loop_index: int, *, ax: Axes | None = Non
         drawing.text(
             ax,
             1.0,
-            0.02,
+            1.02,
             f"and {len(bars) - len(shown)} weaker",
             transform=ax.transAxes,
             ha="right",
@@ -190,6 +193,8 @@ def plot_detection(result: Identification, *, ax: Axes | None = None) -> Axes:
         ax.set_ylim(bottom, top)
         units.log_axis(ax.yaxis, bottom, top, name, unit)
     _mark_blind(ax, frequency, best)
+    if not named:
+        handles.append(Line2D([], [], color=drawing.FAINT, linewidth=0.6, label="single nodes"))
     drawing.legend_below(ax, [*handles, line], 7)
     return ax
 

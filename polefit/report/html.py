@@ -115,14 +115,15 @@ def _mode(mode: Mode, full: bool) -> dict[str, Any]:
     shown = ", ".join(wording.plain(s.brief, 40) for s in strengths[:4])
     rest = len(strengths) - 4
     ratio = mode.damping_ratio
+    sharp = ratio.std is not None and ratio.std < 1e-4 * abs(ratio.value)
     interval = (
         f"{si(ratio.low, '', 4)} to {si(ratio.high, '', 4)}"
-        if ratio.low is not None and ratio.high is not None and not mode.real
+        if ratio.low is not None and ratio.high is not None and not mode.real and not sharp
         else ""
     )
     frequency = mode.frequency_hz.text("Hz")
     if mode.real:
-        frequency = f"real pole, |p|/2π {mode.natural_frequency_hz.text('Hz')}"
+        frequency = f"{si(mode.natural_frequency_hz.value, 'Hz', 5)}, real pole"
     return {
         "verdict": mode.verdict,
         "sign": SIGNS[mode.verdict],
@@ -215,9 +216,11 @@ def _channels(result: Identification, prefix: str) -> list[dict[str, Any]]:
 
 def _evidence(result: Identification) -> list[dict[str, Any]]:
     outcome = {True: "passed", False: "failed", None: "not-made"}
+    doubtful = wording.suspects(result)
     return [
         {
             "mode": i + 1,
+            "suspect": i in doubtful,
             "label": wording.label(mode),
             "tests": [
                 {

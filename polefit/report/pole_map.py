@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Sequence
 
 import numpy as np
 from matplotlib.axes import Axes
@@ -59,7 +58,7 @@ def plot_poles(result: Identification, *, ax: Axes | None = None) -> Axes:
             hidden += 1
     for mode in result.modes:
         _draw_mode(ax, mode)
-    _label_modes(ax, result.modes)
+    _label_modes(ax, result)
     _legend(ax, result, hidden)
     return ax
 
@@ -194,15 +193,17 @@ def _draw_mode(ax: Axes, mode: Mode) -> None:
     )
 
 
-def _label_modes(ax: Axes, modes: Sequence[Mode]) -> None:
-    """Write the number of each mode beside it, and its frequency while there are few."""
+def _label_modes(ax: Axes, result: Identification) -> None:
+    """Write the number of each mode beside it, and the frequency of those to look at."""
+    modes, suspects = result.modes, wording.suspects(result)
     figure = ax.get_figure(root=True)
     if not isinstance(figure, Figure):
         return
     figure.draw_without_rendering()
     taken = [_marker_box(ax, mode) for mode in modes]
     for i, mode in enumerate(modes):
-        words = f"{i + 1}: {wording.label(mode)}" if len(modes) <= _MOST_LABELS else f"{i + 1}"
+        named = len(modes) <= _MOST_LABELS or (i in suspects and len(suspects) <= _MOST_LABELS)
+        words = f"{i + 1}: {wording.label(mode)}" if named else f"{i + 1}"
         x, y = _place(mode.pole_rad_per_s)
         note = ax.annotate(
             words,

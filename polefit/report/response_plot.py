@@ -23,6 +23,8 @@ ComplexArray = NDArray[np.complex128]
 
 DECIBEL = ("scattering", "transfer", "hybrid", "inverse-hybrid", "return-difference", "loop-gain")
 _FINER = 6  # points of the model drawn for each point of the data
+_BROAD = 0.3  # modes damped more than this shape no peak worth a mark
+_NUMBER_WIDTH = 0.025  # of the axis
 _DENSE = 4000  # points from which the model is drawn at the data's own frequencies
 
 
@@ -270,14 +272,29 @@ def _residual(ax: Axes, trace: Trace) -> None:
 
 
 def mark_modes(ax: Axes, result: Identification, low: float, high: float, *, numbers: bool) -> None:
-    """Draw a line at the frequency of every mode shown, with its number where asked."""
+    """Draw a line at the frequency of every lightly damped mode, with its number where asked.
+
+    The most dangerous come last and so lie on top; numbers that would touch one of theirs are
+    left out.
+    """
+    suspects = wording.suspects(result)
+    taken: list[float] = []
+    marked = []
     for i, mode in enumerate(result.modes):
         frequency = mode.frequency_hz.value
         if mode.real or not low <= frequency <= high:
             continue
+        if i not in suspects and mode.damping_ratio.value > _BROAD:
+            continue
+        place = float(ax.transAxes.inverted().transform(ax.transData.transform((frequency, 1)))[0])
+        free = all(abs(place - other) > _NUMBER_WIDTH for other in taken)
+        taken += [place] if free else []
+        marked.append((i, mode, free))
+    for i, mode, free in reversed(marked):
         look = drawing.LOOKS[mode.verdict]
+        frequency = mode.frequency_hz.value
         ax.axvline(frequency, color=look.colour, linewidth=0.9, linestyle=(0, (3, 2)), zorder=1)
-        if numbers:
+        if numbers and free:
             ax.annotate(
                 str(i + 1),
                 (frequency, 1.0),
@@ -343,8 +360,9 @@ def plot_overview(result: Identification, *, figure: Figure | None = None) -> Fi
             parse_math=False,
         )
         ax.tick_params(labelsize=drawing.SMALL - 1, labelbottom=k + columns >= count)
-        mark_modes(ax, result, low, high, numbers=False)
     drawing.frequency_axis(grid[0, 0], low, high, "", most=4)
+    for ax in grid.ravel()[:count]:
+        mark_modes(ax, result, low, high, numbers=False)
     _overview_labels(figure, grid[0, 0], result.quantity, reach)
     return figure
 

@@ -26,8 +26,8 @@ SYMBOL = {
     "return-difference": "F",
     "loop-gain": "T",
 }
-_HARDLY_SEEN = 1e-3  # of the strongest residue
-_ALWAYS = 3  # nodes of a loop that are listed however weak
+HARDLY_SEEN = 1e-3  # of the strongest residue
+ALWAYS = 3  # nodes of a loop that are listed however weak
 CAUTIONS = (
     "The verdict holds for the model, the nodes, the band and the terminations that were "
     "simulated; another bias, temperature, load or layout is another circuit.",
@@ -320,8 +320,8 @@ def loop_table(result: Identification, index: int, most: int) -> list[tuple[str,
     """
     loop = result.loops[index]
     by_name = {s.name: s for s in node_strengths(result.modes[loop.mode])}
-    seen = [n for n in loop.nodes if n not in by_name or by_name[n].relative >= _HARDLY_SEEN]
-    nodes = loop.nodes[: max(_ALWAYS, len(seen))] if len(seen) < _ALWAYS else tuple(seen)
+    seen = [n for n in loop.nodes if n not in by_name or by_name[n].relative >= HARDLY_SEEN]
+    nodes = loop.nodes[: max(ALWAYS, len(seen))] if len(seen) < ALWAYS else tuple(seen)
     rows = [("node", "damping ratio added per mS", "leverage in 1/(s·S)", "residue")]
     for name in nodes[:most]:
         strength = by_name.get(name)
