@@ -9,7 +9,7 @@ from typing import NamedTuple
 import numpy as np
 
 from polefit.engine.blocks import Block
-from polefit.engine.order import parameters, samples, split
+from polefit.engine.order import parameters, split
 from polefit.engine.projection import Solution, solve
 from polefit.engine.refinement import refine
 from polefit.engine.sections import Sections
@@ -23,8 +23,7 @@ class StableModel(NamedTuple):
     misfit_ratio : float
         Root of χ² confined over χ² free.
     rise : float
-        Increase of χ², corrected for the numbers of parameters as BIC counts them, in units
-        of the noise variance.
+        Increase of χ² in units of the noise variance, corrected for the numbers of parameters.
     order : int
         Order of the confined model.
     """
@@ -69,18 +68,17 @@ def compare_with_stable(
     -------
     StableModel
     """
-    count = samples(blocks)
     best: tuple[float, Solution] | None = None
     starts = [on_axis(free.sections), reflected(free.sections)]
     starts += [reflected(solution.sections) for solution in richer]
     for start in starts:
         confined = split(blocks, solve(blocks, start, free.direct))
         confined = refine(blocks, confined, iterations=25, tolerance=0.1, left_half_plane=True)
-        price = parameters(blocks, confined) * math.log(count)
-        cost = confined.misfit / level + price
+        # each further parameter lowers χ² by one in the mean, whether it is needed or not
+        cost = confined.misfit / level + parameters(blocks, confined)
         if best is None or cost < best[0]:
             best = cost, confined
     assert best is not None
-    rise = best[0] - free.misfit / level - parameters(blocks, free) * math.log(count)
+    rise = best[0] - free.misfit / level - parameters(blocks, free)
     ratio = math.sqrt(best[1].misfit / max(free.misfit, 1e-300))
     return StableModel(ratio, rise, best[1].sections.order)
