@@ -22,6 +22,8 @@ _HOME = {
     "ResponseSet": "polefit.responses",
     "identify": "polefit.analysis.identify",
     "read": "polefit.readers",
+    "read_all": "polefit.readers",
+    "write_hdf5": "polefit.readers.hdf5",
 }
 __all__ = [
     "ArgumentError",
@@ -36,6 +38,8 @@ __all__ = [
     "__version__",
     "identify",
     "read",
+    "read_all",
+    "write_hdf5",
 ]
 
 if TYPE_CHECKING:
@@ -49,7 +53,8 @@ if TYPE_CHECKING:
     )
     from polefit.estimates import Estimate
     from polefit.modes import Identification
-    from polefit.readers import read
+    from polefit.readers import read, read_all
+    from polefit.readers.hdf5 import write_hdf5
     from polefit.responses import Channel, ResponseSet
 
 

@@ -36,6 +36,8 @@ class Printed:
         if self.significant is None:
             return np.zeros(printed.shape)
         size = np.abs(printed)
+        # Scaling and |x| may leave a printed 1.000 a few units of the last bit below 1.
+        size *= 1 + 3e-15
         exponent = np.floor(np.log10(np.where(size > 0, size, 1.0)))
         return np.where(size > 0, 10.0 ** (exponent + 1 - self.significant), 0.0)
 

@@ -12,6 +12,9 @@ from typing import TYPE_CHECKING, Any, Literal, TypeAlias, get_args
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
+from polefit.channels import Channel as Channel
+from polefit.channels import as_channel as as_channel
+from polefit.channels import port_channels as port_channels
 from polefit.errors import ArgumentError, DataError
 from polefit.precision import Precision
 
@@ -43,30 +46,6 @@ _TERMINATION = {
     "return-difference": "as terminated in the simulation",
     "loop-gain": "as terminated in the simulation, loop closed",
 }
-
-
-@dataclass(frozen=True, order=True)
-class Channel:
-    """Where a response was taken: H = output / input.
-
-    Parameters
-    ----------
-    output : str
-        Name of the node or port observed.
-    input : str
-        Name of the node or port driven. Equal names mean a driving-point response.
-    """
-
-    output: str
-    input: str
-
-    @property
-    def driving_point(self) -> bool:
-        """Whether the response was observed where it was driven."""
-        return self.output == self.input
-
-    def __str__(self) -> str:
-        return self.output if self.driving_point else f"{self.output} ← {self.input}"
 
 
 @dataclass(frozen=True)
@@ -144,16 +123,18 @@ class ResponseSet:
             raise ArgumentError(
                 f"quantity: {self.quantity!r} is not known; use one of {', '.join(QUANTITIES)}"
             )
-        frequency = _frozen_copy(self.frequency_hz, np.float64, "frequency_hz")
-        values = _frozen_copy(self.values, np.complex128, "values")
+        frequency = _frozen(self.frequency_hz, np.float64, "frequency_hz")
+        values = _frozen(self.values, np.complex128, "values")
+        channels = tuple(as_channel(channel) for channel in self.channels)
         _check_axis(frequency)
-        _check_values(values, frequency.size, self.channels)
-        if self.pump_hz is not None and not (np.isfinite(self.pump_hz) and self.pump_hz > 0):
-            raise ArgumentError(f"pump_hz: {self.pump_hz} is not a positive frequency; give hertz")
+        _check_values(values, frequency.size, channels)
         object.__setattr__(self, "frequency_hz", frequency)
         object.__setattr__(self, "values", values)
+        object.__setattr__(self, "channels", channels)
+        object.__setattr__(self, "pump_hz", _as_pump(self.pump_hz))
+        object.__setattr__(self, "reference_ohm", _as_references(self.reference_ohm))
         if self.sample_std is not None:
-            std = _frozen_copy(self.sample_std, np.float64, "sample_std")
+            std = _frozen(self.sample_std, np.float64, "sample_std")
             if std.shape != values.shape or not np.all(np.isfinite(std) & (std >= 0)):
                 raise DataError(
                     "sample_std: must be finite, non-negative and of the shape of values"
@@ -221,7 +202,7 @@ class ResponseSet:
         table = np.asarray(values)
         if table.ndim == 1:
             table = table[:, np.newaxis]
-        std = None if sample_std is None else np.asarray(sample_std, dtype=np.float64)
+        std = None if sample_std is None else np.asarray(sample_std)
         if std is not None and std.ndim == 1:
             std = std[:, np.newaxis]
         return cls(
@@ -266,6 +247,8 @@ class ResponseSet:
                 "renormalise to a real resistance first (Network.renormalize)"
             )
         names = ports or network.port_names or [f"port{i + 1}" for i in range(count)]
+        if len(set(names)) != count:
+            raise DataError(f"ports: {len(set(names))} different names for {count} ports")
         return cls(
             frequency_hz=np.asarray(network.f, dtype=np.float64),
             values=s.reshape(len(s), count * count),
@@ -319,15 +302,17 @@ class ResponseSet:
         Raises
         ------
         ArgumentError
-            If a name fits no channel.
+            If a name fits no channel, or none is given.
         """
         columns: list[int] = []
-        for name in names:
+        for name in [names] if isinstance(names, str) else names:
             found = [i for i, c in enumerate(self.channels) if name in (c.output, str(c))]
             if not found:
                 listed = ", ".join(dict.fromkeys(c.output for c in self.channels))
                 raise ArgumentError(f"select: no channel {name!r}; the data hold {listed}")
             columns.extend(i for i in found if i not in columns)
+        if not columns:
+            raise ArgumentError("select: names no channel; give at least one, or leave it out")
         return replace(
             self,
             values=self.values[:, columns],
@@ -343,39 +328,42 @@ class ResponseSet:
         )
 
 
-def as_channel(name: str | tuple[str, str] | Channel) -> Channel:
-    """Turn a node name (driving point) or an (output, input) pair into a Channel.
-
-    Raises
-    ------
-    ArgumentError
-        If `name` is neither, or a name is empty.
-    """
-    if isinstance(name, Channel):
-        return name
-    pair: tuple[Any, ...] = (name, name) if isinstance(name, str) else tuple(name)
-    if len(pair) != 2 or not all(isinstance(part, str) and part.strip() for part in pair):
-        raise ArgumentError(
-            f"channels: {name!r} is not a channel; give a name or an (output, input) pair"
-        )
-    return Channel(pair[0].strip(), pair[1].strip())
-
-
-def port_channels(names: Sequence[str]) -> tuple[Channel, ...]:
-    """All n² channels between the ports `names`, row by row: (output, input)."""
-    return tuple(Channel(output, drive) for output in names for drive in names)
-
-
 def _as_references(value: float | Sequence[float] | None) -> tuple[float, ...] | None:
     if value is None:
         return None
-    listed = np.atleast_1d(np.asarray(value, dtype=np.float64))
-    if listed.ndim != 1 or not np.all(np.isfinite(listed) & (listed > 0)):
+    try:
+        listed = np.atleast_1d(np.asarray(value, dtype=np.float64))
+    except (TypeError, ValueError):
+        listed = np.zeros(0)
+    if listed.ndim != 1 or not listed.size or not np.all(np.isfinite(listed) & (listed > 0)):
         raise ArgumentError("reference_ohm: give positive resistances in ohm")
     return tuple(float(r) for r in listed)
 
 
-def _frozen_copy(array: Any, dtype: Any, name: str) -> Any:
+def _as_pump(value: float | None) -> float | None:
+    if value is None:
+        return None
+    try:
+        pump = float(value)
+    except (TypeError, ValueError):
+        pump = np.nan
+    if not 0 < pump < np.inf:
+        raise ArgumentError(f"pump_hz: {value!r} is not a positive frequency; give hertz")
+    return pump
+
+
+def _frozen(array: Any, dtype: Any, name: str) -> Any:
+    """Return `array` if nobody can write to it, else a read-only copy."""
+    if (
+        type(array) is np.ndarray
+        and array.dtype == dtype
+        and array.base is None
+        and array.flags.c_contiguous
+        and not array.flags.writeable
+    ):
+        return array  # large responses are handed on often; copies would add up
+    if np.iscomplexobj(array) and not np.issubdtype(dtype, np.complexfloating):
+        raise DataError(f"{name}: complex numbers; give their real part")
     try:
         copy = np.array(array, dtype=dtype, order="C")
     except (TypeError, ValueError) as error:

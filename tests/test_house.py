@@ -22,7 +22,7 @@ TOP_LEVEL = {"README.md", "DEVELOPERS.md", "LICENSE", "pyproject.toml", "polefit
 
 # Layers from the bottom up; a module may import its own layer and those below.
 LAYERS = (
-    {"errors", "atomic", "estimates", "precision", "responses", "modes"},
+    {"errors", "atomic", "channels", "estimates", "precision", "responses", "conversions", "modes"},
     {"engine", "readers", "datasets"},
     {"analysis"},
     {"report"},
@@ -30,7 +30,7 @@ LAYERS = (
     {"cli", "__main__", "__init__"},
 )
 # The engine knows no file, no screen and no user; of the layer below it takes plain data types.
-ENGINE_MAY_IMPORT = {"engine", "errors", "estimates", "precision", "responses"}
+ENGINE_MAY_IMPORT = {"engine", "channels", "errors", "estimates", "precision", "responses"}
 # Result types delegate their printing; report is then imported inside the method.
 LAZY_EXCEPTIONS = {"modes"}
 

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import cast
 
 from polefit.errors import AmbiguousFileError, ArgumentError, FormatError
@@ -65,9 +65,12 @@ def meaning(labels: Sequence[Heading], options: ReadOptions, stem: str) -> Meani
     if options.driven is not None and len(labels) == 1 and not labels[0].output:
         name = options.node or options.driven
         channel = Channel(name, options.driven)
-        said = (f"one response without a name: taken at {name}, driven at {options.driven}",)
+        said = [f"one response without a name: taken at {name}, driven at {options.driven}"]
+        if options.quantity is None and not labels[0].kind:
+            options = replace(options, quantity="impedance")
+            said.append("taken as an impedance: the response to a 1 A AC source")
         quantity, columns = _quantity(labels, options)
-        return Meaning(_plain([channel], quantity, columns, said))
+        return Meaning(_plain([channel], quantity, columns, tuple(said)))
     if options.driven is not None:
         return Meaning(_driven(labels, options))
     if all(raw) and len(labels) == 1 and labels[0].kind == "voltage" and options.quantity:
@@ -151,12 +154,17 @@ def _channels(
         return _one_channel(labels[0], options, stem)
     assumptions = []
     if any(not label.output for label in labels):
-        assumptions.append(f"responses without a name are called {stem}_1, {stem}_2, …")
-    if any(not label.input for label in labels):
-        assumptions.append("each response is taken as observed where it is driven")
-    names = [label.output or f"{stem}_{i + 1}" for i, label in enumerate(labels)]
+        assumptions.append(
+            f"responses without a name are called {stem}_1, {stem}_2, …; nothing says where they "
+            "were driven, so none of them counts as a driving-point response"
+        )
+    if any(label.output and not label.input for label in labels):
+        assumptions.append("each named response is taken as observed where it is driven")
     channels = [
-        Channel(name, label.input or name) for name, label in zip(names, labels, strict=True)
+        Channel(label.output, label.input or label.output)
+        if label.output
+        else Channel(f"{stem}_{i + 1}", stem)
+        for i, label in enumerate(labels)
     ]
     return channels, tuple(assumptions)
 

@@ -336,7 +336,12 @@ def _headed_traces(
                 group[part] = column
     unsaid = _as_magnitudes(unsaid, [g for _, g in groups])
     lonely: list[Column] = []
-    for _, group in groups:
+    whole = {(t.label.output, t.label.input) for _, t in traces}
+    for key, group in groups:
+        if key[1] and key[1:] in whole:
+            texts = ", ".join(c.heading.text for c in group.values())
+            notes.assumptions.append(f"{texts} left out: {key[1]} is there as complex numbers")
+            continue
         trace = _group_trace(group, options, notes)
         if trace is None:
             lonely.extend(group.values())

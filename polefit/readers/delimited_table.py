@@ -69,7 +69,7 @@ def load(text: Text, dialect: Dialect, layout: Layout, first_line: int) -> Table
     FormatError
         With the line, if a row does not fit, a number is not finite, or axes differ.
     """
-    frequency = Growing(0, np.float64)
+    frequency = Growing(None, np.float64)
     parts = Growing(len(layout.traces), np.complex128)
     first: list[str] = []
     second: list[str] = []

@@ -27,15 +27,15 @@ class Growing:
 
     Parameters
     ----------
-    columns : int
-        Numbers per row; 0 for a one-dimensional array.
+    columns : int or None
+        Numbers per row; None for a one-dimensional array.
     dtype : numpy type
         Of the numbers.
     """
 
-    def __init__(self, columns: int, dtype: type[Any]) -> None:
+    def __init__(self, columns: int | None, dtype: type[Any]) -> None:
         self._rows = 0
-        self._array = np.empty((0, columns) if columns else 0, dtype=dtype)
+        self._array = np.empty(0 if columns is None else (0, columns), dtype=dtype)
 
     def add(self, rows: NDArray[Any], whole: float) -> None:
         """Append rows; `whole` is the share of the file that they complete, to plan ahead."""

@@ -2,13 +2,14 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass, fields
 from typing import Literal
 
 from polefit.errors import ArgumentError
 from polefit.precision import Printed
-from polefit.responses import ResponseSet
+from polefit.responses import QUANTITIES, ResponseSet
 
 
 @dataclass(frozen=True)
@@ -39,6 +40,15 @@ class Parsed:
     scaling: str | None = None
 
 
+_ALLOWED: dict[str, tuple[str, ...]] = {
+    "quantity": QUANTITIES,
+    "decimal": (".", ","),
+    "form": ("real-imaginary", "magnitude-angle", "decibel-angle"),
+    "angle_unit": ("deg", "rad"),
+    "scaling": ("normalised", "absolute"),
+}
+
+
 @dataclass(frozen=True)
 class ReadOptions:
     """Options that settle what a file leaves open; None means: find out, and say so.
@@ -67,6 +77,11 @@ class ReadOptions:
         Whether Z, Y, H, G numbers of a Touchstone 1.x file are normalised to the reference.
     reference_ohm : float, optional
         Reference resistance, where scattering data do not say, or to convert into them.
+
+    Raises
+    ------
+    ArgumentError
+        If an option has a value that it cannot have.
     """
 
     quantity: str | None = None
@@ -81,6 +96,24 @@ class ReadOptions:
     scaling: Literal["normalised", "absolute"] | None = None
     reference_ohm: float | None = None
 
+    def __post_init__(self) -> None:
+        for name, allowed in _ALLOWED.items():
+            value = getattr(self, name)
+            if value is not None and value not in allowed:
+                raise ArgumentError(
+                    f"{name}: {value!r} is not known; use one of {', '.join(allowed)}"
+                )
+        if isinstance(self.select, str):
+            object.__setattr__(self, "select", (self.select,))
+        elif self.select is not None:
+            object.__setattr__(self, "select", tuple(self.select))
+        for name in ("driven", "node"):
+            value = getattr(self, name)
+            if value is not None and not (isinstance(value, str) and value.strip()):
+                raise ArgumentError(f"{name}: {value!r} is not a name; give one, or leave it out")
+        if self.reference_ohm is not None:
+            object.__setattr__(self, "reference_ohm", _resistance(self.reference_ohm))
+
     def refuse_unused(self, used: Iterable[str], format_name: str) -> None:
         """Raise ArgumentError for an option that has no meaning for this format."""
         known = {*used, "quantity", "select"}
@@ -89,6 +122,16 @@ class ReadOptions:
                 raise ArgumentError(
                     f"{option.name}: has no meaning for a {format_name} file; leave it out"
                 )
+
+
+def _resistance(value: float) -> float:
+    try:
+        ohm = float(value)
+    except (TypeError, ValueError):
+        ohm = math.nan
+    if not 0 < ohm < math.inf:
+        raise ArgumentError(f"reference_ohm: {value!r} is not a positive resistance; give ohms")
+    return ohm
 
 
 def printed_form(tokens: Sequence[str]) -> Printed | None:

@@ -30,15 +30,24 @@ class Header(Protocol):
     """What the numbers need to know of the header."""
 
     @property
-    def complex_numbers(self) -> bool: ...  # noqa: D102
+    def complex_numbers(self) -> bool:
+        """Whether numbers are complex."""
+
     @property
-    def names(self) -> tuple[str, ...]: ...  # noqa: D102
+    def names(self) -> tuple[str, ...]:
+        """The vectors, the first of which is the axis."""
+
     @property
-    def points(self) -> int: ...  # noqa: D102
+    def points(self) -> int:
+        """Declared number of points."""
+
     @property
-    def start(self) -> int: ...  # noqa: D102
+    def start(self) -> int:
+        """Byte at which the numbers begin."""
+
     @property
-    def line(self) -> int: ...  # noqa: D102
+    def line(self) -> int:
+        """Line of the first number, for ASCII."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -193,7 +202,7 @@ def ascii_numbers(content: Content, plot: Header, wanted: tuple[int, ...]) -> Nu
     parts = 2 if plot.complex_numbers else 1
     width = 1 + parts * len(plot.names)
     reader = _AsciiReader(content, plot, width)
-    frequency = Growing(0, np.float64)
+    frequency = Growing(None, np.float64)
     values = Growing(len(wanted), np.complex128)
     firsts = [1 + parts * (i + 1) for i in wanted]
     for rows in reader.rows():
