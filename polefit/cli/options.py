@@ -102,6 +102,7 @@ def _together(*options: Callable[[Command], Command]) -> Callable[[Command], Com
     """Apply options so that help lists them in the order given."""
 
     def decorate(command: Command) -> Command:
+        """Add the options to a command."""
         return reduce(lambda wrapped, option: option(wrapped), reversed(options), command)
 
     return decorate
