@@ -7,7 +7,6 @@ leave its imaginary part as uninitialised memory.
 from __future__ import annotations
 
 import re
-import warnings
 from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass
 from typing import Protocol
@@ -21,7 +20,7 @@ from polefit.responses import ComplexArray, FloatArray
 
 _AGAIN = "run the simulation again and save its raw file"
 _HIGHEST_HZ = 1e15  # a byte order that gives more is the wrong one
-_TITLE = re.compile(rb"^\s*[A-Za-z][A-Za-z. ]*:", re.MULTILINE)
+_TITLE = re.compile(rb"^[ \t]*[A-Za-z][A-Za-z. ]*:", re.MULTILINE)
 _SEPARATORS = bytes.maketrans(b",\t\r\n", b"    ")
 _ROWS_AT_ONCE = 8192
 
@@ -336,14 +335,12 @@ class _AsciiReader:
 
 def _floats(text: bytes) -> FloatArray | None:
     """Parse blank-separated numbers; None if there is anything else."""
-    if not text.strip():
-        return np.empty(0)
-    with warnings.catch_warnings():
-        warnings.simplefilter("error")
-        try:
-            return np.fromstring(text, dtype=np.float64, sep=" ")
-        except (ValueError, DeprecationWarning):
-            return None
+    tokens = text.split()
+    try:
+        numbers = np.fromiter(map(float, tokens), np.float64, len(tokens))
+    except ValueError:
+        return None
+    return None if b"_" in text else numbers  # float() allows 1_000
 
 
 def _refuse_not_finite(

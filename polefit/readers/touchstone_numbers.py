@@ -14,6 +14,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from polefit.errors import FormatError
+from polefit.readers.large_files import Growing
 from polefit.readers.text_blocks import Text
 from polefit.responses import FloatArray
 
@@ -23,8 +24,9 @@ _COMMENT = re.compile(r"![^\n]*")
 _OPTION_LINE = re.compile(r"^[ \t]*#[^\n]*", re.MULTILINE)
 _KEYWORD_LINE = re.compile(r"^[ \t]*\[[^\n]*", re.MULTILINE)
 _PER_POINT_REFERENCE = re.compile(r"!\s*(?:port\s+impedance|gamma)\b", re.IGNORECASE)
-# Numbers whose printed form is kept from each block: enough to see every digit count.
-_SAMPLE = 1500
+# Numbers whose printed form is kept from the first block and from each later one: enough to see
+# every digit count.
+_SAMPLE = (1500, 200)
 
 
 @dataclass(frozen=True, eq=False)
@@ -83,14 +85,17 @@ class Scan:
 class _Collector:
     keyword: str
     line: int
-    numbers: list[FloatArray] = field(default_factory=list)
+    numbers: Growing = field(default_factory=lambda: Growing(None, np.float64))
     lines: list[IntArray] = field(default_factory=list)
     counts: list[IntArray] = field(default_factory=list)
     sample: list[tuple[int, str]] = field(default_factory=list)
     total: int = 0
 
-    def add(self, piece: str, line: int) -> None:
-        """Take the numbers of `piece`, which begins in line `line`."""
+    def add(self, piece: str, line: int, share: float) -> None:
+        """Take the numbers of `piece`, which begins in line `line`.
+
+        `share` is the part of the file that has been read with it.
+        """
         try:
             raw = piece.encode("ascii")
             tokens = raw.split()
@@ -105,23 +110,22 @@ class _Collector:
         full = np.flatnonzero(counts)
         self.lines.append(full + line)
         self.counts.append(counts[full])
-        self.numbers.append(numbers)
+        self.numbers.add(numbers, share)
         chosen: Sequence[int] = range(len(tokens))
-        if len(tokens) > 2 * _SAMPLE:
+        sample = _SAMPLE[bool(self.total)]
+        if len(tokens) > 2 * sample:
             random = np.random.default_rng(self.total)
-            chosen = random.integers(0, len(tokens), _SAMPLE).tolist()
+            chosen = random.integers(0, len(tokens), sample).tolist()
         self.sample += [(self.total + i, tokens[i].decode("ascii")) for i in chosen]
         self.total += len(tokens)
 
     def section(self) -> Section:
         """Close the section."""
         none = np.zeros(0, np.int64)
-        numbers = np.concatenate(self.numbers) if self.numbers else np.zeros(0)
-        self.numbers.clear()
         return Section(
             keyword=self.keyword,
             line=self.line,
-            numbers=numbers,
+            numbers=self.numbers.finished(),
             lines=np.concatenate([none, *self.lines]),
             counts=np.concatenate([none, *self.counts]),
             sample=tuple(self.sample),
@@ -150,25 +154,28 @@ def scan(text: Text, first_line: int) -> Scan:
     collectors = [_Collector("", first_line)]
     comment_line: int | None = None
     line = 1
+    seen = 0
     for block in text.blocks():
         count = block.count("\n")
+        seen += len(block)
         if line + count > first_line:
             body = _without_head(block, first_line - line)
             if comment_line is None and (found := _PER_POINT_REFERENCE.search(body)):
                 comment_line = line + body.count("\n", 0, found.start())
-            _collect(_without_comments(body), line, collectors)
+            share = min(1.0, seen * (1 + text.wide) / len(text.content))
+            _collect(_without_comments(body), line, share, collectors)
         line += count
     return Scan(tuple(c.section() for c in collectors), comment_line)
 
 
-def _collect(body: str, line: int, collectors: list[_Collector]) -> None:
+def _collect(body: str, line: int, share: float, collectors: list[_Collector]) -> None:
     at = 0
     for found in _KEYWORD_LINE.finditer(body) if "[" in body else ():
-        collectors[-1].add(body[at : found.start()], line)
+        collectors[-1].add(body[at : found.start()], line, share)
         line += body.count("\n", at, found.start())
         collectors.append(_Collector(found.group().strip(), line))
         at = found.end()
-    collectors[-1].add(body[at:], line)
+    collectors[-1].add(body[at:], line, share)
 
 
 def _without_head(block: str, count: int) -> str:
