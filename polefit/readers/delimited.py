@@ -17,7 +17,7 @@ from polefit.errors import AmbiguousFileError, ArgumentError, FormatError
 from polefit.readers.delimited_channels import meaning
 from polefit.readers.delimited_dialect import BLANKS, Dialect, Draft, drafts, is_comment
 from polefit.readers.delimited_headings import Heading, parse_headings
-from polefit.readers.delimited_layout import Layout, Trace, resolve
+from polefit.readers.delimited_layout import Form, Layout, Trace, resolve
 from polefit.readers.delimited_table import (
     Table,
     complex_values,
@@ -158,14 +158,14 @@ def _chosen(
 def _layout(
     draft: Draft, headings: tuple[Heading, ...] | None, options: ReadOptions, simulator: bool
 ) -> Layout:
-    certain = draft.dialect.complex_style == "unit"
+    told: dict[str, Form] = {"unit": "real-imaginary", "decibels": "decibel-angle"}
     return resolve(
         draft.kinds,
         headings,
         draft.rows,
         options,
         simulator=simulator,
-        certain_pairs=certain,
+        pairs=told.get(draft.dialect.complex_style),
     )
 
 
@@ -205,7 +205,7 @@ def _headings(text: Text, head: Sequence[str], draft: Draft) -> tuple[Heading, .
     candidates = [_heading_fields(line, draft) for line in above[-3:]]
     if not candidates or candidates[-1] is None:
         # A comment without headings may follow the line that has them.
-        while candidates and candidates[-1] is None and is_comment(above[-1]):
+        while candidates and candidates[-1] is None and _apart(above[-1]):
             candidates.pop()
             above.pop()
         if not candidates or candidates[-1] is None:
@@ -221,6 +221,11 @@ def _headings(text: Text, head: Sequence[str], draft: Draft) -> tuple[Heading, .
             ]
         )
     return below
+
+
+def _apart(line: str) -> bool:
+    """Whether a line between headings and rows is a comment or a rule of dashes."""
+    return is_comment(line) or not line.strip(" \t-=_+|")
 
 
 def _or_before(before: str, name: str) -> str:

@@ -24,6 +24,10 @@ _SIGNED = rf"[+-]?{_UNSIGNED}"
 _NUMBER = re.compile(rf"{_SIGNED}|[+-]?(?:nan|inf|infinity)", re.IGNORECASE)
 _BRACKETED = re.compile(rf"(?:complex)?\(\s*({_SIGNED})\s*[,;]\s*({_SIGNED})\s*\)", re.IGNORECASE)
 _STARTED = rf"(?<![\w.])\(?({_SIGNED})"  # a number from its first character on
+# (-3.01dB,-45.0°): the degree sign may be one byte or, seen as Latin-1, two.
+_DECIBELS = re.compile(
+    rf"\(\s*({_SIGNED})\s*dB\s*[,;]\s*({_SIGNED})\s*(?:\xc2?\xb0|deg)\s*\)", re.IGNORECASE
+)
 _UNIT_LAST = re.compile(rf"{_STARTED}[ \t]*(?:\+[ \t]*)?([+-])[ \t]*({_UNSIGNED})\*?[ij]\)?")
 _UNIT_FIRST = re.compile(rf"{_STARTED}[ \t]*([+-])[ \t]*[ij][ \t]*\*?[ \t]*({_UNSIGNED})\)?")
 _IMAGINARY = re.compile(rf"{_STARTED}\*?[ij]\)?")
@@ -50,7 +54,7 @@ class Dialect:
     decimal : str
         Decimal mark.
     complex_style : str
-        How two numbers share a field: "", "bracketed", "unit", "quoted" or "comma".
+        How two numbers share a field: "", "bracketed", "decibels", "unit", "quoted" or "comma".
     quoted : bool
         Whether fields are put in quotation marks.
     fortran : bool
@@ -101,6 +105,8 @@ class Dialect:
     def _pairs_marked(self, text: str) -> str:
         if self.complex_style == "bracketed":
             return _BRACKETED.sub(rf"\1{PAIR}\2", text)
+        if self.complex_style == "decibels":
+            return _DECIBELS.sub(rf"\1{PAIR}\2", text)
         if self.complex_style == "unit":
             text = _UNIT_LAST.sub(rf"\1{PAIR}\2\3", text)
             text = _UNIT_FIRST.sub(rf"\1{PAIR}\2\3", text)
@@ -232,6 +238,8 @@ def _hypotheses(lines: Sequence[str], options: ReadOptions) -> Iterator[Dialect]
     pointed = text.replace(",", ".")
     if _BRACKETED.search(text) or _BRACKETED.search(pointed):
         styles = ["bracketed"]
+    elif _DECIBELS.search(text) or _DECIBELS.search(pointed):
+        styles = ["decibels"]
     elif any(p.search(t) for p in (_UNIT_LAST, _UNIT_FIRST) for t in (text, pointed)):
         styles = ["unit"]
     elif _QUOTED_PAIR.search(text):

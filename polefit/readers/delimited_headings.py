@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 import re
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
@@ -35,7 +36,8 @@ _PARTS = {
     IMAGINARY: "im imag imaginary imagpart img",
     MAGNITUDE: "mag magnitude abs amplitude ampl modulus mod",
     DECIBEL: "db db20 dbmag magdb decibel",
-    ANGLE: "phase ph phas ang angle arg argument deg rad phasedeg angdeg degrees",
+    ANGLE: "phase ph phas ang angle arg argument deg rad degrees "
+    "phasedeg phaserad angdeg angrad cangdeg cangrad",
 }
 _PART_OF = {word: part for part, words in _PARTS.items() for word in words.split()}
 _FREQUENCY = {"freq", "frequency", "f", "frequencies", "fr", "hertz", "freqs", "xfreq"}
@@ -44,15 +46,26 @@ _INDEX = {"index", "no", "no.", "nr", "nr.", "#", "n", "point", "idx", "row"}
 _LETTERS = {"R": (REAL, "impedance"), "X": (IMAGINARY, "impedance")}
 _LETTERS |= {"G": (REAL, "admittance"), "B": (IMAGINARY, "admittance")}
 _LETTERS |= {"I": (REAL, ""), "Q": (IMAGINARY, "")}
-_SPICE_PART = {"r": REAL, "i": IMAGINARY, "m": MAGNITUDE, "p": ANGLE, "db": DECIBEL, "": ""}
+_SPICE_PART = {
+    "r": REAL,
+    "i": IMAGINARY,
+    "m": MAGNITUDE,
+    "p": ANGLE,
+    "db": DECIBEL,
+    "f": "",
+    "": "",
+}
 
 _OPEN, _CLOSE = r"[\(\[\{]", r"[\)\]\}]"
-_CALL = re.compile(rf"([A-Za-z0-9]+)\s*{_OPEN}\s*(.*?)\s*{_CLOSE}")
-_SPICE = re.compile(rf"([vi])(r|i|m|p|db|)\s*{_OPEN}\s*(.+?)\s*{_CLOSE}", re.IGNORECASE)
+_CALL = re.compile(rf"([A-Za-z0-9_]+)\s*{_OPEN}\s*(.*?)\s*{_CLOSE}")
+_SPICE = re.compile(rf"([vi])(r|i|m|p|db|f|)\s*{_OPEN}\s*(.+?)\s*{_CLOSE}", re.IGNORECASE)
 _PORTS = re.compile(rf"([SZY])\s*{_OPEN}?[_ ]?\s*(\d+)\s*[,;_:. ]\s*(\d+)\s*{_CLOSE}?", re.I)
 _PORTS_SHORT = re.compile(rf"([SZY])\s*{_OPEN}?[_ ]?(\d)(\d)\s*{_CLOSE}?", re.IGNORECASE)
 _OF_NODE = re.compile(rf"([ZY])\s*{_OPEN}\s*(.+?)\s*{_CLOSE}", re.IGNORECASE)
 _WITH_NODE = re.compile(r"([ZY])[_.: \-]+(.+)", re.IGNORECASE)
+_ANGLE_WORD = re.compile(r"(?<![a-z])(?:c?ang|phase|ph)?_?(deg|rad)(?![a-z])", re.IGNORECASE)
+# Waveform tables head the columns of each trace with its expression and X or Y.
+_OF_WAVEFORM = re.compile(r"(.*\))\s+([XY])")
 _KIND = {"s": "scattering", "z": "impedance", "y": "admittance", "v": "voltage", "i": "current"}
 
 
@@ -88,19 +101,41 @@ class Heading:
 
 
 def parse_headings(texts: Sequence[str]) -> tuple[Heading, ...]:
-    """Read all headings of a table; single letters (R and X, I and Q) count only in pairs.
+    """Read all headings of a table; single letters (R and X, I and Q, r and i) count in pairs.
 
     Raises
     ------
     AmbiguousFileError
         If a unit has two readings.
     """
-    found = [parse_heading(text) for text in texts]
+    found = [parse_heading(text) for text in _spelled_out(texts)]
+    if (first := _OF_WAVEFORM.fullmatch(found[0].text)) and first[2] == "X":
+        found = [_of_waveform(heading) for heading in found]
     plain = {h.output for h in found}
     for first, second in (("R", "X"), ("G", "B"), ("I", "Q")):
         if {first, second} <= plain:
             found = [_as_letter(h) if h.output in (first, second) else h for h in found]
     return tuple(found)
+
+
+def _spelled_out(texts: Sequence[str]) -> list[str]:
+    """Spell out neighbours such as ``r out.v`` and ``i out.v``."""
+    found = list(texts)
+    for i, (first, second) in enumerate(itertools.pairwise(texts)):
+        one, other = first.strip('" '), second.strip('" ')
+        if one[:2] == "r " and other[:2] == "i " and one[2:] == other[2:]:
+            found[i], found[i + 1] = f"re {one[2:]}", f"im {other[2:]}"
+    return found
+
+
+def _of_waveform(heading: Heading) -> Heading:
+    """Read a heading that ends with X, for an axis, or Y."""
+    waveform = _OF_WAVEFORM.fullmatch(heading.text)
+    if waveform is None:
+        return heading
+    if waveform[2] == "X":
+        return Heading(heading.text, "frequency")
+    return replace(parse_heading(waveform[1]), text=heading.text)
 
 
 def _as_letter(heading: Heading) -> Heading:
@@ -143,9 +178,12 @@ def parse_heading(text: str) -> Heading:
         return heading  # a frequency with a name of its own
     role, name = _split_part(rest)
     output, drive, kind, spice_role = _channel(name)
+    role = _one_role(role or spice_role, unit.role)
+    said = _ANGLE_WORD.search(rest) if role == ANGLE else None
     return replace(
         heading,
-        role=_one_role(role or spice_role, unit.role),
+        role=role,
+        angle_unit=unit.angle_unit or (said[1].lower() if said else ""),
         output=output,
         input=drive,
         kind=unit.kind if unit.kind in ("impedance", "admittance") else kind or unit.kind,
@@ -226,8 +264,9 @@ def _split_part(text: str) -> tuple[str, str]:
     if text.startswith(("∠", "∡")):
         return ANGLE, text[1:].strip("() ")
     call = _CALL.fullmatch(text)
-    if call and call[1].lower() in _PART_OF:
-        return _PART_OF[call[1].lower()], _split_part(call[2])[1]
+    word = call[1].lower().replace("_", "") if call else ""
+    if call and word in _PART_OF:
+        return _PART_OF[word], _split_part(call[2])[1]
     tail = re.fullmatch(rf"(.*\S)\s*{_OPEN}\s*([A-Za-z]+)\s*{_CLOSE}", text)
     if tail and tail[2].lower() in _PART_OF:
         return _PART_OF[tail[2].lower()], tail[1]

@@ -96,7 +96,7 @@ class Layout:
 
 @dataclass
 class _Notes:
-    certain_pairs: bool
+    pairs: Form | None
     assumptions: list[str] = field(default_factory=list)
     warnings: list[str] = field(default_factory=list)
 
@@ -108,7 +108,7 @@ def resolve(
     options: ReadOptions,
     *,
     simulator: bool = False,
-    certain_pairs: bool = False,
+    pairs: Form | None = None,
 ) -> Layout:
     """Find the meaning of the columns.
 
@@ -125,8 +125,9 @@ def resolve(
     simulator : bool
         Whether the file is evidently a simulator's own table: complex vectors are then
         printed as real and imaginary part, frequencies in hertz.
-    certain_pairs : bool
-        Whether two numbers in one field are real and imaginary part beyond doubt.
+    pairs : str or None
+        What two numbers in one field are, where their marks leave no doubt; decibels then go
+        with degrees.
 
     Returns
     -------
@@ -141,7 +142,7 @@ def resolve(
     ArgumentError
         If an option contradicts the headings.
     """
-    notes = _Notes(certain_pairs or simulator)
+    notes = _Notes("real-imaginary" if simulator else pairs)
     columns = _columns(kinds, headings)
     if headings is not None and columns[0].heading.role == "index" and len(columns) > 1:
         notes.assumptions.append(f"column {columns[0].heading.text!r} left out: it counts rows")
@@ -265,18 +266,19 @@ def _bare_traces(
 
 
 def _pair_trace(column: Column, options: ReadOptions, notes: _Notes) -> Trace:
-    form: Form = options.form or "real-imaginary"
+    form: Form = notes.pairs or options.form or "real-imaginary"
+    if options.form not in (None, form):
+        raise ArgumentError(f"form: the numbers are marked as {form}; leave the option out")
     if column.heading.role:
         raise FormatError(
             f"two numbers in the column {column.heading.text!r}, which is headed as one part",
             "export one number per field",
         )
-    if options.form is None and not notes.certain_pairs:
+    if options.form is None and notes.pairs is None:
         _say_once(notes.assumptions, "two numbers in one field taken as real and imaginary part")
     unit = column.heading
-    return Trace(
-        column.start, column.start + 1, form, unit.scale or 1.0, unit.angle_unit, column.heading
-    )
+    degrees = "deg" if notes.pairs == "decibel-angle" else unit.angle_unit
+    return Trace(column.start, column.start + 1, form, unit.scale or 1.0, degrees, column.heading)
 
 
 def _adjacent_traces(
@@ -328,7 +330,8 @@ def _headed_traces(
             unsaid.append(column)
         else:
             key = (column.heading.kind, column.heading.output, column.heading.input)
-            fitting = (g for k, g in groups[closed:] if _same(k, key) and part not in g)
+            near = groups if key[1] else groups[closed:]  # a name joins parts on axes of their own
+            fitting = (g for k, g in near if _same(k, key) and part not in g)
             group = next(fitting, None)
             if group is None:
                 groups.append((key, {part: column}))
