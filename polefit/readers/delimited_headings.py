@@ -109,7 +109,7 @@ def parse_headings(texts: Sequence[str]) -> tuple[Heading, ...]:
         If a unit has two readings.
     """
     found = [parse_heading(text) for text in _spelled_out(texts)]
-    if (first := _OF_WAVEFORM.fullmatch(found[0].text)) and first[2] == "X":
+    if (axis := _OF_WAVEFORM.fullmatch(found[0].text)) and axis[2] == "X":
         found = [_of_waveform(heading) for heading in found]
     plain = {h.output for h in found}
     for first, second in (("R", "X"), ("G", "B"), ("I", "Q")):

@@ -123,7 +123,7 @@ def layout_v1(sections: Sequence[Section], header: Header, ports: int | None) ->
     noise = _noise_start(totals, frequency) if ports == 2 else totals.size
     wrong = np.flatnonzero(totals[:noise] != width)
     if wrong.size:
-        raise _wrong_count(int(totals[wrong[0]]), int(lines[wrong[0]]), ports)
+        raise _wrong_point(section, begins, int(wrong[0]), ports)
     _check_noise_v1(totals[noise:], frequency[noise:], lines[noise:])
     warnings = []
     if np.any(section.counts[: begins[noise] if noise < begins.size else None] > 9):
@@ -193,6 +193,19 @@ def _ports_v1(total: int, line: int, ports: int | None) -> int:
     if total != 2 * ports * ports + 1:
         raise _wrong_count(total, line, ports, told if fits else None)
     return ports
+
+
+def _wrong_point(section: Section, begins: np.ndarray, row: int, ports: int) -> FormatError:
+    """Tell which line makes point `row` too long, or that the point is too short."""
+    needed = 2 * ports * ports + 1
+    counts = np.split(section.counts, begins[1:])[row]
+    lines = section.lines[begins[row] :]
+    within = np.cumsum(counts)
+    spare = int(np.argmax(within > needed))
+    if within[-1] > needed and spare > 0 and within[spare - 1] == needed:
+        what = f"{counts[spare]} numbers behind a whole point, where the next should begin"
+        return FormatError(what, _CUT, line=int(lines[spare]))
+    return _wrong_count(int(within[-1]), int(lines[0]), ports)
 
 
 def _wrong_count(total: int, line: int, ports: int, told: int | None = None) -> FormatError:
