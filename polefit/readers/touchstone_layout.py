@@ -190,8 +190,8 @@ def _ports_v1(total: int, line: int, ports: int | None) -> int:
             what = f"{total} numbers for one frequency fit no number of ports"
             raise FormatError(what, "check this line; n ports take 2 n² + 1 numbers", line=line)
         return told
-    if total != 2 * ports * ports + 1:
-        raise _wrong_count(total, line, ports, told if fits else None)
+    if fits and told != ports:
+        raise _wrong_count(total, line, ports, told)
     return ports
 
 
