@@ -12,6 +12,7 @@ from polefit.analysis.preparation import Prepared, node_names, prepare
 from polefit.engine.detection import residue_limits
 from polefit.engine.estimation import Estimation, estimate_model
 from polefit.engine.order import trial_grid
+from polefit.engine.projection import model_values
 from polefit.engine.sections import residues
 from polefit.engine.significance import threshold
 from polefit.errors import ArgumentError
@@ -142,7 +143,7 @@ def _quality(
     for part, block, noise in zip(
         estimation.solution.parts, estimation.blocks, estimation.noise, strict=True
     ):
-        fitted = part.coefficients @ part.basis.columns.T
+        fitted = model_values(block.s, estimation.solution, part)
         size = np.abs(block.values)
         usable = size > 0
         errors.append((np.abs(fitted - block.values)[usable] / size[usable]) ** 2)

@@ -54,9 +54,8 @@ def make_block(
     s: ComplexArray, values: ComplexArray, weight: FloatArray, turn: ComplexArray | None = None
 ) -> Block:
     """Build a block; see :class:`Block` for the shapes."""
-    turned = values if turn is None else values * turn
-    target = np.concatenate((turned.real * weight[:, 0], turned.imag * weight[:, 1]), axis=1)
-    return Block(s, values, weight, turn, target)
+    bare = Block(s, values, weight, turn, np.empty((values.shape[0], 0)))
+    return bare._replace(target=weighted_parts(bare, values))
 
 
 def weighted(block: Block, columns: ComplexArray) -> FloatArray:
@@ -80,3 +79,45 @@ def weighted(block: Block, columns: ComplexArray) -> FloatArray:
     np.multiply(columns.real, block.weight[:, 0, :, np.newaxis], out=rows[:, :points])
     np.multiply(columns.imag, block.weight[:, 1, :, np.newaxis], out=rows[:, points:])
     return rows
+
+
+PIECE = 8192
+"""Channels times points that are worked on at once: their columns fit into the cache."""
+
+
+def pieces(block: Block) -> list[Block]:
+    """Cut a block along the frequency axis into parts small enough to work on at once."""
+    length = max(PIECE // block.channels, 64)
+    if block.s.size <= length:
+        return [block]
+    points = block.s.size
+    target = block.target.reshape(block.channels, 2, points)
+    return [
+        Block(
+            block.s[at],
+            block.values[:, at],
+            block.weight[:, :, at],
+            None if block.turn is None else block.turn[:, at],
+            target[:, :, at].reshape(block.channels, -1),
+        )
+        for at in (slice(i, i + length) for i in range(0, points, length))
+    ]
+
+
+def weighted_parts(block: Block, values: ComplexArray) -> FloatArray:
+    """Return the weighted real rows, (K, 2N), of one complex (K, N) array."""
+    if block.turn is not None:
+        values = values * block.turn
+    rows: FloatArray = np.concatenate(
+        (values.real * block.weight[:, 0], values.imag * block.weight[:, 1]), axis=1
+    )
+    return rows
+
+
+def pulled_back(block: Block, rows: FloatArray) -> ComplexArray:
+    """Return g, (K, N), such that the weighted rows of any columns times `rows` are Re(g·columns)."""
+    points = block.s.size
+    first = block.weight[:, 0] * rows[:, :points]
+    second = block.weight[:, 1] * rows[:, points:]
+    result: ComplexArray = first - 1j * second
+    return result if block.turn is None else result * block.turn

@@ -24,7 +24,7 @@ from polefit.engine.order import (
     trial_grid,
     variance_factor,
 )
-from polefit.engine.projection import Solution, solve
+from polefit.engine.projection import Solution, model_values, residual, solve
 from polefit.engine.refinement import refine
 from polefit.engine.sections import from_poles
 from polefit.engine.significance import Information, information, scan, section_scores
@@ -130,22 +130,24 @@ def estimate_model(
     )
     solution = split(blocks, solution)
     level = variance_factor(blocks, solution)
-    info = information(blocks, solution)
+    info = information(solution)
     progress("checking what moves with the order")
     return Estimation(
         blocks=blocks,
         laws=laws,
         noise=tuple(
             level * variance(law, _size(part_values), m.known)
-            for law, m, part_values in zip(laws, data, _models(solution), strict=True)
+            for law, m, part_values in zip(laws, data, _models(data, solution), strict=True)
         ),
         solution=solution,
         info=info,
         level=level,
-        scores=section_scores(solution, info).spared / level,
+        scores=section_scores(blocks, solution, info).spared / level,
         past=go_past(blocks, solution, info),
         richest=found.richest,
-        whiteness=judge_whiteness(solution.parts),
+        whiteness=judge_whiteness(
+            [residual(b, solution, p) for b, p in zip(blocks, solution.parts, strict=True)]
+        ),
         places=count_places(blocks),
         reason=found.reason,
     )
@@ -156,8 +158,8 @@ def _again(blocks: tuple[Block, ...], found: Found) -> Found:
     return search(blocks, start=found.richest)
 
 
-def _models(solution: Solution) -> list[ComplexArray]:
-    return [part.coefficients @ part.basis.columns.T for part in solution.parts]
+def _models(data: Sequence[Measured], solution: Solution) -> list[ComplexArray]:
+    return [model_values(m.s, solution, p) for m, p in zip(data, solution.parts, strict=True)]
 
 
 def _size(values: ComplexArray) -> FloatArray:
@@ -172,7 +174,7 @@ def _weigh(
     sizes = (
         [_size(m.values) for m in data]
         if solution is None
-        else [_size(values) for values in _models(solution)]
+        else [_size(values) for values in _models(data, solution)]
     )
     return tuple(
         make_block(m.s, m.values, 1.0 / np.sqrt(variance(law, size, m.known)), m.turn)
@@ -186,7 +188,7 @@ def _laws(
     channels = sum(m.values.shape[0] for m in data)
     spent = parameters(blocks, solution) / channels
     laws = []
-    for m, model in zip(data, _models(solution), strict=True):
+    for m, model in zip(data, _models(data, solution), strict=True):
         rest = m.values - model
         if m.turn is not None:
             rest = rest * m.turn

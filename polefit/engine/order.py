@@ -172,10 +172,10 @@ def prune(blocks: Sequence[Block], start: Solution, places: int) -> Solution:
     kept = np.zeros(current.sections.count, dtype=bool)
     batch_allowed = True
     while current.sections.count:
-        info = information(blocks, current)
+        info = information(current)
         limit = np.where(np.arange(current.sections.count) < current.sections.c1.size, pair, real)
         level = variance_factor(blocks, current)
-        scores = section_scores(current, info)
+        scores = section_scores(blocks, current, info)
         score = scores.spared / level / limit
         glitch = scores.full / level > limit
         score[kept] = np.inf
@@ -216,7 +216,7 @@ def grow(blocks: Sequence[Block], start: Solution, places: int) -> Solution:
     limit = threshold(channels, places, KEEP_CHANCE)
     current = start
     frequencies = trial_grid(blocks, 120)
-    info = information(blocks, current)
+    info = information(current)
     for _ in range(GROWTH_TRIALS):
         if current.sections.order + 2 > largest_order(blocks) or frequencies.size < 2:
             break
@@ -226,13 +226,13 @@ def grow(blocks: Sequence[Block], start: Solution, places: int) -> Solution:
             break
         trial = solve(blocks, current.sections.join(from_poles(np.array([place]))), current.direct)
         trial = refine(blocks, trial, iterations=20, tolerance=0.1)
-        trial_info = information(blocks, trial)
+        trial_info = information(trial)
         own = trial.sections.c1.size - 1
-        if section_scores(trial, trial_info).spared[own] < limit * variance_factor(blocks, trial):
+        if section_scores(blocks, trial, trial_info).spared[own] < limit * variance_factor(blocks, trial):
             frequencies = frequencies[np.abs(frequencies - place.imag) > 3 * _gap(frequencies)]
             continue
         flat = split(blocks, trial)
-        info = trial_info if flat is trial else information(blocks, flat)
+        info = trial_info if flat is trial else information(flat)
         current = flat
     return current
 

@@ -1,9 +1,15 @@
-"""Variable projection: misfit, residual and Jacobian with residues and direct terms eliminated.
+"""Variable projection: misfit and its derivatives with residues and direct terms eliminated.
 
 G. H. Golub, V. Pereyra, "The differentiation of pseudo-inverses and nonlinear least squares
 problems whose variables separate", SIAM J. Numer. Anal. 10(2), 413-432, 1973, with L. Kaufman's
 form of the Jacobian, BIT 15, 49-57, 1975 (both cited from memory). With Kaufman's form JᵀJ is the
 exact Fisher information of the poles with all linear parameters marginalised.
+
+Of the tall matrix [basis, derivative functions] of each channel only the triangular factor is
+kept. It comes from the Cholesky factor of the normal equations, and the solution is corrected
+once with an explicit residual (A. Björck, "Stability analysis of the method of seminormal
+equations for linear least squares problems", Linear Algebra Appl. 88/89, 31-48, 1987, from
+memory); where columns are too nearly dependent for that, from an orthogonal factorisation.
 """
 
 from __future__ import annotations
@@ -13,8 +19,20 @@ from typing import NamedTuple
 
 import numpy as np
 
-from polefit.engine.blocks import Block, ComplexArray, FloatArray, weighted
-from polefit.engine.sections import Basis, Sections, evaluate
+from polefit.engine.blocks import (
+    Block,
+    ComplexArray,
+    FloatArray,
+    pieces,
+    pulled_back,
+    weighted,
+    weighted_parts,
+)
+from polefit.engine.sections import Sections, chain, evaluate, evaluate_with_slopes
+
+TIE = 1e-6
+"""A column that lies so close to the span of those before it is left to orthogonalisation: the
+normal equations would know its distance to 1e-16/1e-12 only."""
 
 
 class Projected(NamedTuple):
@@ -22,21 +40,26 @@ class Projected(NamedTuple):
 
     Attributes
     ----------
-    basis : Basis
-        Section responses.
-    q, r : (K, 2N, m), (K, m, m) float ndarray
-        QR factors of the weighted basis.
     coefficients : (K, m) float ndarray
         Linear parameters.
-    residual : (K, 2N) float ndarray
-        Weighted data minus model.
+    factor : (K, m, m) float ndarray
+        Triangular factor of the weighted basis.
+    coupling : (K, m, order) float ndarray
+        Derivative functions along the orthonormalised basis.
+    inner : (K, order, order) float ndarray
+        Triangular factor of what remains of the derivative functions.
+    pull : (K, order) float ndarray
+        Inner products of that remainder with the residual.
+    misfit : float
+        Sum of squared weighted residuals.
     """
 
-    basis: Basis
-    q: FloatArray
-    r: FloatArray
     coefficients: FloatArray
-    residual: FloatArray
+    factor: FloatArray
+    coupling: FloatArray
+    inner: FloatArray
+    pull: FloatArray
+    misfit: float
 
 
 class Solution(NamedTuple):
@@ -62,25 +85,93 @@ class Solution(NamedTuple):
 
 def solve(blocks: Sequence[Block], sections: Sections, direct: int) -> Solution:
     """Solve for the residues and direct terms of every channel."""
-    parts = tuple(_project(block, sections, direct) for block in blocks)
-    misfit = sum(float(np.vdot(part.residual, part.residual)) for part in parts)
-    return Solution(sections, direct, parts, misfit)
+    parts = []
+    for block in blocks:
+        part = _by_cholesky(block, sections, direct)
+        parts.append(part or _by_orthogonalisation(block, sections, direct))
+    return Solution(sections, direct, tuple(parts), sum(part.misfit for part in parts))
 
 
-def _project(block: Block, sections: Sections, direct: int) -> Projected:
-    basis = evaluate(sections, block.s, direct)
-    q, r = np.linalg.qr(weighted(block, basis.columns))
-    onto = np.matmul(block.target[:, np.newaxis, :], q)
-    residual = block.target - np.matmul(q, onto.transpose(0, 2, 1))[:, :, 0]
-    r = _regular(r)
-    coefficients = np.linalg.solve(r, onto.transpose(0, 2, 1))[:, :, 0]
-    return Projected(basis, q, r, coefficients, residual)
+def _by_cholesky(block: Block, sections: Sections, direct: int) -> Projected | None:
+    """Solve by normal equations with one correction; None where columns nearly tie."""
+    m = sections.order + direct
+    cut = pieces(block)
+    kept: list[ComplexArray] = []
+    gram, cross = None, None
+    for piece in cut:
+        columns = evaluate_with_slopes(sections, piece.s, direct)
+        if len(cut) == 1:
+            kept.append(columns)
+        rows = weighted(piece, columns)
+        turned = rows.transpose(0, 2, 1)
+        more, across = turned @ rows, (turned @ piece.target[:, :, np.newaxis])[:, :, 0]
+        gram = more if gram is None else gram + more
+        cross = across if cross is None else cross + across
+    assert gram is not None
+    assert cross is not None
+    factor = cholesky(gram)
+    if factor is None:
+        return None
+    basis = factor[:, :m, :m]
+    coefficients = _normal_solve(basis, cross[:, :m])
+    again = np.zeros_like(cross)
+    misfit = 0.0
+    for index, piece in enumerate(cut):
+        columns = kept[index] if kept else evaluate_with_slopes(sections, piece.s, direct)
+        rest = piece.target - weighted_parts(piece, coefficients @ columns[:, :m].T)
+        misfit += float(np.vdot(rest, rest))
+        again += (pulled_back(piece, rest) @ columns).real
+    correction = _normal_solve(basis, again[:, :m])
+    misfit -= float(np.vdot(correction, again[:, :m]))
+    pull = again[:, m:] - (gram[:, m:, :m] @ correction[:, :, np.newaxis])[:, :, 0]
+    return Projected(
+        coefficients + correction, basis, factor[:, :m, m:], factor[:, m:, m:], pull, misfit
+    )
 
 
-def _regular(r: FloatArray) -> FloatArray:
+def cholesky(gram: FloatArray) -> FloatArray | None:
+    """Return the upper triangular factors of Gram matrices, or None where columns nearly tie."""
+    size = np.sqrt(np.diagonal(gram, axis1=1, axis2=2))
+    if not np.all(size > 0) or not np.all(np.isfinite(size)):
+        return None
+    try:
+        lower = np.linalg.cholesky(gram / size[:, :, np.newaxis] / size[:, np.newaxis, :])
+    except np.linalg.LinAlgError:
+        return None
+    if np.diagonal(lower, axis1=1, axis2=2).min() < TIE:
+        return None
+    upper: FloatArray = lower.transpose(0, 2, 1) * size[:, np.newaxis, :]
+    return upper
+
+
+def _normal_solve(factor: FloatArray, right: FloatArray) -> FloatArray:
+    half = np.linalg.solve(factor.transpose(0, 2, 1), right[:, :, np.newaxis])
+    solved: FloatArray = np.linalg.solve(factor, half)[:, :, 0]
+    return solved
+
+
+def _by_orthogonalisation(block: Block, sections: Sections, direct: int) -> Projected:
+    m, n = sections.order + direct, sections.order
+    triangles = []
+    for piece in pieces(block):
+        rows = weighted(piece, evaluate_with_slopes(sections, piece.s, direct))
+        rows = np.concatenate((rows, piece.target[:, :, np.newaxis]), axis=2)
+        triangles.append(np.linalg.qr(rows, mode="r"))
+    r = triangles[0]
+    if len(triangles) > 1:
+        r = np.linalg.qr(np.concatenate(triangles, axis=1), mode="r")
+    basis = regular(r[:, :m, :m])
+    coefficients = np.linalg.solve(basis, r[:, :m, -1:])[:, :, 0]
+    inner, reach = r[:, m : m + n, m : m + n], r[:, m : m + n, -1:]
+    pull = (inner.transpose(0, 2, 1) @ reach)[:, :, 0]
+    misfit = float(np.sum(r[:, m:, -1] ** 2))
+    return Projected(coefficients, basis, r[:, :m, m : m + n], inner, pull, misfit)
+
+
+def regular(r: FloatArray) -> FloatArray:
     """Keep triangular factors invertible where poles coincide or lie so far out that they tie.
 
-    The dependent direction gets a pivot that makes its coefficient negligible; the residual,
+    The dependent direction gets a pivot that makes its coefficient negligible; the misfit,
     taken from the orthogonal factor, does not change.
     """
     norms = np.sqrt(np.sum(r**2, axis=1))
@@ -94,46 +185,25 @@ def _regular(r: FloatArray) -> FloatArray:
     return mended
 
 
-def raw_jacobian(block: Block, sections: Sections, part: Projected) -> FloatArray:
-    """Differentiate the weighted model by the pole parameters, linear parameters held.
-
-    Returns
-    -------
-    (K, 2N, order) float ndarray
-        ∂/∂c1 = −s·g/q, ∂/∂c0 = −g/q, ∂/∂c = −g/(s + c), g being the section's response.
-    """
-    p, r = sections.c1.size, sections.c.size
-    along = part.coefficients[:, np.newaxis, :p]
-    across = part.coefficients[:, np.newaxis, p : 2 * p]
-    single = part.coefficients[:, np.newaxis, 2 * p : 2 * p + r]
-    columns = part.basis.columns
-    response = along * columns[:, :p] + across * columns[:, p : 2 * p]
-    derivative: ComplexArray = np.empty(
-        (block.channels, block.s.size, sections.order), dtype=np.complex128
-    )
-    by_c0 = derivative[:, :, p : 2 * p]
-    np.multiply(response, -part.basis.inverse2, out=by_c0)
-    np.multiply(block.s[:, np.newaxis], by_c0, out=derivative[:, :, :p])
-    np.multiply(-single, part.basis.inverse1**2, out=derivative[:, :, 2 * p :])
-    return weighted(block, derivative)
+def model_values(s: ComplexArray, solution: Solution, part: Projected) -> ComplexArray:
+    """Return the fitted responses of one block, (K, N)."""
+    values: ComplexArray = part.coefficients @ evaluate(solution.sections, s, solution.direct).T
+    return values
 
 
-def jacobian(blocks: Sequence[Block], solution: Solution) -> list[FloatArray]:
-    """Projected Jacobians, one (K, 2N, order) array for each block."""
-    projected = []
-    for block, part in zip(blocks, solution.parts, strict=True):
-        raw = raw_jacobian(block, solution.sections, part)
-        projected.append(raw - np.matmul(part.q, np.matmul(part.q.transpose(0, 2, 1), raw)))
-    return projected
+def residual(block: Block, solution: Solution, part: Projected) -> FloatArray:
+    """Return weighted data minus model, (K, 2N)."""
+    return block.target - weighted_parts(block, model_values(block.s, solution, part))
 
 
-def normal_equations(blocks: Sequence[Block], solution: Solution) -> tuple[FloatArray, FloatArray]:
+def normal_equations(solution: Solution) -> tuple[FloatArray, FloatArray]:
     """Return Fisher information JᵀJ and gradient Jᵀr of the pole parameters."""
     n = solution.sections.order
     information = np.zeros((n, n))
     gradient = np.zeros(n)
-    for part, block_jacobian in zip(solution.parts, jacobian(blocks, solution), strict=True):
-        flat = block_jacobian.reshape(part.residual.size, n)
+    for part in solution.parts:
+        slopes, _ = chain(solution.sections, part.coefficients)
+        flat = (part.inner @ slopes).reshape(-1, n)
         information += flat.T @ flat
-        gradient += flat.T @ part.residual.reshape(-1)
+        gradient += np.einsum("kdj,kd->j", slopes, part.pull)
     return information, gradient

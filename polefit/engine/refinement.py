@@ -48,7 +48,7 @@ def refine(
     best = start
     samples = sum(block.rows for block in blocks)
     damping = 1e-3
-    information, gradient = normal_equations(blocks, best)
+    information, gradient = normal_equations(best)
     for _ in range(iterations):
         theta = best.sections.vector()
         free = np.ones(theta.size, dtype=bool)
@@ -67,7 +67,7 @@ def refine(
             gain = (best.misfit - trial.misfit) / max(expected, 1e-300)
             damping = max(damping * (0.1 if gain > 0.5 else 0.5), 1e-12)
             best = trial
-            information, gradient = normal_equations(blocks, best)
+            information, gradient = normal_equations(best)
         else:
             damping = max(damping * 10.0, 1e-6)
             if damping > 1e6:

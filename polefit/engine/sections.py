@@ -105,26 +105,7 @@ def from_poles(poles: ComplexArray) -> Sections:
     return Sections(-2 * upper.real, np.abs(upper) ** 2, -real)
 
 
-class Basis(NamedTuple):
-    """Section responses on a grid.
-
-    Attributes
-    ----------
-    s : (N,) complex ndarray
-        Normalised complex frequency.
-    inverse2, inverse1 : (N, P), (N, R) complex ndarray
-        1/(s² + c1·s + c0) and 1/(s + c).
-    columns : (N, 2P + R + direct) complex ndarray
-        s/q, √|c0|/q, 1/(s + c), then 1 and s as asked for.
-    """
-
-    s: ComplexArray
-    inverse2: ComplexArray
-    inverse1: ComplexArray
-    columns: ComplexArray
-
-
-def evaluate(sections: Sections, s: ComplexArray, direct: int) -> Basis:
+def evaluate(sections: Sections, s: ComplexArray, direct: int) -> ComplexArray:
     """Evaluate the partial-fraction basis.
 
     Parameters
@@ -138,32 +119,80 @@ def evaluate(sections: Sections, s: ComplexArray, direct: int) -> Basis:
 
     Returns
     -------
-    Basis
+    (N, 2P + R + direct) complex ndarray
+        s/q, √|c0|/q with q = s² + c1·s + c0, 1/(s + c), then 1 and s as asked for.
     """
     column = s[:, np.newaxis]
     p, r = sections.c1.size, sections.c.size
-    inverse2 = 1.0 / ((column + sections.c1) * column + sections.c0)
-    inverse1 = 1.0 / (column + sections.c)
     columns = np.empty((s.size, 2 * p + r + direct), dtype=np.complex128)
-    np.multiply(column, inverse2, out=columns[:, :p])
-    np.multiply(sections.weights(), inverse2, out=columns[:, p : 2 * p])
-    columns[:, 2 * p : 2 * p + r] = inverse1
+    inverse = 1.0 / ((column + sections.c1) * column + sections.c0)
+    np.multiply(column, inverse, out=columns[:, :p])
+    np.multiply(sections.weights(), inverse, out=columns[:, p : 2 * p])
+    np.divide(1.0, column + sections.c, out=columns[:, 2 * p : 2 * p + r])
     if direct:
         columns[:, 2 * p + r] = 1.0
     if direct > 1:
         columns[:, 2 * p + r + 1] = s
-    return Basis(s, inverse2, inverse1, columns)
+    return columns
+
+
+def evaluate_with_slopes(sections: Sections, s: ComplexArray, direct: int) -> ComplexArray:
+    """Evaluate the basis and, after it, the functions that span its derivatives by the poles.
+
+    Returns
+    -------
+    (N, 2P + R + direct + order) complex ndarray
+        The basis; then s·√|c0|/q², |c0|/q² and 1/(s + c)². See :func:`chain`.
+    """
+    p, r = sections.c1.size, sections.c.size
+    basis = evaluate(sections, s, direct)
+    m = basis.shape[1]
+    columns = np.empty((s.size, m + sections.order), dtype=np.complex128)
+    columns[:, :m] = basis
+    across = basis[:, p : 2 * p]
+    np.multiply(basis[:, :p], across, out=columns[:, m : m + p])
+    np.multiply(across, across, out=columns[:, m + p : m + 2 * p])
+    np.square(basis[:, 2 * p : 2 * p + r], out=columns[:, m + 2 * p :])
+    return columns
+
+
+def chain(sections: Sections, coefficients: FloatArray) -> tuple[FloatArray, FloatArray]:
+    """Express the derivatives of the model by the pole parameters in the columns evaluated.
+
+    Parameters
+    ----------
+    sections : Sections
+        The poles.
+    coefficients : (K, m) float ndarray
+        Coefficients of the basis; products with √|c0| are what is held.
+
+    Returns
+    -------
+    slopes : (K, order, order) float ndarray
+        Coefficients of the derivative functions: with g = (a·s + b√|c0|)/q the response of a
+        section, ∂g/∂c1 = −s·g/q and ∂g/∂c0 = −g/q.
+    basis : (K, m, order) float ndarray
+        Coefficients of the basis itself, which enters since s²/q² = 1/q − (c1·s + c0)/q².
+    """
+    channels, m = coefficients.shape
+    p, n = sections.c1.size, sections.order
+    weight = sections.weights()
+    a, b = coefficients[:, :p], coefficients[:, p : 2 * p]
+    one, two, tail = np.arange(p), np.arange(p, 2 * p), np.arange(2 * p, n)
+    slopes, basis = np.zeros((channels, n, n)), np.zeros((channels, m, n))
+    slopes[:, one, one] = a * sections.c1 / weight - b
+    slopes[:, two, one] = a * sections.c0 / weight**2
+    basis[:, two, one] = -a / weight
+    slopes[:, one, two] = -a / weight
+    slopes[:, two, two] = -b / weight
+    slopes[:, tail, tail] = -coefficients[:, 2 * p : n]
+    return slopes, basis
 
 
 def section_columns(sections: Sections, index: int) -> list[int]:
-    """Return the basis columns that belong to one section."""
+    """Return the basis columns of one section, which are also its places among the parameters."""
     p = sections.c1.size
     return [index, p + index] if index < p else [p + index]
-
-
-def section_parameters(sections: Sections, index: int) -> list[int]:
-    """Return the entries of the parameter vector that belong to one section."""
-    return section_columns(sections, index)
 
 
 def residues(sections: Sections, coefficients: FloatArray) -> ComplexArray:

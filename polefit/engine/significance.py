@@ -16,9 +16,23 @@ from typing import NamedTuple
 import numpy as np
 import scipy.stats
 
-from polefit.engine.blocks import Block, ComplexArray, FloatArray, weighted
-from polefit.engine.projection import Solution, jacobian, raw_jacobian
-from polefit.engine.sections import Sections, evaluate, from_poles, section_columns
+from polefit.engine.blocks import (
+    Block,
+    ComplexArray,
+    FloatArray,
+    pieces,
+    pulled_back,
+    weighted_parts,
+)
+from polefit.engine.projection import Projected, Solution, residual
+from polefit.engine.sections import (
+    Sections,
+    chain,
+    evaluate,
+    evaluate_with_slopes,
+    from_poles,
+    section_columns,
+)
 
 
 class Linear(NamedTuple):
@@ -45,30 +59,24 @@ class Information(NamedTuple):
         Of the pole parameters, linear parameters marginalised.
     linear : tuple of Linear
         One for each block.
-    jacobians : tuple of (K, 2N, order) float ndarray
-        Projected Jacobians.
     """
 
     poles: FloatArray
     linear: tuple[Linear, ...]
-    jacobians: tuple[FloatArray, ...]
 
 
-def information(blocks: Sequence[Block], solution: Solution) -> Information:
+def information(solution: Solution) -> Information:
     """Collect the Fisher information of a solution."""
     n = solution.sections.order
     total = np.zeros((n, n))
     linear = []
-    jacobians = jacobian(blocks, solution)
-    for block, part, projected in zip(blocks, solution.parts, jacobians, strict=True):
-        flat = projected.reshape(part.residual.size, n)
+    for part in solution.parts:
+        slopes, along = chain(solution.sections, part.coefficients)
+        flat = (part.inner @ slopes).reshape(-1, n)
         total += flat.T @ flat
-        identity = np.broadcast_to(np.eye(part.r.shape[1]), part.r.shape)
-        inverse = np.linalg.solve(part.r, identity)
-        raw = raw_jacobian(block, solution.sections, part)
-        slope = inverse @ (part.q.transpose(0, 2, 1) @ raw)
-        linear.append(Linear(inverse, slope))
-    return Information(total, tuple(linear), tuple(jacobians))
+        inverse = np.linalg.solve(part.factor, np.eye(part.factor.shape[1])[np.newaxis])
+        linear.append(Linear(inverse, inverse @ (part.coupling @ slopes) + along))
+    return Information(total, tuple(linear))
 
 
 def invert(matrix: FloatArray) -> FloatArray:
@@ -104,47 +112,50 @@ class Scores(NamedTuple):
     spared: FloatArray
 
 
-def section_scores(solution: Solution, info: Information) -> Scores:
+def section_scores(blocks: Sequence[Block], solution: Solution, info: Information) -> Scores:
     """Return how much each section stands out of the noise, with and without its best samples."""
     count = solution.sections.count
     full, spared = np.zeros(count), np.zeros(count)
     for index in range(count):
         full[index] = _section_score(solution, info, index)
         spared[index] = full[index]
-        if _narrow(solution, index):
-            spared[index] *= 1 - _concentration(solution, info, index)
+        if full[index] > 0 and _narrow(blocks, solution.sections, index):
+            spared[index] *= 1 - _concentration(blocks, solution, info, index)
     return Scores(full, spared)
 
 
-def _narrow(solution: Solution, index: int) -> bool:
+def _narrow(blocks: Sequence[Block], sections: Sections, index: int) -> bool:
     """Tell whether a pair is so narrow that a few samples alone could have made it."""
-    sections = solution.sections
     if index >= sections.c1.size:
         return False
     omega = math.sqrt(max(sections.c0[index] - sections.c1[index] ** 2 / 4, 0.0))
-    width = abs(sections.c1[index])
     steps = []
-    for part in solution.parts:
-        axis = part.basis.s.imag
+    for block in blocks:
+        axis = block.s.imag
         at = int(np.clip(np.searchsorted(axis, omega), 1, axis.size - 1))
         steps.append(axis[at] - axis[at - 1])
-    return width < NARROW_STEPS * float(min(steps))
+    return abs(float(sections.c1[index])) < NARROW_STEPS * float(min(steps))
 
 
-def _concentration(solution: Solution, info: Information, index: int) -> float:
+def _concentration(
+    blocks: Sequence[Block], solution: Solution, info: Information, index: int
+) -> float:
     """Share of a section's evidence that its most telling samples carry."""
     columns = section_columns(solution.sections, index)
     energies = []
-    for part, linear in zip(solution.parts, info.linear, strict=True):
+    for block, part, linear in zip(blocks, solution.parts, info.linear, strict=True):
         rows = linear.inverse[:, columns, :]
         covariance = rows @ rows.transpose(0, 2, 1)
         covariance = covariance + 1e-14 * np.trace(covariance, axis1=1, axis2=2)[
             :, np.newaxis, np.newaxis
         ] * np.eye(len(columns))
         solved = np.linalg.solve(covariance, part.coefficients[:, columns, np.newaxis])
-        seen = (part.q @ (rows.transpose(0, 2, 1) @ solved))[:, :, 0]
-        points = seen.shape[1] // 2
-        energies.append(np.sum(seen[:, :points] ** 2 + seen[:, points:] ** 2, axis=0))
+        direction = (linear.inverse @ (rows.transpose(0, 2, 1) @ solved))[:, :, 0]
+        for piece in pieces(block):
+            basis = evaluate(solution.sections, piece.s, solution.direct)
+            seen = weighted_parts(piece, direction @ basis.T)
+            half = seen.shape[1] // 2
+            energies.append(np.sum(seen[:, :half] ** 2 + seen[:, half:] ** 2, axis=0))
     energy = np.concatenate(energies)
     total = float(energy.sum())
     if not total > 0 or energy.size <= SPARED_SAMPLES:
@@ -212,43 +223,76 @@ def scan(
     """
     count = trial_poles.size
     trial: Sections = from_poles(trial_poles)
-    scale = trial.weights()
-    # residue r = x + jy  ->  2x·s/q − 2(x·Re p + y·Im p)/q
-    gain = np.zeros(count)
-    rows: list[FloatArray] = []
     pole_covariance = invert(info.poles)
-    for block, part, projected in zip(blocks, solution.parts, info.jacobians, strict=True):
-        columns = evaluate(trial, block.s, 0).columns
+    gain = np.zeros(count)
+    found: list[FloatArray] = []
+    for block, part, linear in zip(blocks, solution.parts, info.linear, strict=True):
+        products = _products(block, solution, part, trial, trial_poles)
+        m = part.factor.shape[1]
+        tied = linear.inverse.transpose(0, 2, 1) @ products.with_model[:, :m]
+        slopes, _ = chain(solution.sections, part.coefficients)
+        free = products.with_model[:, m:] - part.coupling.transpose(0, 2, 1) @ tied
+        shared = slopes.transpose(0, 2, 1) @ free
+        moved = pole_covariance @ shared
+        own = products.own - np.sum(tied**2, axis=1) - np.sum(shared * moved, axis=1)
+        first, second = np.s_[:, :, :count], np.s_[:, :, count:]
+        cross = (
+            products.cross
+            - np.sum(tied[first] * tied[second], axis=1)
+            - np.sum(shared[first] * moved[second], axis=1)
+        )
+        matrix = np.empty((block.channels, count, 2, 2))
+        matrix[..., 0, 0], matrix[..., 1, 1] = own[:, :count], own[:, count:]
+        matrix[..., 0, 1] = matrix[..., 1, 0] = cross
+        found.append(matrix)
+        slope = products.with_residual
+        gain += _gain(matrix, slope[:, :count], slope[:, count:]).sum(axis=0)
+    return Scan(gain, np.concatenate(found))
+
+
+class _Products(NamedTuple):
+    """Weighted inner products of trial columns, which stand for Re and Im of C residues."""
+
+    own: FloatArray  # (K, 2C) with themselves
+    cross: FloatArray  # (K, C) between the two columns of a residue
+    with_model: FloatArray  # (K, m + order, 2C) with the basis and its derivative functions
+    with_residual: FloatArray  # (K, 2C)
+
+
+def _products(
+    block: Block, solution: Solution, part: Projected, trial: Sections, poles: ComplexArray
+) -> _Products:
+    """Accumulate the products over the pieces of a block, all channels at once."""
+    channels, count = block.channels, poles.size
+    inner = part.factor.shape[1] + solution.sections.order
+    own, cross = np.zeros((channels, 2 * count)), np.zeros((channels, count))
+    with_model = np.zeros((channels, inner, 2 * count))
+    with_residual = np.zeros((channels, 2 * count))
+    scale = trial.weights()
+    for piece in pieces(block):
+        columns = evaluate(trial, piece.s, 0)
         along, across = columns[:, :count], columns[:, count:] / scale
-        real = 2 * along - 2 * trial_poles.real * across
-        imaginary = -2 * trial_poles.imag * across
-        for k in range(block.channels):
-            one = _channel(block, k)
-            both = weighted(one, np.concatenate((real, imaginary), axis=1))[0]
-            both -= part.q[k] @ (part.q[k].T @ both)
-            shared = projected[k].T @ both
-            gram = np.einsum("ri,ri->i", both, both)
-            cross = np.einsum("ri,ri->i", both[:, :count], both[:, count:])
-            tied = pole_covariance @ shared
-            gram = gram - np.einsum("ai,ai->i", shared, tied)
-            cross = cross - np.einsum("ai,ai->i", shared[:, :count], tied[:, count:])
-            slope = both.T @ part.residual[k]
-            matrix = np.empty((count, 2, 2))
-            matrix[:, 0, 0], matrix[:, 1, 1] = gram[:count], gram[count:]
-            matrix[:, 0, 1] = matrix[:, 1, 0] = cross
-            rows.append(matrix)
-            gain += _gain(matrix, slope[:count], slope[count:])
-    return Scan(gain, np.stack(rows))
-
-
-def _channel(block: Block, k: int) -> Block:
-    turn = None if block.turn is None else block.turn[k : k + 1]
-    pick = slice(k, k + 1)
-    return Block(block.s, block.values[pick], block.weight[pick], turn, block.target[pick])
+        # residue x + jy  ->  x·(2s/q − 2·Re p/q) − y·2·Im p/q
+        x = np.concatenate((2 * along - 2 * poles.real * across, -2 * poles.imag * across), axis=1)
+        model = evaluate_with_slopes(solution.sections, piece.s, solution.direct)
+        rest = residual(piece, solution, part)
+        # Σ w₁²·Re(t·a)·Re(t·b) + w₂²·Im(t·a)·Im(t·b) = Σ even·Re(ā·b) + Re(odd·a·b)
+        even = (piece.weight[:, 0] ** 2 + piece.weight[:, 1] ** 2) / 2
+        odd = ((piece.weight[:, 0] ** 2 - piece.weight[:, 1] ** 2) / 2).astype(np.complex128)
+        if piece.turn is not None:
+            odd = odd * piece.turn**2
+        left, right = x[:, :count], x[:, count:]
+        own += even @ np.abs(x) ** 2 + (odd @ x**2).real
+        cross += even @ (left.conj() * right).real + (odd @ (left * right)).real
+        both = even[:, :, np.newaxis] * model.conj() + odd[:, :, np.newaxis] * model
+        stacked = np.concatenate((both.real, -both.imag), axis=1).transpose(0, 2, 1)
+        with_model += stacked @ np.concatenate((x.real, x.imag))
+        with_residual += (pulled_back(piece, rest) @ x).real
+    return _Products(own, cross, with_model, with_residual)
 
 
 def _gain(matrix: FloatArray, x: FloatArray, y: FloatArray) -> FloatArray:
-    a, b, c = matrix[:, 0, 0], matrix[:, 1, 1], matrix[:, 0, 1]
+    a, b, c = matrix[..., 0, 0], matrix[..., 1, 1], matrix[..., 0, 1]
     determinant = a * b - c * c
     good = determinant > 1e-9 * np.abs(a * b)
     safe = np.where(good, determinant, 1.0)

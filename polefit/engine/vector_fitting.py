@@ -14,7 +14,8 @@ from collections.abc import Sequence
 import numpy as np
 import scipy.linalg
 
-from polefit.engine.blocks import Block, ComplexArray, FloatArray, weighted
+from polefit.engine.blocks import Block, FloatArray, pieces, weighted
+from polefit.engine.projection import cholesky
 from polefit.engine.sections import Sections, evaluate, from_poles
 
 
@@ -66,19 +67,14 @@ def relocate(blocks: Sequence[Block], sections: Sections, direct: int) -> Sectio
         As many poles as before, wherever they fall.
     """
     unknowns = sections.order + 1
-    triangles = []
-    for block in blocks:
-        basis = evaluate(sections, block.s, direct)
-        common = basis.columns
-        sigma = np.concatenate((common[:, : sections.order], np.ones((block.s.size, 1))), axis=1)
-        triangles.append(_reduced(block, common, sigma, unknowns))
+    triangles = [_reduced(block, sections, direct) for block in blocks]
     constraint = np.zeros(unknowns)
     total = 0.0
     for block in blocks:
-        basis = evaluate(sections, block.s, 0)
-        constraint[:-1] += basis.columns.real.sum(axis=0)
+        for piece in pieces(block):
+            constraint[:-1] += evaluate(sections, piece.s, 0).real.sum(axis=0)
         constraint[-1] += block.s.size
-        total += float(np.sum(block.target**2))
+        total += float(np.vdot(block.target, block.target))
     stacked = np.concatenate(triangles, axis=0)
     scale = np.sqrt(total) / constraint[-1]
     system = np.concatenate((stacked, scale * constraint[np.newaxis]), axis=0)
@@ -93,13 +89,34 @@ def relocate(blocks: Sequence[Block], sections: Sections, direct: int) -> Sectio
     return zeros_of_weighting(sections, weights)
 
 
-def _reduced(block: Block, common: ComplexArray, sigma: ComplexArray, unknowns: int) -> FloatArray:
+def _reduced(block: Block, sections: Sections, direct: int) -> FloatArray:
     """Triangular factors that remain of the shared unknowns, channels stacked."""
-    left = weighted(block, common)
-    right = weighted(block, -block.values[:, :, np.newaxis] * sigma)
-    factor = np.linalg.qr(np.concatenate((left, right), axis=2), mode="r")
-    rest: FloatArray = factor[:, left.shape[2] :, left.shape[2] :]
-    return rest.reshape(-1, unknowns)
+    n = sections.order
+    grams, parts = None, pieces(block)
+    for piece in parts:
+        rows = _rows(piece, sections, direct)
+        more = rows.transpose(0, 2, 1) @ rows
+        grams = more if grams is None else grams + more
+    assert grams is not None
+    factor = cholesky(grams)
+    if factor is None:
+        triangles = [np.linalg.qr(_rows(piece, sections, direct), mode="r") for piece in parts]
+        factor = triangles[0]
+        if len(triangles) > 1:
+            factor = np.linalg.qr(np.concatenate(triangles, axis=1), mode="r")
+    return factor[:, n + direct :, n + direct :].reshape(-1, n + 1)
+
+
+def _rows(block: Block, sections: Sections, direct: int) -> FloatArray:
+    """Weighted rows of the basis and of −H times the weighting function's columns."""
+    basis = evaluate(sections, block.s, direct)
+    m = basis.shape[1]
+    columns = np.empty((block.channels, block.s.size, m + sections.order + 1), dtype=np.complex128)
+    columns[:, :, :m] = basis
+    minus = -block.values[:, :, np.newaxis]
+    np.multiply(minus, basis[:, : sections.order], out=columns[:, :, m:-1])
+    columns[:, :, -1:] = minus
+    return weighted(block, columns)
 
 
 def zeros_of_weighting(sections: Sections, weights: FloatArray) -> Sections:

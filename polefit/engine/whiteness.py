@@ -12,7 +12,7 @@ from typing import NamedTuple
 import numpy as np
 import scipy.stats
 
-from polefit.engine.projection import Projected
+from polefit.engine.blocks import FloatArray
 
 CHANCE = 1e-3
 """Probability with which white noise would be called coloured, over all channels."""
@@ -36,13 +36,13 @@ class Whiteness(NamedTuple):
     inflation: float
 
 
-def judge_whiteness(parts: Sequence[Projected]) -> Whiteness:
+def judge_whiteness(residuals: Sequence[FloatArray]) -> Whiteness:
     """Test the weighted residuals of all channels.
 
     Parameters
     ----------
-    parts : sequence of Projected
-        Their residuals, (K, 2N) each.
+    residuals : sequence of (K, 2N) float ndarray
+        One for each block.
 
     Returns
     -------
@@ -50,13 +50,13 @@ def judge_whiteness(parts: Sequence[Projected]) -> Whiteness:
     """
     statistic, freedom = 0.0, 0
     factors: list[float] = []
-    for part in parts:
-        channels, rows = part.residual.shape
+    for residual in residuals:
+        channels, rows = residual.shape
         points = rows // 2
         lags = min(10, points // 5)
         if lags < 1:
             continue
-        series = part.residual.reshape(channels, 2, points)
+        series = residual.reshape(channels, 2, points)
         energy = np.sum(series**2, axis=(1, 2))
         energy[energy == 0] = 1.0
         lag = np.arange(1, lags + 1)
