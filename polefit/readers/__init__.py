@@ -184,7 +184,21 @@ def _read(
     except MemoryError:
         what = "too large for the memory of this machine"
         raise FileError(what, "export fewer points or channels", file=name) from None
+    if format_.module in ("touchstone", "delimited") and _ends_within_a_line(content):
+        parsed = tuple(_perhaps_cut(one) for one in parsed)
     return tuple(_finished(one, format_, options, name, digest) for one in parsed)
+
+
+def _ends_within_a_line(content: Content) -> bool:
+    """Whether a text, of one or two bytes a character, lacks its last line end."""
+    return not bytes(content[-2:]).strip(b"\0").endswith((b"\n", b"\r"))
+
+
+def _perhaps_cut(parsed: Parsed) -> Parsed:
+    if parsed.format.startswith("Touchstone 2"):
+        return parsed  # [End] shows that it is whole
+    told = "no line end behind the last line: if the file is cut there, its last number is wrong"
+    return replace(parsed, warnings=(*parsed.warnings, told))
 
 
 def _parse(

@@ -9,7 +9,7 @@ from typing import cast
 from polefit.errors import AmbiguousFileError, ArgumentError, FormatError
 from polefit.readers.delimited_headings import Heading
 from polefit.readers.driven import Responses, Vector, responses_of
-from polefit.readers.reading import ReadOptions
+from polefit.readers.reading import REFERENCE_UNKNOWN, ReadOptions
 from polefit.responses import QUANTITIES, Channel, Quantity
 
 
@@ -216,9 +216,6 @@ def _reference(
             raise ArgumentError("reference_ohm: has no meaning for these data; leave it out")
         return None, ()
     if options.reference_ohm is None:
-        return None, (
-            "the reference resistance of the scattering parameters is not stated; "
-            "give it with reference_ohm= (--reference-ohm)",
-        )
+        return None, (REFERENCE_UNKNOWN,)
     ports = {name for c in channels for name in (c.output, c.input)}
     return (float(options.reference_ohm),) * len(ports), ()

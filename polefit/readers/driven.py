@@ -6,12 +6,16 @@ was driven is not in the file, so the user says it with ``driven=``.
 
 from __future__ import annotations
 
+import re
 from collections.abc import Sequence
 from dataclasses import dataclass
 
 from polefit.errors import AmbiguousFileError, ArgumentError, FormatError
 from polefit.readers.reading import ReadOptions
 from polefit.responses import Channel, Quantity
+
+_PARAMETER = re.compile(r"([syz])_(\d+)_(\d+)", re.IGNORECASE)
+_PARAMETERS: dict[str, Quantity] = {"s": "scattering", "y": "admittance", "z": "impedance"}
 
 
 @dataclass(frozen=True)
@@ -103,6 +107,56 @@ def responses_of(vectors: Sequence[Vector], options: ReadOptions) -> Responses:
     )
 
 
+def port_responses(vectors: Sequence[Vector], options: ReadOptions) -> Responses | None:
+    """Find the network parameters s_i_j, y_i_j, z_i_j that an S-parameter analysis saves.
+
+    Parameters
+    ----------
+    vectors : sequence of Vector
+        All vectors of the file.
+    options : ReadOptions
+        `quantity` chooses among them, scattering if it is not given; `select` is used.
+
+    Returns
+    -------
+    Responses or None
+        None if there are none, or if `driven` asks for the voltages beside them.
+
+    Raises
+    ------
+    ArgumentError
+        If the quantity is not among them.
+    """
+    matches = {i: _PARAMETER.fullmatch(v.name) for i, v in enumerate(vectors) if not v.current}
+    found = [(m[1].lower(), int(m[2]), int(m[3]), i) for i, m in matches.items() if m]
+    if options.driven is not None or not found:
+        return None
+    quantity = options.quantity or "scattering"
+    chosen = sorted(row for row in found if _PARAMETERS[row[0]] == quantity)
+    others = {q: None for letter, *_ in found if (q := _PARAMETERS[letter]) != quantity}
+    if not chosen:
+        raise ArgumentError(f"quantity: the file holds no {quantity}; it holds {', '.join(others)}")
+    channels = [Channel(f"port{out}", f"port{drive}") for _, out, drive, _ in chosen]
+    kept = list(range(len(chosen)))
+    if options.select is not None:
+        for name in options.select:
+            if not any(name in (c.output, str(c)) for c in channels):
+                listed = ", ".join(dict.fromkeys(c.output for c in channels))
+                raise ArgumentError(f"select: no channel {name!r}; the file holds {listed}")
+        kept = [k for k in kept if {channels[k].output, str(channels[k])} & set(options.select)]
+    told = f"{quantity} parameters of the analysis taken"
+    if others:
+        told += f"; {' and '.join(others)} are there too, see quantity= (--quantity)"
+    return Responses(
+        tuple(chosen[k][3] for k in kept),
+        tuple(channels[k] for k in kept),
+        _PARAMETERS[chosen[0][0]],
+        1.0,
+        None,
+        (told,),
+    )
+
+
 def _impedances(vectors: Sequence[Vector], node: int | None, options: ReadOptions) -> Responses:
     if node is None:
         raise _not_there("driven", str(options.driven), vectors, current=False)
@@ -170,7 +224,8 @@ def _outputs(vectors: Sequence[Vector], options: ReadOptions, *, current: bool) 
     return tuple(
         i
         for i, vector in enumerate(vectors)
-        if vector.current == current and (not current or vector.name[:1] in "vV")
+        if vector.current == current
+        and (vector.name[:1] in "vV" if current else not _PARAMETER.fullmatch(vector.name))
     )
 
 

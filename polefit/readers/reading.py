@@ -11,6 +11,11 @@ from polefit.errors import ArgumentError
 from polefit.precision import Printed
 from polefit.responses import QUANTITIES, ResponseSet
 
+REFERENCE_UNKNOWN = (
+    "the reference resistance of the scattering parameters is not stated; "
+    "give it with reference_ohm= (--reference-ohm)"
+)
+
 
 @dataclass(frozen=True)
 class Parsed:

@@ -11,11 +11,11 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from polefit.errors import AmbiguousFileError, FormatError
+from polefit.errors import AmbiguousFileError, ArgumentError, FormatError
 from polefit.precision import Precision, Printed
-from polefit.readers.driven import Responses, Vector, responses_of
+from polefit.readers.driven import Responses, Vector, port_responses, responses_of
 from polefit.readers.large_files import Content
-from polefit.readers.reading import Parsed, ReadOptions, printed_form
+from polefit.readers.reading import REFERENCE_UNKNOWN, Parsed, ReadOptions, printed_form
 from polefit.readers.spice_raw_numbers import Numbers, ascii_numbers, binary_numbers
 from polefit.responses import ComplexArray, FloatArray, ResponseSet
 
@@ -72,7 +72,8 @@ def parse(content: Content, options: ReadOptions, *, stem: str) -> Parsed:
     content : bytes-like
         The whole file.
     options : ReadOptions
-        `driven` is needed; `quantity` and `select` are honoured.
+        `driven` is needed unless the file holds network parameters; `quantity`, `select` and,
+        for scattering, `reference_ohm` are honoured.
     stem : str
         Not used: nodes are named in the file.
 
@@ -89,26 +90,47 @@ def parse(content: Content, options: ReadOptions, *, stem: str) -> Parsed:
     ArgumentError
         If an option does not fit the file.
     """
-    options.refuse_unused(("driven",), "SPICE raw")
+    options.refuse_unused(("driven", "reference_ohm"), "SPICE raw")
     _refuse_wide(content)
     numbers, plot, others, warnings = _ac_plot(content, options)
     frequency = numbers.frequency
     _check_rising(frequency, numbers.place_of)
-    how = responses_of(_vectors(plot), options)
+    how = _how(plot, options)
     how, silent = _without_silent(how, numbers, options)
+    reference, unknown = _reference(how, options)
     values = _values(numbers, how)
     responses = ResponseSet(
         frequency_hz=frequency,
         values=values,
         channels=how.channels,
         quantity=how.quantity,
+        reference_ohm=reference,
         precision=_precision(numbers.tokens),
     )
     name = f"SPICE raw ({'binary' if plot.binary else 'ASCII'})"
     taken = [f"plot {plot.name!r} taken; {', '.join(map(repr, others))} left out"] if others else []
     assumptions = (*numbers.assumptions, *taken, *how.assumptions, *silent)
     mark = None if plot.binary else "."
-    return Parsed(responses, name, assumptions, tuple(warnings), decimal_mark=mark)
+    return Parsed(responses, name, assumptions, (*warnings, *unknown), decimal_mark=mark)
+
+
+def _how(plot: Plot, options: ReadOptions) -> Responses:
+    vectors = _vectors(plot)
+    return port_responses(vectors, options) or responses_of(vectors, options)
+
+
+def _reference(
+    how: Responses, options: ReadOptions
+) -> tuple[tuple[float, ...] | None, tuple[str, ...]]:
+    """Take the reference of scattering parameters from the option; no raw file states it."""
+    if how.quantity != "scattering":
+        if options.reference_ohm is not None:
+            raise ArgumentError("reference_ohm: has no meaning for these data; leave it out")
+        return None, ()
+    if options.reference_ohm is None:
+        return None, (REFERENCE_UNKNOWN,)
+    ports = {name for c in how.channels for name in (c.output, c.input)}
+    return (options.reference_ohm,) * len(ports), ()
 
 
 def _refuse_wide(content: Content) -> None:
@@ -276,9 +298,9 @@ def _wanted_columns(plot: Plot, options: ReadOptions) -> tuple[int, ...]:
     """Find the vectors behind the frequency that are needed; none of a foreign plot."""
     if not plot.over_frequency:
         return ()
-    if options.driven is None:
+    if options.driven is None and port_responses(_vectors(plot), options) is None:
         return ()
-    how = responses_of(_vectors(plot), options)
+    how = _how(plot, options)
     needed = [*how.columns, *([] if how.divide_by is None else [how.divide_by])]
     return tuple(dict.fromkeys(needed))
 
@@ -287,7 +309,7 @@ def _without_silent(
     how: Responses, numbers: Numbers, options: ReadOptions
 ) -> tuple[Responses, list[str]]:
     """Leave out nodes that are zero at every point (AC grounds), unless they were selected."""
-    if options.select is not None:
+    if options.select is not None or how.quantity == "scattering":
         return how, []
     places = {vector: at for at, vector in enumerate(numbers.columns)}
     silent = [i for i in how.columns if not numbers.values[:, places[i]].any()]

@@ -254,6 +254,13 @@ class _AsciiReader:
                 break
         if count != self.plot.points or len(rest) or not count:
             raise self._wrong_count(count)
+        if bytes(self.content[self.end - 1 : self.end]) not in (b"\n", b"\r"):
+            # 1.5e-0 of 1.5e-09 would be taken for 1.5.
+            raise FormatError(
+                "the last line has no line end: its last number may be cut",
+                f"{_AGAIN}, or add a line end if it is whole",
+                line=self.end_line,
+            )
 
     def _block(self) -> tuple[bytes, bool]:
         """Return the next whole lines of the plot, and whether more may follow."""
