@@ -211,7 +211,7 @@ def _loops(modes: Sequence[Mode]) -> tuple[Loop, ...]:
 
 
 def _detection(estimation: Estimation, scale: float) -> Detection:
-    frequencies = trial_grid(estimation.blocks, 100)
+    frequencies = trial_grid(estimation.blocks, 60)
     limits = residue_limits(
         estimation.blocks,
         estimation.solution,

@@ -12,7 +12,7 @@ import scipy.stats
 from polefit.engine.blocks import ComplexArray, FloatArray
 from polefit.engine.estimation import Estimation, freedom
 from polefit.engine.propagation import pole_estimates
-from polefit.engine.sections import residues, section_columns
+from polefit.engine.sections import Sections, residues, section_columns
 from polefit.engine.significance import invert, threshold
 from polefit.engine.stable_model import StableModel, compare_with_stable
 from polefit.estimates import Estimate
@@ -70,10 +70,11 @@ def judge(
     confidence: float,
 ) -> Judged:
     """Tell modes from background and give each mode its verdict."""
+    covariance = invert(estimation.info.poles)
+    covariance = covariance * estimation.level * estimation.whiteness.inflation
     found = [
-        c
+        _candidate(estimation, covariance, i, scale, band_hz)
         for i in range(estimation.solution.sections.count)
-        for c in [_candidate(estimation, i, scale, band_hz)]
     ]
     claimed, background = _claim(found, estimation, scale)
     deciding = sum(c.in_band for c in claimed)
@@ -99,11 +100,13 @@ def _danger(mode: Mode) -> tuple[int, int, float]:
 
 
 def _candidate(
-    estimation: Estimation, index: int, scale: float, band_hz: tuple[float, float]
+    estimation: Estimation,
+    covariance: FloatArray,
+    index: int,
+    scale: float,
+    band_hz: tuple[float, float],
 ) -> Candidate:
     sections = estimation.solution.sections
-    covariance = invert(estimation.info.poles)
-    covariance = covariance * estimation.level * estimation.whiteness.inflation
     rows = section_columns(sections, index)
     own = covariance[np.ix_(rows, rows)]
     if len(rows) == 2:
@@ -362,11 +365,8 @@ def residue_std(estimation: Estimation) -> FloatArray:
     return np.concatenate(per_block, axis=1)
 
 
-def _residue_gradient(coefficients: FloatArray, sections: object, index: int) -> FloatArray:
+def _residue_gradient(coefficients: FloatArray, sections: Sections, index: int) -> FloatArray:
     """Differentiate (Re, Im) of a residue by (coefficients, pole parameters), for K channels."""
-    from polefit.engine.sections import Sections
-
-    assert isinstance(sections, Sections)
     channels = coefficients.shape[0]
     if index >= sections.c1.size:
         gradient = np.zeros((channels, 2, 2))

@@ -1,4 +1,4 @@
-"""From response sets to what the engine takes: checks, merging of axes, scaling."""
+"""From response sets to what the engine takes: checks, channels that say nothing, scaling."""
 
 from __future__ import annotations
 
@@ -68,7 +68,6 @@ def prepare(
                 f"{one.channels[0]}: {one.points} points cannot carry a verdict; "
                 f"simulate at least {FEWEST_POINTS} in the band"
             )
-    usable = _merged(usable)
     scale = 2 * np.pi * max(one.band_hz[1] for one in usable)
     return Prepared(usable, tuple(_measured(one, scale) for one in usable), scale, tuple(notes))
 
@@ -130,11 +129,6 @@ def _columns(one: ResponseSet, keep: list[int]) -> ResponseSet:
         channels=tuple(one.channels[i] for i in keep),
         sample_std=None if one.sample_std is None else one.sample_std[:, keep],
     )
-
-
-def _merged(sets: tuple[ResponseSet, ...]) -> tuple[ResponseSet, ...]:
-    """Keep the sets as they are; the engine takes one block for each."""
-    return sets
 
 
 def _measured(one: ResponseSet, scale: float) -> Measured:

@@ -14,13 +14,14 @@ import numpy as np
 from polefit.engine.blocks import Block, ComplexArray, FloatArray, make_block
 from polefit.engine.noise import NoiseLaw, estimate, first_guess, variance
 from polefit.engine.order import (
-    Found,
+    TRIALS,
     count_places,
     largest_order,
     parameters,
     samples,
     search,
     split,
+    take_up,
     trial_grid,
     variance_factor,
 )
@@ -29,6 +30,13 @@ from polefit.engine.refinement import refine
 from polefit.engine.sections import from_poles
 from polefit.engine.significance import Information, information, scan, section_scores
 from polefit.engine.whiteness import Whiteness, judge_whiteness
+
+
+RESHAPED = 1.5
+"""Weights that change by more than this among themselves call for a new search of the order."""
+UNCHANGED = 1.02
+"""Weights that change by less leave estimates where they are, within a small part of their
+uncertainty."""
 
 
 class Measured(NamedTuple):
@@ -117,11 +125,14 @@ def estimate_model(
     blocks = _weigh(data, laws, None)
     progress("searching the order")
     found = search(blocks)
-    for _ in range(2):
+    for _ in range(3):
         progress("estimating the noise")
         laws = _laws(data, blocks, found.solution)
-        blocks = _weigh(data, laws, found.solution)
-        found = _again(blocks, found)
+        before, blocks = blocks, _weigh(data, laws, found.solution)
+        change = _change(before, blocks)
+        found = search(blocks, found.richest) if change > RESHAPED else take_up(blocks, found)
+        if change < UNCHANGED:
+            break
     solution = refine(
         blocks,
         solve(blocks, found.solution.sections, found.solution.direct),
@@ -153,9 +164,10 @@ def estimate_model(
     )
 
 
-def _again(blocks: tuple[Block, ...], found: Found) -> Found:
-    """Search again from the rich model, unless the new weights hardly change anything."""
-    return search(blocks, start=found.richest)
+def _change(before: Sequence[Block], after: Sequence[Block]) -> float:
+    """Return the factor by which weights typically changed relative to each other."""
+    steps = [np.log(new.weight / old.weight) for old, new in zip(before, after, strict=True)]
+    return float(np.exp(np.std(np.concatenate([step.ravel() for step in steps]))))
 
 
 def _models(data: Sequence[Measured], solution: Solution) -> list[ComplexArray]:
@@ -199,7 +211,7 @@ def _laws(
 
 def go_past(blocks: Sequence[Block], solution: Solution, info: Information) -> Solution:
     """Add two pairs where they help most, wanted or not, to see what depends on the order."""
-    frequencies = trial_grid(blocks, 100)
+    frequencies = trial_grid(blocks, TRIALS)
     if solution.sections.order + 4 > largest_order(blocks) or frequencies.size < 4:
         return solution
     gap = np.gradient(frequencies)
@@ -210,7 +222,7 @@ def go_past(blocks: Sequence[Block], solution: Solution, info: Information) -> S
     second = int(np.argmax(np.where(away, gain, -1.0)))
     richer = solution.sections.join(from_poles(poles[[first, second]]))
     return split(
-        blocks, refine(blocks, solve(blocks, richer, solution.direct), iterations=15, tolerance=0.1)
+        blocks, refine(blocks, solve(blocks, richer, solution.direct), iterations=8, tolerance=0.1)
     )
 
 

@@ -30,9 +30,12 @@ from polefit.engine.vector_fitting import relocate, starting_sections
 KEEP_CHANCE = 0.01
 """Chance per run that a section fitted to pure noise is kept in the model."""
 FIRST_ORDER = 12
+LADDER = (20, 32, 48, 72, 96)
 LARGEST_ORDER = 96
 RELOCATIONS = 5
 GROWTH_TRIALS = 8
+TRIALS = 64
+"""Frequencies at which a further pair is tried."""
 
 
 class Found(NamedTuple):
@@ -76,17 +79,28 @@ def search(blocks: Sequence[Block], start: Solution | None = None) -> Found:
         richest = _rich_fit(blocks)
     else:
         richest = refine(blocks, solve(blocks, start.sections, 2), iterations=10, tolerance=0.1)
-    places = count_places(blocks)
-    pruned = prune(blocks, richest, places)
-    grown = grow(blocks, pruned, places)
-    if grown.sections.order > pruned.sections.order:
-        grown = prune(blocks, grown, places)
-    final = drop_direct(blocks, grown)
+    final = drop_direct(blocks, _settled(blocks, richest))
     reason = (
         f"pruned from {richest.sections.order} poles; removing any further one raises the misfit "
-        f"more than noise explains (chance {KEEP_CHANCE:g} over {places} places)"
+        f"more than noise explains (chance {KEEP_CHANCE:g} over {count_places(blocks)} places)"
     )
     return Found(final, richest, reason)
+
+
+def take_up(blocks: Sequence[Block], found: Found) -> Found:
+    """Adapt the outcome of a search to weights that have changed a little."""
+    start = solve(blocks, found.solution.sections, found.solution.direct)
+    return found._replace(
+        solution=_settled(blocks, refine(blocks, start, iterations=10, tolerance=0.1))
+    )
+
+
+def _settled(blocks: Sequence[Block], start: Solution) -> Solution:
+    """Prune, grow, and prune again what growing made superfluous."""
+    places = count_places(blocks)
+    pruned = prune(blocks, start, places)
+    grown = grow(blocks, pruned, places)
+    return prune(blocks, grown, places) if grown is not pruned else pruned
 
 
 def samples(blocks: Sequence[Block]) -> int:
@@ -121,16 +135,17 @@ def largest_order(blocks: Sequence[Block]) -> int:
 
 
 def _rich_fit(blocks: Sequence[Block]) -> Solution:
-    """Double the order until the criterion no longer improves."""
+    """Raise the order in large steps until the criterion no longer improves."""
     low = min(float(block.s[0].imag) for block in blocks)
     low = low or min(float(block.s[min(1, block.s.size - 1)].imag) for block in blocks)
     high = max(float(block.s[-1].imag) for block in blocks)
     most = largest_order(blocks)
-    order = min(FIRST_ORDER, most)
-    start = starting_sections(low, high, order)
+    start = starting_sections(low, high, min(FIRST_ORDER, most))
     best = _vector_fit(blocks, start)
-    while order < most:
-        order = min(2 * order, most)
+    for richer_order in LADDER:
+        order = min(richer_order, most)
+        if order <= best.sections.order:
+            break
         extra = starting_sections(low, high, order - best.sections.order)
         richer = _vector_fit(blocks, best.sections.join(extra))
         if _criterion(blocks, richer) >= _criterion(blocks, best):
@@ -152,7 +167,7 @@ def _vector_fit(blocks: Sequence[Block], start: Sections) -> Solution:
             if not improved:
                 break
     assert best is not None
-    return refine(blocks, split(blocks, best), iterations=6, tolerance=1.0)
+    return refine(blocks, split(blocks, best), iterations=5, tolerance=1.0)
 
 
 def split(blocks: Sequence[Block], solution: Solution) -> Solution:
@@ -170,12 +185,11 @@ def prune(blocks: Sequence[Block], start: Solution, places: int) -> Solution:
     real = threshold(channels, places, KEEP_CHANCE, columns=1)
     current = split(blocks, start)
     kept = np.zeros(current.sections.count, dtype=bool)
-    batch_allowed = True
+    largest_batch = current.sections.count
     while current.sections.count:
-        info = information(current)
         limit = np.where(np.arange(current.sections.count) < current.sections.c1.size, pair, real)
         level = variance_factor(blocks, current)
-        scores = section_scores(blocks, current, info)
+        scores = section_scores(blocks, current, information(current))
         score = scores.spared / level / limit
         glitch = scores.full / level > limit
         score[kept] = np.inf
@@ -183,22 +197,21 @@ def prune(blocks: Sequence[Block], start: Solution, places: int) -> Solution:
         weak = weak[score[weak] < 1.0]
         if weak.size == 0:
             break
-        take = weak[: max(1, weak.size // 2)] if batch_allowed else weak[:1]
+        take = weak[: max(1, min(weak.size, largest_batch))]
         mask = np.ones(current.sections.count, dtype=bool)
         mask[take] = False
         trial = solve(blocks, current.sections.keep(mask), current.direct)
-        trial = refine(blocks, trial, iterations=8, tolerance=0.1)
+        trial = refine(blocks, trial, iterations=10, tolerance=0.1)
         rise = (trial.misfit - current.misfit) / level
         allowed = float(limit[take].sum()) / (1 if take.size == 1 else 2)
         if rise < allowed or (take.size == 1 and glitch[take[0]]):
-            flat = split(blocks, trial)
-            kept = kept[mask] if flat is trial else np.zeros(flat.sections.count, dtype=bool)
-            current = flat
+            current = split(blocks, trial)
+            kept = np.zeros(current.sections.count, dtype=bool)
         elif take.size > 1:
-            batch_allowed = False
+            largest_batch = take.size // 2
         else:
             kept[take] = True
-    return refine(blocks, current, iterations=30, tolerance=1e-3)
+    return refine(blocks, current, iterations=30, tolerance=1e-2)
 
 
 def trial_grid(blocks: Sequence[Block], count: int) -> FloatArray:
@@ -215,7 +228,7 @@ def grow(blocks: Sequence[Block], start: Solution, places: int) -> Solution:
     channels = sum(block.channels for block in blocks)
     limit = threshold(channels, places, KEEP_CHANCE)
     current = start
-    frequencies = trial_grid(blocks, 120)
+    frequencies = trial_grid(blocks, TRIALS)
     info = information(current)
     for _ in range(GROWTH_TRIALS):
         if current.sections.order + 2 > largest_order(blocks) or frequencies.size < 2:
@@ -228,7 +241,9 @@ def grow(blocks: Sequence[Block], start: Solution, places: int) -> Solution:
         trial = refine(blocks, trial, iterations=20, tolerance=0.1)
         trial_info = information(trial)
         own = trial.sections.c1.size - 1
-        if section_scores(blocks, trial, trial_info).spared[own] < limit * variance_factor(blocks, trial):
+        if section_scores(blocks, trial, trial_info).spared[own] < limit * variance_factor(
+            blocks, trial
+        ):
             frequencies = frequencies[np.abs(frequencies - place.imag) > 3 * _gap(frequencies)]
             continue
         flat = split(blocks, trial)
@@ -245,14 +260,11 @@ def _best_place(
     blocks: Sequence[Block], current: Solution, info: Information, frequencies: FloatArray
 ) -> tuple[complex, float]:
     gap = np.gradient(frequencies) if frequencies.size > 1 else frequencies
-    best = 0j, 0.0
-    for width in (1.0, 4.0):
-        poles = -np.minimum(width * gap, 0.5 * frequencies) + 1j * frequencies
-        result = scan(blocks, current, info, poles)
-        at = int(np.argmax(result.gain))
-        if result.gain[at] > best[1]:
-            best = complex(poles[at]), float(result.gain[at])
-    return best
+    narrow, wide = (np.minimum(width * gap, 0.5 * frequencies) for width in (1.0, 4.0))
+    poles = -np.concatenate((narrow, wide)) + 1j * np.concatenate((frequencies, frequencies))
+    gain = scan(blocks, current, info, poles).gain
+    at = int(np.argmax(gain))
+    return complex(poles[at]), float(gain[at])
 
 
 def drop_direct(blocks: Sequence[Block], start: Solution) -> Solution:

@@ -15,6 +15,7 @@ from typing import NamedTuple
 
 import numpy as np
 import scipy.stats
+from numpy.typing import NDArray
 
 from polefit.engine.blocks import (
     Block,
@@ -114,14 +115,55 @@ class Scores(NamedTuple):
 
 def section_scores(blocks: Sequence[Block], solution: Solution, info: Information) -> Scores:
     """Return how much each section stands out of the noise, with and without its best samples."""
-    count = solution.sections.count
-    full, spared = np.zeros(count), np.zeros(count)
-    for index in range(count):
-        full[index] = _section_score(solution, info, index)
-        spared[index] = full[index]
-        if full[index] > 0 and _narrow(blocks, solution.sections, index):
+    sections = solution.sections
+    p, n = sections.c1.size, sections.order
+    pairs = np.stack((np.arange(p), np.arange(p, 2 * p)), axis=1)
+    full = np.concatenate(
+        (_wald(solution, info, pairs), _wald(solution, info, np.arange(2 * p, n)[:, np.newaxis]))
+    )
+    spared = full.copy()
+    for index in range(p):
+        if full[index] > 0 and _narrow(blocks, sections, index):
             spared[index] *= 1 - _concentration(blocks, solution, info, index)
     return Scores(full, spared)
+
+
+def _wald(solution: Solution, info: Information, columns: NDArray[np.intp]) -> FloatArray:
+    """Wald χ² of the coefficients in each row of `columns`, (J, 1 or 2), own poles held.
+
+    With c the coefficients of channel k, V their covariance at given poles and S their slope by
+    the other poles: Σ cᵀV⁻¹c less what moving the other poles can explain.
+    """
+    several, wide = columns.shape
+    if several == 0:
+        return np.zeros(0)
+    n = solution.sections.order
+    other = np.ones((several, n))
+    other[np.arange(several)[:, np.newaxis], columns] = 0.0
+    direct, pull = np.zeros(several), np.zeros((several, n))
+    stiffness = info.poles * other[:, :, np.newaxis] * other[:, np.newaxis, :]
+    for part, linear in zip(solution.parts, info.linear, strict=True):
+        rows = linear.inverse[:, columns, :]
+        covariance = rows @ rows.swapaxes(-1, -2)
+        size = np.sqrt(np.diagonal(covariance, axis1=-2, axis2=-1))
+        size[size == 0] = 1.0
+        c = part.coefficients[:, columns] / size
+        scaled = covariance / size[..., :, np.newaxis] / size[..., np.newaxis, :]
+        scaled = scaled + 1e-14 * np.eye(wide)
+        slope = linear.slope[:, columns, :] / size[..., np.newaxis] * other[:, np.newaxis, :]
+        solved = np.linalg.solve(scaled, np.concatenate((c[..., np.newaxis], slope), axis=-1))
+        direct += np.sum(c * solved[..., 0], axis=(0, 2))
+        pull += np.einsum("kjia,kji->ja", slope, solved[..., 0])
+        turned = slope.transpose(1, 3, 0, 2).reshape(several, n, -1)
+        stiffness += turned @ solved[..., 1:].transpose(1, 0, 2, 3).reshape(several, -1, n)
+    diagonal = np.diagonal(stiffness, axis1=1, axis2=2)
+    scale = np.sqrt(np.where(diagonal > 0, diagonal, 1.0))
+    stiffness = stiffness / scale[:, :, np.newaxis] / scale[:, np.newaxis, :]
+    right = (pull / scale)[..., np.newaxis]
+    # own poles are empty rows; the small addition also settles what the data leave open
+    moved = np.linalg.solve(stiffness + 1e-13 * np.eye(n), right)
+    explained = np.sum(right * moved, axis=(1, 2))
+    return np.maximum(direct - explained, 0.0)
 
 
 def _narrow(blocks: Sequence[Block], sections: Sections, index: int) -> bool:
@@ -162,29 +204,6 @@ def _concentration(
         return 1.0
     top = np.partition(energy, -SPARED_SAMPLES)[-SPARED_SAMPLES:]
     return float(top.sum()) / total
-
-
-def _section_score(solution: Solution, info: Information, index: int) -> float:
-    columns = section_columns(solution.sections, index)
-    others = np.setdiff1d(np.arange(solution.sections.order), columns)
-    direct = 0.0
-    pull = np.zeros(others.size)
-    stiffness = info.poles[np.ix_(others, others)].copy()
-    for part, linear in zip(solution.parts, info.linear, strict=True):
-        rows = linear.inverse[:, columns, :]
-        covariance = rows @ rows.transpose(0, 2, 1)
-        size = np.sqrt(np.diagonal(covariance, axis1=1, axis2=2))
-        c = part.coefficients[:, columns] / size
-        scaled = covariance / size[:, :, np.newaxis] / size[:, np.newaxis, :]
-        scaled = scaled + 1e-14 * np.eye(len(columns))
-        slope = linear.slope[:, columns][:, :, others] / size[:, :, np.newaxis]
-        solved = np.linalg.solve(scaled, np.concatenate((c[:, :, np.newaxis], slope), axis=2))
-        direct += float(np.sum(c * solved[:, :, 0]))
-        pull += np.einsum("kij,ki->j", slope, solved[:, :, 0])
-        stiffness += np.einsum("kia,kib->ab", slope, solved[:, :, 1:])
-    if others.size == 0:
-        return direct
-    return max(direct - float(pull @ invert(stiffness) @ pull), 0.0)
 
 
 def threshold(channels: int, places: int, chance: float, columns: int = 2) -> float:

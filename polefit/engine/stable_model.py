@@ -9,10 +9,16 @@ from typing import NamedTuple
 import numpy as np
 
 from polefit.engine.blocks import Block
-from polefit.engine.order import parameters, split
+from polefit.engine.order import parameters, samples, split
 from polefit.engine.projection import Solution, solve
 from polefit.engine.refinement import refine
 from polefit.engine.sections import Sections
+
+
+FAR = 100.0
+"""χ² so many times that of the free model needs no polish: nobody would call it a tie."""
+COARSE = 0.02
+"""Share of χ² below which a further step is not worth while as long as the model is far off."""
 
 
 class StableModel(NamedTuple):
@@ -71,9 +77,10 @@ def compare_with_stable(
     best: tuple[float, Solution] | None = None
     starts = [on_axis(free.sections), reflected(free.sections)]
     starts += [reflected(solution.sections) for solution in richer]
-    for start in starts:
-        confined = split(blocks, solve(blocks, start, free.direct))
-        confined = refine(blocks, confined, iterations=25, tolerance=0.1, left_half_plane=True)
+    for number, start in enumerate(starts):
+        if number >= 2 and best is not None and best[1].misfit > FAR * free.misfit:
+            break
+        confined = _confine(blocks, start, free)
         # each further parameter lowers χ² by one in the mean, whether it is needed or not
         cost = confined.misfit / level + parameters(blocks, confined)
         if best is None or cost < best[0]:
@@ -82,3 +89,13 @@ def compare_with_stable(
     rise = best[0] - free.misfit / level - parameters(blocks, free)
     ratio = math.sqrt(best[1].misfit / max(free.misfit, 1e-300))
     return StableModel(ratio, rise, best[1].sections.order)
+
+
+def _confine(blocks: Sequence[Block], start: Sections, free: Solution) -> Solution:
+    """Fit with bounds; finely only where the confined model comes near the free one."""
+    confined = split(blocks, solve(blocks, start, free.direct))
+    coarse = COARSE * samples(blocks)
+    confined = refine(blocks, confined, iterations=25, tolerance=coarse, left_half_plane=True)
+    if confined.misfit > FAR * free.misfit:
+        return confined
+    return refine(blocks, confined, iterations=20, tolerance=0.1, left_half_plane=True)
