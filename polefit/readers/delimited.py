@@ -203,13 +203,12 @@ def _headings(text: Text, head: Sequence[str], draft: Draft) -> tuple[Heading, .
     """Find the headings of the columns in the lines just above the table."""
     above = [text.decoded(line) for line in head[: draft.first_line] if line.strip()]
     candidates = [_heading_fields(line, draft) for line in above[-3:]]
+    # A comment without headings, or a rule, may follow the line that has them.
+    while candidates and candidates[-1] is None and _apart(above[-1]):
+        candidates.pop()
+        above.pop()
     if not candidates or candidates[-1] is None:
-        # A comment without headings may follow the line that has them.
-        while candidates and candidates[-1] is None and _apart(above[-1]):
-            candidates.pop()
-            above.pop()
-        if not candidates or candidates[-1] is None:
-            return None
+        return None
     lowest = candidates[-1]
     below = parse_headings(lowest)
     if len(candidates) > 1 and (upper := candidates[-2]) is not None and not _named(below):
@@ -224,8 +223,13 @@ def _headings(text: Text, head: Sequence[str], draft: Draft) -> tuple[Heading, .
 
 
 def _apart(line: str) -> bool:
-    """Whether a line between headings and rows is a comment or a rule of dashes."""
-    return is_comment(line) or not line.strip(" \t-=_+|")
+    """Whether a line between headings and rows belongs to neither."""
+    return is_comment(line) or _is_rule(line)
+
+
+def _is_rule(line: str) -> bool:
+    """Whether a line is drawn with dashes."""
+    return not line.strip(" \t-=_+|#")
 
 
 def _or_before(before: str, name: str) -> str:
@@ -246,6 +250,8 @@ def _bracketed(unit: str) -> str:
 
 def _heading_fields(line: str, draft: Draft) -> list[str] | None:
     """Split a line of headings like the rows; None if it does not fit them."""
+    if _is_rule(line):
+        return None
     bare = re.sub(r"^\s*(?:[#!%;*]+|//)", "", line) if is_comment(line) else line
     count = len(draft.kinds)
     for parts in _splits(bare, draft.dialect):
