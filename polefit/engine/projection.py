@@ -203,7 +203,7 @@ def normal_equations(solution: Solution) -> tuple[FloatArray, FloatArray]:
     gradient = np.zeros(n)
     for part in solution.parts:
         slopes, _ = chain(solution.sections, part.coefficients)
-        flat = (part.inner @ slopes).reshape(-1, n)
+        flat = (part.inner @ slopes).reshape(part.coefficients.shape[0] * n, n)
         information += flat.T @ flat
         gradient += np.einsum("kdj,kd->j", slopes, part.pull)
     return information, gradient

@@ -15,6 +15,9 @@ import scipy.linalg
 from polefit.engine.blocks import Block, FloatArray
 from polefit.engine.projection import Solution, normal_equations, solve
 
+BOUND = 1e-12
+"""Smallest coefficient of a confined model: on the axis itself a sample could fall on a pole."""
+
 
 def refine(
     blocks: Sequence[Block],
@@ -38,13 +41,15 @@ def refine(
         Stop when the expected decrease falls below this many standard deviations squared,
         in units of the misfit per degree of freedom.
     left_half_plane : bool
-        Keep all coefficients at or above zero, which confines the poles to Re s <= 0.
+        Keep all coefficients positive, which confines the poles to Re s < 0.
 
     Returns
     -------
     Solution
         Never worse than `start`.
     """
+    if not np.isfinite(start.misfit):
+        return start
     best = start
     samples = sum(block.rows for block in blocks)
     damping = 1e-3
@@ -53,7 +58,7 @@ def refine(
         theta = best.sections.vector()
         free = np.ones(theta.size, dtype=bool)
         if left_half_plane:
-            free = (theta > 0) | (gradient > 0)
+            free = (theta > BOUND) | (gradient > 0)
         if not free.any():
             break
         step, expected = _damped_step(information, gradient, free, damping)
@@ -61,7 +66,7 @@ def refine(
             break
         moved = theta + step
         if left_half_plane:
-            moved = np.maximum(moved, 0.0)
+            moved = np.maximum(moved, BOUND)
         trial = solve(blocks, best.sections.with_vector(moved), best.direct)
         if trial.misfit < best.misfit:
             gain = (best.misfit - trial.misfit) / max(expected, 1e-300)

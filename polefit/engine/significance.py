@@ -73,7 +73,7 @@ def information(solution: Solution) -> Information:
     linear = []
     for part in solution.parts:
         slopes, along = chain(solution.sections, part.coefficients)
-        flat = (part.inner @ slopes).reshape(-1, n)
+        flat = (part.inner @ slopes).reshape(part.coefficients.shape[0] * n, n)
         total += flat.T @ flat
         inverse = np.linalg.solve(part.factor, np.eye(part.factor.shape[1])[np.newaxis])
         linear.append(Linear(inverse, inverse @ (part.coupling @ slopes) + along))

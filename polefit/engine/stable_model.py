@@ -11,7 +11,7 @@ import numpy as np
 from polefit.engine.blocks import Block
 from polefit.engine.order import parameters, samples, split
 from polefit.engine.projection import Solution, solve
-from polefit.engine.refinement import refine
+from polefit.engine.refinement import BOUND, refine
 from polefit.engine.sections import Sections
 
 
@@ -40,16 +40,16 @@ class StableModel(NamedTuple):
 
 
 def reflected(sections: Sections) -> Sections:
-    """Return the sections with every coefficient made non-negative: a start, not an answer."""
-    return Sections(np.abs(sections.c1), np.abs(sections.c0), np.abs(sections.c))
+    """Return the sections with every coefficient made positive: a start, not an answer."""
+    return Sections(*(np.maximum(np.abs(part), BOUND) for part in sections))
 
 
 def on_axis(sections: Sections) -> Sections:
     """Return the sections with right-half-plane pairs moved to the axis: another start."""
     return Sections(
         np.maximum(sections.c1, 1e-9 * np.sqrt(np.abs(sections.c0))),
-        np.abs(sections.c0),
-        np.maximum(sections.c, 0.0),
+        np.maximum(np.abs(sections.c0), BOUND),
+        np.maximum(sections.c, BOUND),
     )
 
 
