@@ -112,7 +112,7 @@ def _matrix_order(responses: ResponseSet, quantity: str) -> tuple[list[int], int
         shown = ", ".join(missing[:3]) + (" …" if len(missing) > 3 else "")
         raise DataError(
             f"conversion of {responses.quantity} to {quantity} needs all {len(wanted)} responses "
-            f"between {', '.join(ports[:6])}{' …' if len(ports) > 6 else ''}; {shown} is missing: "
+            f"between {', '.join(ports[:6])}{' …' if len(ports) > 6 else ''}; missing: {shown}; "
             f"export the full matrix, or {quantity} itself"
         )
     return [column[channel] for channel in wanted], len(ports)
