@@ -31,12 +31,14 @@ from polefit.engine.sections import from_poles
 from polefit.engine.significance import Information, information, scan, section_scores
 from polefit.engine.whiteness import Whiteness, judge_whiteness
 
-
 RESHAPED = 1.5
 """Weights that change by more than this among themselves call for a new search of the order."""
-UNCHANGED = 1.02
+UNCHANGED = 1.05
 """Weights that change by less leave estimates where they are, within a small part of their
 uncertainty."""
+
+RAISES = 3
+"""How often the order is raised by two pairs while the residual is not noise-like."""
 
 
 class Measured(NamedTuple):
@@ -130,7 +132,9 @@ def estimate_model(
         laws = _laws(data, blocks, found.solution)
         before, blocks = blocks, _weigh(data, laws, found.solution)
         change = _change(before, blocks)
-        found = search(blocks, found.richest) if change > RESHAPED else take_up(blocks, found)
+        if change > RESHAPED:
+            found = search(blocks, found.richest)
+        found = take_up(blocks, found)
         if change < UNCHANGED:
             break
     solution = refine(
@@ -139,29 +143,55 @@ def estimate_model(
         iterations=40,
         tolerance=1e-5,
     )
-    solution = split(blocks, solution)
-    level = variance_factor(blocks, solution)
-    info = information(solution)
     progress("checking what moves with the order")
+    settled = _settle_order(blocks, split(blocks, solution))
+    level = variance_factor(blocks, settled.solution)
+    scores = section_scores(blocks, settled.solution, settled.info)
+    raised = settled.solution.sections.order - solution.sections.order
     return Estimation(
         blocks=blocks,
         laws=laws,
         noise=tuple(
-            level * variance(law, _size(part_values), m.known)
-            for law, m, part_values in zip(laws, data, _models(data, solution), strict=True)
+            level * variance(law, _size(values), m.known)
+            for law, m, values in zip(laws, data, _models(data, settled.solution), strict=True)
         ),
-        solution=solution,
-        info=info,
+        solution=settled.solution,
+        info=settled.info,
         level=level,
-        scores=section_scores(blocks, solution, info).spared / level,
-        past=go_past(blocks, solution, info),
+        scores=scores.spared / level,
+        past=settled.past,
         richest=found.richest,
-        whiteness=judge_whiteness(
-            [residual(b, solution, p) for b, p in zip(blocks, solution.parts, strict=True)]
-        ),
+        whiteness=settled.whiteness,
         places=count_places(blocks),
-        reason=found.reason,
+        reason=found.reason
+        + (f"; raised by {raised} as the residual was not noise-like" if raised > 0 else ""),
     )
+
+
+class _Settled(NamedTuple):
+    solution: Solution
+    info: Information
+    past: Solution
+    whiteness: Whiteness
+
+
+def _settle_order(blocks: Sequence[Block], solution: Solution) -> _Settled:
+    """Raise the order as long as the residual is not noise-like and raising helps.
+
+    Where no finite order is exact, modes too weak to be worth their parameters one by one still
+    bias the strong ones; the criterion is then Akaike's, which errs towards more.
+    """
+    for _ in range(RAISES + 1):
+        info = information(solution)
+        past = go_past(blocks, solution, info)
+        pairs = zip(blocks, solution.parts, strict=True)
+        whiteness = judge_whiteness([residual(block, solution, part) for block, part in pairs])
+        more = parameters(blocks, past) - parameters(blocks, solution)
+        gain = (solution.misfit - past.misfit) / variance_factor(blocks, past)
+        if whiteness.white or gain <= 2 * more:
+            break
+        solution = split(blocks, refine(blocks, past, iterations=20, tolerance=1e-3))
+    return _Settled(solution, info, past, whiteness)
 
 
 def _change(before: Sequence[Block], after: Sequence[Block]) -> float:

@@ -15,7 +15,7 @@ from typing import NamedTuple
 import numpy as np
 
 from polefit.engine.blocks import Block, FloatArray
-from polefit.engine.projection import Solution, solve
+from polefit.engine.projection import Solution, residual, solve
 from polefit.engine.refinement import refine
 from polefit.engine.sections import Sections, from_poles
 from polefit.engine.significance import (
@@ -26,6 +26,7 @@ from polefit.engine.significance import (
     threshold,
 )
 from polefit.engine.vector_fitting import relocate, starting_sections
+from polefit.engine.whiteness import judge_whiteness
 
 KEEP_CHANCE = 0.01
 """Chance per run that a section fitted to pure noise is kept in the model."""
@@ -79,7 +80,7 @@ def search(blocks: Sequence[Block], start: Solution | None = None) -> Found:
         richest = _rich_fit(blocks)
     else:
         richest = refine(blocks, solve(blocks, start.sections, 2), iterations=10, tolerance=0.1)
-    final = drop_direct(blocks, _settled(blocks, richest))
+    final = drop_direct(blocks, prune(blocks, richest, count_places(blocks)))
     reason = (
         f"pruned from {richest.sections.order} poles; removing any further one raises the misfit "
         f"more than noise explains (chance {KEEP_CHANCE:g} over {count_places(blocks)} places)"
@@ -88,19 +89,14 @@ def search(blocks: Sequence[Block], start: Solution | None = None) -> Found:
 
 
 def take_up(blocks: Sequence[Block], found: Found) -> Found:
-    """Adapt the outcome of a search to weights that have changed a little."""
-    start = solve(blocks, found.solution.sections, found.solution.direct)
-    return found._replace(
-        solution=_settled(blocks, refine(blocks, start, iterations=10, tolerance=0.1))
-    )
-
-
-def _settled(blocks: Sequence[Block], start: Solution) -> Solution:
-    """Prune, grow, and prune again what growing made superfluous."""
+    """Adapt the outcome of a search to new weights, and add what it may have missed."""
     places = count_places(blocks)
+    start = solve(blocks, found.solution.sections, found.solution.direct)
+    start = refine(blocks, start, iterations=10, tolerance=0.1)
     pruned = prune(blocks, start, places)
     grown = grow(blocks, pruned, places)
-    return prune(blocks, grown, places) if grown is not pruned else pruned
+    settled = prune(blocks, grown, places) if grown is not pruned else pruned
+    return found._replace(solution=settled)
 
 
 def samples(blocks: Sequence[Block]) -> int:
@@ -144,7 +140,7 @@ def _rich_fit(blocks: Sequence[Block]) -> Solution:
     best = _vector_fit(blocks, start)
     for richer_order in LADDER:
         order = min(richer_order, most)
-        if order <= best.sections.order:
+        if order <= best.sections.order or _explained(blocks, best):
             break
         extra = starting_sections(low, high, order - best.sections.order)
         richer = _vector_fit(blocks, best.sections.join(extra))
@@ -152,6 +148,14 @@ def _rich_fit(blocks: Sequence[Block]) -> Solution:
             break
         best = richer
     return best
+
+
+def _explained(blocks: Sequence[Block], solution: Solution) -> bool:
+    """Tell whether the residual is at the known noise or looks like noise of unknown level."""
+    if solution.misfit < samples(blocks) - parameters(blocks, solution):
+        return True
+    pairs = zip(blocks, solution.parts, strict=True)
+    return judge_whiteness([residual(block, solution, part) for block, part in pairs]).white
 
 
 def _vector_fit(blocks: Sequence[Block], start: Sections) -> Solution:

@@ -14,7 +14,6 @@ from polefit.engine.projection import Solution, solve
 from polefit.engine.refinement import BOUND, refine
 from polefit.engine.sections import Sections
 
-
 FAR = 100.0
 """χ² so many times that of the free model needs no polish: nobody would call it a tie."""
 COARSE = 0.02
