@@ -14,7 +14,7 @@ import scipy.stats
 
 from polefit.engine.blocks import FloatArray
 
-CHANCE = 1e-3
+CHANCE = 1e-4
 """Probability with which white noise would be called coloured, over all channels."""
 
 
