@@ -2,10 +2,12 @@
 
 from __future__ import annotations
 
-from itertools import combinations
+from collections.abc import Sequence
+from hashlib import sha256
 
 import numpy as np
 
+from polefit.channels import Channel
 from polefit.estimates import si
 from polefit.responses import ComplexArray, FloatArray, ResponseSet
 
@@ -18,6 +20,7 @@ NOISE_RATIO = 3.0
 LEAST_NOISE = 1e-9
 _SAMPLED_POINTS = 4001
 _UNEVEN = 30.0
+_GAP = 5.0
 _LOW_END = 1e-3
 
 
@@ -57,11 +60,7 @@ def _sampling(frequency: FloatArray) -> list[str]:
     with np.errstate(all="ignore"):
         spread = min(steps.max() / steps.min(), relative.max() / relative.min())
     if spread > _UNEVEN:
-        at = int(np.argmax(steps / np.maximum(frequency[1:], 1e-300)))
-        found.append(
-            f"uneven step: between {si(frequency[at], 'Hz')} and {si(frequency[at + 1], 'Hz')} "
-            "lies a gap in which a narrow mode would be missed"
-        )
+        found.append(_uneven(frequency, steps))
     within = int(np.sum(frequency <= 2 * low)) if low > 0 else 3
     if low > 0 and within < 3:
         found.append(
@@ -76,39 +75,63 @@ def _sampling(frequency: FloatArray) -> list[str]:
     return found
 
 
+def _uneven(frequency: FloatArray, steps: FloatArray) -> str:
+    """Tell of the gap that stands out from its neighbours, else of coarse and fine parts."""
+    beside = np.maximum(np.r_[0, steps[:-1]], np.r_[steps[1:], 0])
+    at = int(np.argmax(steps / beside))
+    if steps[at] > _GAP * beside[at]:
+        return (
+            f"uneven step: between {si(frequency[at], 'Hz')} and {si(frequency[at + 1], 'Hz')} "
+            "lies a gap in which a narrow mode would be missed"
+        )
+    return (
+        f"uneven step: {si(float(steps.min()), 'Hz')} to {si(float(steps.max()), 'Hz')}; narrow "
+        "modes may be missed where it is coarse"
+    )
+
+
 def _dead(responses: ResponseSet) -> list[str]:
     """Channels that are zero or constant, or zero at some points."""
     values = responses.values
-    found = []
+    found: dict[str, list[Channel]] = {}
     zeros = (values == 0).sum(axis=0)
     for k, channel in enumerate(responses.channels):
         if zeros[k] == len(values):
-            found.append(f"{channel}: zero at every point; leave it out with select")
-        elif len(values) > 1 and np.all(values[:, k] == values[0, k]):
-            found.append(f"{channel}: constant over frequency; it shows no mode")
+            what = "zero at every point; leave out with select= (--select)"
+        elif _constant(values[:, k]):
+            what = "constant over frequency; shows no mode"
         elif zeros[k]:
-            found.append(
-                f"{channel}: exactly zero at {zeros[k]} point{'s' if zeros[k] > 1 else ''}"
-            )
-    return found
+            what = f"exactly zero at {zeros[k]} point{'s' if zeros[k] > 1 else ''}"
+        else:
+            continue
+        found.setdefault(what, []).append(channel)
+    return [f"{listed(channels)}: {what}" for what, channels in found.items()]
+
+
+def _constant(column: ComplexArray) -> bool:
+    return column.size > 1 and bool(np.all(column == column[0]))
+
+
+def listed(channels: Sequence[Channel]) -> str:
+    """Name a few channels and count the others."""
+    names = ", ".join(str(channel) for channel in channels[:4])
+    more = len(channels) - 4
+    return f"{names} and {more} more" if more > 0 else names
 
 
 def _copies(responses: ResponseSet) -> list[str]:
     """Channels with the same numbers, reciprocal pairs and dead channels apart."""
-    values = responses.values
-    alive = values.any(axis=0)
-    first: dict[bytes, list[int]] = {}
-    for k in np.flatnonzero(alive):
-        column = np.ascontiguousarray(values[:, k])
-        first.setdefault(column[:64].tobytes(), []).append(int(k))
-    found = []
-    for group in first.values():
-        for a, b in combinations(group, 2):
-            one, other = responses.channels[a], responses.channels[b]
-            reciprocal = (one.output, one.input) == (other.input, other.output)
-            if not reciprocal and np.array_equal(values[:, a], values[:, b]):
-                found.append(f"{one} and {other} hold the same numbers; one of them adds nothing")
-    return found
+    groups: dict[bytes, list[Channel]] = {}
+    for column, channel in zip(responses.values.T, responses.channels, strict=True):
+        if not _constant(column):
+            digest = sha256(column.tobytes()).digest()
+            groups.setdefault(digest, []).append(channel)
+    return [
+        f"{listed(group)} hold the same numbers; together they tell no more than one"
+        for group in groups.values()
+        # A reciprocal pair is no surprise.
+        if len({frozenset((c.output, c.input)) for c in group}) > 1
+    ]
 
 
 def _accuracy(responses: ResponseSet) -> list[str]:
@@ -116,7 +139,14 @@ def _accuracy(responses: ResponseSet) -> list[str]:
     frequency, values = _middle(responses)
     rounding = _rounding(responses, values)
     found = []
-    if rounding > COARSE_ROUNDING:
+    if responses.precision is None and responses.sample_std is not None:
+        rounding = known_uncertainty(responses)
+        if rounding > COARSE_ROUNDING:
+            found.append(
+                f"few digits or stated noise: samples are known to about {rounding:.1g} of the "
+                "response only"
+            )
+    elif rounding > COARSE_ROUNDING:
         found.append(
             f"few digits: rounding leaves about {rounding:.1g} of the response uncertain; "
             "export more digits"
@@ -145,6 +175,28 @@ def _rounding(responses: ResponseSet, values: ComplexArray) -> float:
     size = np.abs(values)
     with np.errstate(divide="ignore", invalid="ignore"):
         relative = np.where(size > 0, np.hypot(first, second) / size, 0.0)
+    return float(np.median(relative, axis=0).max())
+
+
+def known_uncertainty(responses: ResponseSet) -> float:
+    """Tell how uncertain samples are that came with an uncertainty.
+
+    Parameters
+    ----------
+    responses : ResponseSet
+        With `sample_std`.
+
+    Returns
+    -------
+    float
+        Typical standard deviation of a sample, both parts together, over its size; of the
+        worst channel. Zero where none is known.
+    """
+    if responses.sample_std is None:
+        return 0.0
+    size = np.abs(responses.values)
+    with np.errstate(divide="ignore", invalid="ignore"):
+        relative = np.where(size > 0, np.sqrt(2) * responses.sample_std / size, 0.0)
     return float(np.median(relative, axis=0).max())
 
 

@@ -9,10 +9,11 @@ from typing import Any, Literal, TypeAlias
 
 import numpy as np
 
-from polefit.analysis.data_quality import limits
+from polefit.analysis.data_quality import known_uncertainty, limits
 from polefit.estimates import si
 from polefit.precision import Printed
-from polefit.readers import read_with_report
+from polefit.readers import read_all_with_report, read_with_report
+from polefit.readers.reading import Parsed
 from polefit.responses import FloatArray, ResponseSet
 
 Spacing: TypeAlias = Literal["single point", "uniform", "logarithmic", "uneven"]
@@ -65,6 +66,8 @@ class Inspection:
         Its format.
     responses : ResponseSet
         The data themselves.
+    frequency_unit : str
+        Unit in which the file gives frequencies.
     scaling : str
         How printed numbers became ohm, siemens or a ratio.
     decimal_mark : str or None
@@ -82,6 +85,7 @@ class Inspection:
     file: str
     format: str
     responses: ResponseSet
+    frequency_unit: str
     scaling: str
     decimal_mark: str | None
     digits: str
@@ -104,6 +108,7 @@ class Inspection:
             },
             "quantity": data.quantity,
             "unit": data.unit,
+            "frequency_unit": self.frequency_unit,
             "scaling": self.scaling,
             "decimal_mark": self.decimal_mark,
             "digits": self.digits,
@@ -131,6 +136,7 @@ class Inspection:
         rows = {
             "format": self.format,
             "quantity": f"{data.quantity} in {data.unit}" if data.unit else data.quantity,
+            "frequency": f"in {self.frequency_unit}",
             "scaling": self.scaling,
             "decimal mark": mark or "none: binary numbers",
             "digits": self.digits,
@@ -167,12 +173,38 @@ def inspect(path: str | Path, **options: Any) -> Inspection:
     FileError, ArgumentError
         As :func:`polefit.read` does.
     """
-    parsed = read_with_report(path, **options)
+    return _inspection(path, read_with_report(path, **options))
+
+
+def inspect_all(path: str | Path, **options: Any) -> tuple[Inspection, ...]:
+    """Read every response set of a file and tell what they hold.
+
+    Parameters
+    ----------
+    path : str or pathlib.Path
+        The file; only HDF5 can hold more than one set.
+    **options
+        As for :func:`polefit.read`.
+
+    Returns
+    -------
+    tuple of Inspection
+
+    Raises
+    ------
+    FileError, ArgumentError
+        As :func:`polefit.read_all` does.
+    """
+    return tuple(_inspection(path, parsed) for parsed in read_all_with_report(path, **options))
+
+
+def _inspection(path: str | Path, parsed: Parsed) -> Inspection:
     responses = parsed.responses
     return Inspection(
         file=str(path),
         format=parsed.format,
         responses=responses,
+        frequency_unit=parsed.frequency_unit,
         scaling=parsed.scaling or _scaling(responses),
         decimal_mark=parsed.decimal_mark or _usual_mark(parsed.format),
         digits=_digits(responses),
@@ -223,7 +255,10 @@ def _usual_mark(format_name: str) -> str | None:
 def _digits(responses: ResponseSet) -> str:
     precision = responses.precision
     if precision is None:
-        return "double precision (15 or more)"
+        if responses.sample_std is None:
+            return "double precision (15 or more)"
+        relative = known_uncertainty(responses)
+        return f"uncertain by about {relative:.1g} of the response"
     names = {
         "real-imaginary": ("real part", "imaginary part"),
         "magnitude-angle": ("magnitude", "angle"),

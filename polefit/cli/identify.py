@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from itertools import chain
 from typing import Any
 
 import click
@@ -57,7 +58,9 @@ def identify(
         progress("loading the numerics")
         from polefit.analysis.identify import identify as identify_responses
 
-        groups = [[r] for r in responses] if separately else [responses]
+        groups = [[*sets] for sets in responses]
+        if not separately:
+            groups = [[*chain.from_iterable(groups)]]
         results = [
             identify_responses(group, band_hz=band_hz, confidence=confidence, progress=progress)
             for group in groups

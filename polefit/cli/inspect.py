@@ -27,14 +27,18 @@ def inspect(file: str, json: str | None, quiet: bool, **reading: Any) -> int:
     check_paths(outputs)
     with Progress(quiet) as progress:
         progress(f"reading {file}")
-        from polefit.analysis.inspection import inspect as inspect_file
+        from polefit.analysis.inspection import inspect_all
 
-        found = inspect_file(file, **options_for(reading, 0, 1))
+        found = inspect_all(file, **options_for(reading, 0, 1))
     if json is not None:
         import json as encoder
 
+        document = found[0].to_dict()
+        if len(found) > 1:
+            listed = [one.to_dict() for one in found]
+            document = {"schema": "polefit.inspection-list", "version": 1, "inspections": listed}
         text = encoder.dumps(
-            found.to_dict(), indent=2, ensure_ascii=outputs.json_on_stdout, allow_nan=False
+            document, indent=2, ensure_ascii=outputs.json_on_stdout, allow_nan=False
         )
         if outputs.json_on_stdout:
             put(text)
@@ -43,5 +47,5 @@ def inspect(file: str, json: str | None, quiet: bool, **reading: Any) -> int:
 
             write_text(json, text + "\n")
     if not outputs.json_on_stdout and not quiet:
-        put(str(found))
+        put("\n\n".join(str(one) for one in found))
     return 0

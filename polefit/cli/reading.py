@@ -70,18 +70,18 @@ def _one(
 
 def read_files(
     files: Sequence[str], given: Mapping[str, Any], progress: Progress
-) -> list[ResponseSet]:
-    """Read all files.
+) -> list[tuple[ResponseSet, ...]]:
+    """Read all files: the response sets of each, of which only HDF5 holds more than one.
 
     Raises
     ------
     PolefitError
         If a file cannot be read; the message names it.
     """
-    from polefit.readers import read
+    from polefit.readers import read_all
 
     found = []
     for i, file in enumerate(files):
         progress(f"reading {file}")
-        found.append(read(file, **options_for(given, i, len(files))))
+        found.append(read_all(file, **options_for(given, i, len(files))))
     return found

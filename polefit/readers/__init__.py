@@ -162,7 +162,30 @@ def read_all(path: str | os.PathLike[str], **options: Any) -> tuple[ResponseSet,
     FileError, ArgumentError, DataError
         As for :func:`read`.
     """
-    return tuple(parsed.responses for parsed in _read(path, options, several=True))
+    return tuple(parsed.responses for parsed in read_all_with_report(path, **options))
+
+
+def read_all_with_report(path: str | os.PathLike[str], **options: Any) -> tuple[Parsed, ...]:
+    """Read all response sets of a file, each with what :func:`read_with_report` tells.
+
+    Parameters
+    ----------
+    path : str or path-like
+        The file.
+    **options
+        As for :func:`read`.
+
+    Returns
+    -------
+    tuple of Parsed
+        At least one.
+
+    Raises
+    ------
+    FileError, ArgumentError, DataError
+        As for :func:`read`.
+    """
+    return _read(path, options, several=True)
 
 
 def _read(

@@ -27,7 +27,7 @@ from polefit.readers.delimited_table import (
 )
 from polefit.readers.driven import Responses
 from polefit.readers.large_files import Content
-from polefit.readers.reading import Parsed, ReadOptions
+from polefit.readers.reading import Parsed, ReadOptions, unit_name
 from polefit.readers.spice_print import is_print, load_print
 from polefit.readers.text_blocks import Text, open_text
 from polefit.responses import ComplexArray, ResponseSet
@@ -313,6 +313,7 @@ def _parsed(
         (*layout.warnings, *what.warnings),
         decimal_mark=written.decimal,
         scaling=_scaling(traces, responses.unit),
+        frequency_unit=unit_name(layout.frequency_scale),
     )
 
 

@@ -35,6 +35,8 @@ class Parsed:
         "." or "," of a text file.
     scaling : str, optional
         How printed numbers became ohm, siemens or a ratio, where it is not one to one.
+    frequency_unit : str
+        Unit in which the file gives frequencies.
     """
 
     responses: ResponseSet
@@ -43,6 +45,15 @@ class Parsed:
     warnings: tuple[str, ...]
     decimal_mark: str | None = None
     scaling: str | None = None
+    frequency_unit: str = "Hz"
+
+
+_UNIT_NAMES = {1e3: "kHz", 1e6: "MHz", 1e9: "GHz", 1e12: "THz", 1 / (2 * math.pi): "rad/s"}
+
+
+def unit_name(hertz: float) -> str:
+    """Name the frequency unit of so many hertz; Hz where nothing says (zero)."""
+    return _UNIT_NAMES.get(hertz, "Hz")
 
 
 _ALLOWED: dict[str, tuple[str, ...]] = {

@@ -16,7 +16,7 @@ import numpy as np
 from polefit.errors import ArgumentError, FormatError
 from polefit.precision import Precision, Printed
 from polefit.readers.large_files import Content
-from polefit.readers.reading import Parsed, ReadOptions, printed_form
+from polefit.readers.reading import Parsed, ReadOptions, printed_form, unit_name
 from polefit.readers.text_blocks import numbered_lines, open_text
 from polefit.readers.touchstone_header import Header, read_header
 from polefit.readers.touchstone_layout import Layout, layout_v1, layout_v2
@@ -106,6 +106,8 @@ def parse(content: Content, options: ReadOptions, *, stem: str, suffix: str = ""
         format=f"Touchstone {_version(header)}",
         assumptions=(*assumed, *named, *_noise_note(layout)),
         warnings=(*layout.warnings, *_warnings(header, layout, suffix, comment_line)),
+        scaling=_scaling(header, scales),
+        frequency_unit=unit_name(header.option.unit_hz),
     )
 
 
@@ -182,9 +184,20 @@ def _scales(
     if len(set(layout.references)) > 1:
         told += ": of ports i and j with the square root of R_i R_j"
     if options.scaling is None:
-        told += '; scaling="absolute" takes them as ohm and siemens'
+        told += '; scaling="absolute" (--scaling) takes them as ohm and siemens'
     assumed = () if set(layout.references) == {1.0} else (told,)
     return _normalisation(parameter, np.array(layout.references)), assumed
+
+
+def _scaling(header: Header, scales: FloatArray) -> str | None:
+    """Tell what printed numbers were multiplied with; None where they were not."""
+    if np.all(scales == 1):
+        return None
+    if len(set(scales.tolist())) == 1:
+        unit = {"Z": "Ω", "Y": "S"}[header.option.parameter]
+        return f"printed numbers × {scales[0]:g} = {unit}"
+    listed = ", ".join(f"{scale:.6g}" for scale in scales[:9])
+    return f"printed numbers × {listed}{' …' if scales.size > 9 else ''}, row by row"
 
 
 def _normalisation(parameter: str, references: FloatArray) -> FloatArray:

@@ -46,7 +46,7 @@ def polefit_command(monkeypatch, capsys):
 
     def read(file, **options):
         session.read.append((str(file), options))
-        return f"responses of {file}"
+        return (f"responses of {file}",)
 
     def identify(responses, *, band_hz=None, confidence=0.95, progress=None):
         if session.error is not None:
@@ -58,7 +58,7 @@ def polefit_command(monkeypatch, capsys):
     def write_identification(path, result):
         session.saved.append(path)
 
-    monkeypatch.setattr("polefit.readers.read", read, raising=False)
+    monkeypatch.setattr("polefit.readers.read_all", read, raising=False)
     for name, part in {
         "polefit.analysis.identify": SimpleNamespace(identify=identify),
         "polefit.report.hdf5": SimpleNamespace(write_identification=write_identification),
