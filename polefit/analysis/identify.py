@@ -2,10 +2,11 @@
 
 from __future__ import annotations
 
+import functools
 from collections.abc import Callable, Sequence
 
 import numpy as np
-from threadpoolctl import threadpool_limits
+from threadpoolctl import ThreadpoolController
 
 from polefit.analysis.judgement import CLAIM_CHANCE, Judged, judge
 from polefit.analysis.preparation import Prepared, node_names, prepare
@@ -89,9 +90,15 @@ def identify(
     if not 0.5 < confidence < 1:
         raise ArgumentError(f"confidence: {confidence} is not between 0.5 and 1; give e.g. 0.95")
     prepared = prepare(responses, band_hz)
-    with threadpool_limits(limits=1), np.errstate(all="ignore"):
+    with _thread_pools().limit(limits=1), np.errstate(all="ignore"):
         estimation = estimate_model(prepared.measured, progress or (lambda _: None))
         return _answer(prepared, estimation, confidence)
+
+
+@functools.cache
+def _thread_pools() -> ThreadpoolController:
+    """Return the control of BLAS threads, which slow small matrices; looked up once."""
+    return ThreadpoolController()
 
 
 def _answer(prepared: Prepared, estimation: Estimation, confidence: float) -> Identification:

@@ -7,31 +7,23 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
-import scipy.stats
+import scipy.special
 
-from polefit.engine.blocks import ComplexArray, FloatArray
+from polefit.analysis.evidence import Candidate, Comparison, compare, evidence_for, nearest
+from polefit.engine.blocks import FloatArray
 from polefit.engine.estimation import Estimation, freedom
 from polefit.engine.propagation import pole_estimates
 from polefit.engine.sections import Sections, residues, section_columns
 from polefit.engine.significance import invert, threshold
-from polefit.engine.stable_model import StableModel, compare_with_stable
+from polefit.engine.stable_model import StableModel
 from polefit.estimates import Estimate
 from polefit.modes import BackgroundPole, Evidence, Mode, NodeView, Verdict
 from polefit.responses import Channel
 
 CLAIM_CHANCE = 1e-3
 """Chance per run that a pole fitted to pure noise is claimed as a mode."""
-STABLE_MODEL_RISE = 10.8
-"""Rise of χ² that speaks against every stable model (χ² with one degree, p = 0.001)."""
-COLOURED_MISFIT = 10.0
-"""Where the residual is not noise-like a stable model must fit this many times worse."""
-COMPANION_MISFIT = (1.0, 3.0, 10.0)
-"""The same for a growing mode that shares its resonance curve with no, one, or more other modes of
-which one is stronger and decays. That is how a fit mends data that no small rational function
-describes: passive resonators, distorted by drive or behind unmodelled lines, were seen to reach 8
-with several companions, 4.5 with a coloured residual and 19 with both."""
-COMPANION_WIDTHS = 3.0
-"""How many half-widths apart two modes may lie to count as one resonance curve."""
+EDGE_WIDTHS = 0.3
+"""Half-widths by which a mode must lie inside the band: most of its curve must be seen."""
 NEAR_BAND = 0.2
 """Modes up to this share of the band edge outside it are shown; they decide nothing."""
 
@@ -55,18 +47,6 @@ class Judged:
     stable_model: StableModel | None
 
 
-@dataclass(frozen=True)
-class Candidate:
-    """One section of the model, in rad/s."""
-
-    index: int
-    pole: complex
-    covariance: FloatArray
-    score: float
-    in_band: bool
-    near_band: bool
-
-
 def judge(
     estimation: Estimation,
     scale: float,
@@ -85,19 +65,12 @@ def judge(
     claimed, background = _claim(found, estimation, scale)
     deciding = sum(c.in_band for c in claimed)
     level = 1 - (1 - confidence ** (1 / max(deciding, 1))) / 2
-    factor = float(scipy.stats.t.ppf(level, max(freedom(estimation), 1)))
-    stable = None
-    if any(c.pole.real > 0 and c.in_band for c in claimed):
-        stable = compare_with_stable(
-            estimation.blocks,
-            estimation.solution,
-            [estimation.past, estimation.richest],
-            estimation.level,
-        )
+    factor = float(scipy.special.stdtrit(max(freedom(estimation), 1), level))
+    against = compare(claimed, estimation, scale)
     views = _node_views(estimation, scale, channels, quantity)
-    modes = [_mode(c, estimation, stable, factor, scale, views[c.index]) for c in claimed]
+    modes = [_mode(c, estimation, against, factor, scale, views[c.index]) for c in claimed]
     modes.sort(key=_danger)
-    return Judged(tuple(modes), tuple(background), stable)
+    return Judged(tuple(modes), tuple(background), None if against is None else against.stable)
 
 
 def _danger(mode: Mode) -> tuple[int, int, float]:
@@ -131,16 +104,9 @@ def _candidate(
     )
 
 
-def _nearest(pole: complex, poles: ComplexArray) -> complex | None:
-    same = poles[(poles.imag == 0) == (pole.imag == 0)]
-    if same.size == 0:
-        return None
-    return complex(same[int(np.argmin(np.abs(same - pole)))])
-
-
 def _order_spread(estimation: Estimation, pole: complex, own: FloatArray) -> FloatArray:
     """Variance added when a model past the order moves the pole by more than noise would."""
-    other = _nearest(pole, estimation.past.sections.poles())
+    other = nearest(pole, estimation.past.sections.poles())
     zero = np.zeros((2, 2))
     if other is None:
         return zero
@@ -169,7 +135,7 @@ def _place(
     part = 1 if pole.imag > 0 else 0
     margin = step + 2 * math.sqrt(max(covariance[part, part], 0.0))
     if pole.imag > 0:
-        margin = max(margin, min(abs(pole.real), 0.1 * at))
+        margin = max(margin, EDGE_WIDTHS * min(abs(pole.real), 0.1 * at))
     inside = low + (margin if low > 0 else 0.0) <= at <= high - margin and abs(pole) <= high
     near = (1 - NEAR_BAND) * low <= at <= (1 + NEAR_BAND) * high
     return inside, near
@@ -203,7 +169,7 @@ def _claim(
 def _mode(
     c: Candidate,
     estimation: Estimation,
-    stable: StableModel | None,
+    against: Comparison | None,
     factor: float,
     scale: float,
     nodes: tuple[NodeView, ...],
@@ -211,7 +177,7 @@ def _mode(
     estimates = pole_estimates(c.pole, c.covariance)
     std = math.sqrt(max(c.covariance[0, 0], 0.0))
     distance = c.pole.real / std if std > 0 else math.copysign(math.inf, c.pole.real)
-    evidence = _evidence(c, estimation, stable, distance, factor, scale)
+    evidence = evidence_for(c, estimation, against, distance, factor, scale)
     return Mode(
         pole_rad_per_s=c.pole,
         covariance=(
@@ -223,7 +189,7 @@ def _mode(
         damping_ratio=estimates.damping_ratio,
         growth_rate_per_s=estimates.growth_rate_per_s,
         verdict=_verdict(distance, factor, evidence),
-        probability_unstable=float(scipy.stats.norm.cdf(distance)),
+        probability_unstable=float(scipy.special.ndtr(distance)),
         significance=math.sqrt(c.score),
         in_band=c.in_band,
         evidence=evidence,
@@ -237,81 +203,6 @@ def _verdict(distance: float, factor: float, evidence: Sequence[Evidence]) -> Ve
     if distance > factor and all(item.passed is not False for item in evidence):
         return "unstable"
     return "undecided"
-
-
-def _evidence(
-    c: Candidate,
-    estimation: Estimation,
-    stable: StableModel | None,
-    distance: float,
-    factor: float,
-    scale: float,
-) -> tuple[Evidence, ...]:
-    items = [
-        Evidence(
-            "growth rate",
-            abs(distance) > factor,
-            f"the growth rate lies {abs(distance):.3g} standard uncertainties from zero; "
-            f"{factor:.2f} are needed",
-        ),
-        Evidence("residue", True, f"its residues stand out of the noise by χ² = {c.score:.3g}"),
-        _persistence(c, estimation, scale),
-    ]
-    if stable is not None and c.pole.real > 0 and c.in_band:
-        items.append(_against_stable(stable, estimation, _companions(c, estimation, scale)))
-    return tuple(items)
-
-
-def _companions(c: Candidate, estimation: Estimation, scale: float) -> int:
-    """Count the modes on one resonance curve with a growing one, if a stronger one decays."""
-    sections = estimation.solution.sections
-    poles = sections.poles()
-    coefficients = np.concatenate([part.coefficients for part in estimation.solution.parts])
-    strength = np.linalg.norm(residues(sections, coefficients), axis=1)
-    distance = np.abs(poles - c.pole / scale)
-    own = int(np.argmin(distance))
-    near = distance < COMPANION_WIDTHS * np.maximum(np.abs(poles.real), abs(poles[own].real))
-    stronger = near & (poles.real < 0) & (strength > strength[own])
-    return int(near.sum()) - 1 if stronger.any() else 0
-
-
-def _persistence(c: Candidate, estimation: Estimation, scale: float) -> Evidence:
-    """Check that the pole is there, on the same side, at a higher order."""
-    pole = c.pole / scale
-    std = math.sqrt(float(np.trace(c.covariance))) / scale
-    allowed = 5 * std + 0.5 * abs(pole.real)
-    name = "persistence over orders"
-    order = estimation.past.sections.order
-    if order == estimation.solution.sections.order:
-        return Evidence(name, None, "too few points for a model of higher order")
-    other = _nearest(pole, estimation.past.sections.poles())
-    shift = math.inf if other is None else abs(other - pole)
-    passed = shift <= allowed
-    detail = (
-        f"with {order} poles instead of {estimation.solution.sections.order} "
-        f"it moves by {shift * scale:.3g} rad/s, {shift * scale / max(abs(c.pole), 1e-300):.2g} "
-        "of its magnitude"
-        if other is not None
-        else f"with {order} poles it is not found"
-    )
-    return Evidence(name, passed, detail)
-
-
-def _against_stable(stable: StableModel, estimation: Estimation, companions: int) -> Evidence:
-    white = estimation.whiteness.white
-    rise = stable.rise / estimation.whiteness.inflation
-    asked = COMPANION_MISFIT[min(companions, 2)] * (1.0 if white else COLOURED_MISFIT)
-    detail = (
-        f"the best model without right-half-plane poles ({stable.order} poles) misses the data "
-        f"{stable.misfit_ratio:.4g} times as far"
-    )
-    doubts = [] if white else ["the residual is not noise-like"]
-    if companions:
-        doubts.append("the mode lies on the resonance curve of a stronger, decaying one")
-    if doubts:
-        detail += f"; as {' and '.join(doubts)}, {asked:g} times are asked for"
-    passed = rise > STABLE_MODEL_RISE and stable.misfit_ratio > asked
-    return Evidence("stable-model misfit", passed, detail)
 
 
 def _node_views(

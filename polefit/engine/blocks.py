@@ -115,9 +115,26 @@ def weighted_parts(block: Block, values: ComplexArray) -> FloatArray:
 
 
 def pulled_back(block: Block, rows: FloatArray) -> ComplexArray:
-    """Return g, (K, N), such that the weighted rows of any columns times `rows` are Re(g·columns)."""
+    """Return g, (K, N): weighted rows of any columns, times `rows`, are Re(g·columns)."""
     points = block.s.size
     first = block.weight[:, 0] * rows[:, :points]
     second = block.weight[:, 1] * rows[:, points:]
     result: ComplexArray = first - 1j * second
     return result if block.turn is None else result * block.turn
+
+
+SKETCHED = 6
+"""Combinations of channels that stand for all of them while poles are only being looked for."""
+
+
+def sketch(block: Block) -> Block:
+    """Replace many channels by their strongest linear combinations, which have the same poles."""
+    if block.channels <= SKETCHED:
+        return block
+    scale = np.sqrt(np.mean(block.weight**2, axis=(1, 2)))
+    scaled = block.values * scale[:, np.newaxis]
+    gram = (scaled @ scaled.conj().T).real
+    mix = np.linalg.eigh(gram)[1][:, -SKETCHED:].T * scale
+    spread = np.mean(1 / block.weight**2, axis=1)
+    weight = 1 / np.sqrt(mix**2 @ spread)
+    return make_block(block.s, mix @ block.values, np.repeat(weight[:, np.newaxis], 2, axis=1))

@@ -10,8 +10,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 
 import numpy as np
-import scipy.optimize
-import scipy.stats
+import scipy.special
 
 from polefit.engine.blocks import Block, FloatArray
 from polefit.engine.projection import Solution
@@ -64,8 +63,4 @@ def residue_limits(
 
 def noncentrality(threshold: float, freedom: int, power: float) -> float:
     """Return λ for which a non-central χ² exceeds `threshold` with probability `power`."""
-
-    def excess(value: float) -> float:
-        return float(scipy.stats.ncx2.sf(threshold, freedom, value)) - power
-
-    return float(scipy.optimize.brentq(excess, 1e-6, 4 * threshold + 100.0))
+    return float(scipy.special.chndtrinc(threshold, freedom, 1 - power))

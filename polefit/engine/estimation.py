@@ -127,16 +127,16 @@ def estimate_model(
     blocks = _weigh(data, laws, None)
     progress("searching the order")
     found = search(blocks)
-    for _ in range(3):
+    for turn in range(4):
         progress("estimating the noise")
         laws = _laws(data, blocks, found.solution)
         before, blocks = blocks, _weigh(data, laws, found.solution)
         change = _change(before, blocks)
+        if turn > 0 and change < UNCHANGED:
+            break
         if change > RESHAPED:
             found = search(blocks, found.richest)
         found = take_up(blocks, found)
-        if change < UNCHANGED:
-            break
     solution = refine(
         blocks,
         solve(blocks, found.solution.sections, found.solution.direct),
@@ -181,14 +181,14 @@ def _settle_order(blocks: Sequence[Block], solution: Solution) -> _Settled:
     Where no finite order is exact, modes too weak to be worth their parameters one by one still
     bias the strong ones; the criterion is then Akaike's, which errs towards more.
     """
-    for _ in range(RAISES + 1):
+    for left in range(RAISES, -1, -1):
         info = information(solution)
         past = go_past(blocks, solution, info)
         pairs = zip(blocks, solution.parts, strict=True)
         whiteness = judge_whiteness([residual(block, solution, part) for block, part in pairs])
         more = parameters(blocks, past) - parameters(blocks, solution)
         gain = (solution.misfit - past.misfit) / variance_factor(blocks, past)
-        if whiteness.white or gain <= 2 * more:
+        if left == 0 or whiteness.white or gain <= 2 * more:
             break
         solution = split(blocks, refine(blocks, past, iterations=20, tolerance=1e-3))
     return _Settled(solution, info, past, whiteness)

@@ -13,8 +13,9 @@ from collections.abc import Sequence
 from typing import NamedTuple
 
 import numpy as np
+from numpy.typing import NDArray
 
-from polefit.engine.blocks import Block, FloatArray
+from polefit.engine.blocks import Block, FloatArray, sketch
 from polefit.engine.projection import Solution, residual, solve
 from polefit.engine.refinement import refine
 from polefit.engine.sections import Sections, from_poles
@@ -33,6 +34,7 @@ KEEP_CHANCE = 0.01
 FIRST_ORDER = 12
 LADDER = (20, 32, 48, 72, 96)
 LARGEST_ORDER = 96
+LOOKS_WHITE = 0.01
 RELOCATIONS = 5
 GROWTH_TRIALS = 8
 TRIALS = 64
@@ -132,6 +134,7 @@ def largest_order(blocks: Sequence[Block]) -> int:
 
 def _rich_fit(blocks: Sequence[Block]) -> Solution:
     """Raise the order in large steps until the criterion no longer improves."""
+    everything, blocks = blocks, [sketch(block) for block in blocks]
     low = min(float(block.s[0].imag) for block in blocks)
     low = low or min(float(block.s[min(1, block.s.size - 1)].imag) for block in blocks)
     high = max(float(block.s[-1].imag) for block in blocks)
@@ -140,22 +143,29 @@ def _rich_fit(blocks: Sequence[Block]) -> Solution:
     best = _vector_fit(blocks, start)
     for richer_order in LADDER:
         order = min(richer_order, most)
-        if order <= best.sections.order or _explained(blocks, best):
+        if order <= best.sections.order or (order > LADDER[0] and _explained(blocks, best)):
             break
         extra = starting_sections(low, high, order - best.sections.order)
         richer = _vector_fit(blocks, best.sections.join(extra))
         if _criterion(blocks, richer) >= _criterion(blocks, best):
             break
         best = richer
-    return best
+    if all(part is whole for part, whole in zip(blocks, everything, strict=True)):
+        return best
+    start = solve(everything, best.sections, best.direct)
+    return refine(everything, start, iterations=5, tolerance=1.0)
 
 
 def _explained(blocks: Sequence[Block], solution: Solution) -> bool:
-    """Tell whether the residual is at the known noise or looks like noise of unknown level."""
+    """Tell whether the residual is at the known noise or looks quite like noise.
+
+    Not asked of the first fit: a poor fit of few points may look like noise, too.
+    """
     if solution.misfit < samples(blocks) - parameters(blocks, solution):
         return True
     pairs = zip(blocks, solution.parts, strict=True)
-    return judge_whiteness([residual(block, solution, part) for block, part in pairs]).white
+    whiteness = judge_whiteness([residual(block, solution, part) for block, part in pairs])
+    return whiteness.probability > LOOKS_WHITE
 
 
 def _vector_fit(blocks: Sequence[Block], start: Sections) -> Solution:
@@ -207,7 +217,7 @@ def prune(blocks: Sequence[Block], start: Solution, places: int) -> Solution:
         trial = solve(blocks, current.sections.keep(mask), current.direct)
         trial = refine(blocks, trial, iterations=10, tolerance=0.1)
         rise = (trial.misfit - current.misfit) / level
-        allowed = float(limit[take].sum()) / (1 if take.size == 1 else 2)
+        allowed = _allowed(channels, places, take, current.sections.c1.size)
         if rise < allowed or (take.size == 1 and glitch[take[0]]):
             current = split(blocks, trial)
             kept = np.zeros(current.sections.count, dtype=bool)
@@ -216,6 +226,12 @@ def prune(blocks: Sequence[Block], start: Solution, places: int) -> Solution:
         else:
             kept[take] = True
     return refine(blocks, current, iterations=30, tolerance=1e-2)
+
+
+def _allowed(channels: int, places: int, take: NDArray[np.intp], pairs: int) -> float:
+    """Return the rise of χ² that noise alone explains when all of `take` leave at once."""
+    columns = int(np.sum(np.where(take < pairs, 2, 1)))
+    return threshold(channels, places, KEEP_CHANCE, columns=columns)
 
 
 def trial_grid(blocks: Sequence[Block], count: int) -> FloatArray:

@@ -14,7 +14,7 @@ from collections.abc import Sequence
 from typing import NamedTuple
 
 import numpy as np
-import scipy.stats
+import scipy.special
 from numpy.typing import NDArray
 
 from polefit.engine.blocks import (
@@ -208,7 +208,7 @@ def _concentration(
 
 def threshold(channels: int, places: int, chance: float, columns: int = 2) -> float:
     """Return the χ² that pure noise exceeds with probability `chance` over all `places`."""
-    return float(scipy.stats.chi2.isf(chance / max(places, 1), columns * channels))
+    return float(scipy.special.chdtri(columns * channels, chance / max(places, 1)))
 
 
 class Scan(NamedTuple):
@@ -297,13 +297,16 @@ def _products(
         rest = residual(piece, solution, part)
         # Σ w₁²·Re(t·a)·Re(t·b) + w₂²·Im(t·a)·Im(t·b) = Σ even·Re(ā·b) + Re(odd·a·b)
         even = (piece.weight[:, 0] ** 2 + piece.weight[:, 1] ** 2) / 2
-        odd = ((piece.weight[:, 0] ** 2 - piece.weight[:, 1] ** 2) / 2).astype(np.complex128)
-        if piece.turn is not None:
-            odd = odd * piece.turn**2
         left, right = x[:, :count], x[:, count:]
-        own += even @ np.abs(x) ** 2 + (odd @ x**2).real
-        cross += even @ (left.conj() * right).real + (odd @ (left * right)).real
-        both = even[:, :, np.newaxis] * model.conj() + odd[:, :, np.newaxis] * model
+        own += even @ (x.real**2 + x.imag**2)
+        cross += even @ (left.real * right.real + left.imag * right.imag)
+        both = even[:, :, np.newaxis] * model.conj()
+        odd = (piece.weight[:, 0] ** 2 - piece.weight[:, 1] ** 2) / 2
+        if odd.any():
+            odd = odd if piece.turn is None else odd * piece.turn**2
+            own += (odd @ x**2).real
+            cross += (odd @ (left * right)).real
+            both += odd[:, :, np.newaxis] * model
         stacked = np.concatenate((both.real, -both.imag), axis=1).transpose(0, 2, 1)
         with_model += stacked @ np.concatenate((x.real, x.imag))
         with_residual += (pulled_back(piece, rest) @ x).real

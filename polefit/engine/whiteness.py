@@ -10,7 +10,7 @@ from collections.abc import Sequence
 from typing import NamedTuple
 
 import numpy as np
-import scipy.stats
+import scipy.special
 
 from polefit.engine.blocks import FloatArray
 
@@ -71,7 +71,7 @@ def judge_whiteness(residuals: Sequence[FloatArray]) -> Whiteness:
         factors.extend(1 + 2 * correlation @ weight)
     if freedom == 0:
         return Whiteness(True, 1.0, 1.0)
-    probability = float(scipy.stats.chi2.sf(statistic, freedom))
+    probability = float(scipy.special.chdtrc(freedom, statistic))
     white = probability > CHANCE
     inflation = 1.0 if white else max(1.0, float(np.mean(factors)))
     return Whiteness(white, probability, inflation)

@@ -1,0 +1,190 @@
+"""What speaks for and against a mode: named facts, each with what was found and what was asked."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from polefit.engine.blocks import ComplexArray, FloatArray
+from polefit.engine.estimation import Estimation
+from polefit.engine.sections import residues
+from polefit.engine.stable_model import StableModel, compare_with_stable
+from polefit.modes import Evidence
+
+STABLE_MODEL_RISE = 10.8
+"""Rise of χ² that speaks against every stable model (χ² with one degree, p = 0.001)."""
+COLOURED_MISFIT = 10.0
+"""Where the residual is not noise-like a stable model must fit this many times worse."""
+COMPANION_MISFIT = (1.0, 3.0, 10.0)
+"""The same for a growing mode that shares its resonance curve with no, one, or more other modes of
+which one is stronger and decays. That is how a fit mends data that no small rational function
+describes: passive resonators, distorted by drive or behind unmodelled lines, were seen to reach 8
+with several companions, 4.5 with a coloured residual and 19 with both."""
+COMPANION_WIDTHS = 3.0
+"""How many half-widths apart two modes may lie to count as one resonance curve ..."""
+COMPANION_RATIO = 5.0
+"""... and how many times wider the other may be."""
+
+
+@dataclass(frozen=True)
+class Candidate:
+    """One section of the model, in rad/s.
+
+    Parameters
+    ----------
+    index : int
+        Number of the section.
+    pole : complex
+        Its upper or real pole.
+    covariance : (2, 2) float ndarray
+        Of real and imaginary part.
+    score : float
+        Wald χ² of its residues.
+    in_band, near_band : bool
+        Where it lies.
+    """
+
+    index: int
+    pole: complex
+    covariance: FloatArray
+    score: float
+    in_band: bool
+    near_band: bool
+
+
+@dataclass(frozen=True)
+class Comparison:
+    """The best stable model against the free one, and what casts doubt on the free one.
+
+    Parameters
+    ----------
+    stable : StableModel
+        The comparison.
+    companions : dict of int to int
+        For each growing mode in the band, how many modes share its resonance curve.
+    distorted : bool
+        Whether one of these shows that the data are not those of a small rational function.
+    """
+
+    stable: StableModel
+    companions: dict[int, int]
+    distorted: bool
+
+
+def compare(
+    claimed: Sequence[Candidate], estimation: Estimation, scale: float
+) -> Comparison | None:
+    """Fit the best stable model where a growing mode is in question; None where none is."""
+    growing = [c for c in claimed if c.pole.real > 0 and c.in_band]
+    if not growing:
+        return None
+    stable = compare_with_stable(
+        estimation.blocks,
+        estimation.solution,
+        [estimation.past, estimation.richest],
+        estimation.level,
+    )
+    companions = {c.index: _companions(c, estimation, scale) for c in growing}
+    asked = COMPANION_MISFIT[min(max(companions.values()), 2)]
+    return Comparison(stable, companions, stable.misfit_ratio < asked)
+
+
+def evidence_for(
+    c: Candidate,
+    estimation: Estimation,
+    against: Comparison | None,
+    distance: float,
+    factor: float,
+    scale: float,
+) -> tuple[Evidence, ...]:
+    """Collect what was tested on one mode.
+
+    Parameters
+    ----------
+    distance : float
+        Growth rate over its standard uncertainty.
+    factor : float
+        What is needed of it.
+    """
+    items = [
+        Evidence(
+            "growth rate",
+            abs(distance) > factor,
+            f"the growth rate lies {abs(distance):.3g} standard uncertainties from zero; "
+            f"{factor:.2f} are needed",
+        ),
+        Evidence("residue", True, f"its residues stand out of the noise by χ² = {c.score:.3g}"),
+        _persistence(c, estimation, scale),
+    ]
+    if against is not None and c.index in against.companions:
+        items.append(_against_stable(against, estimation, against.companions[c.index]))
+    return tuple(items)
+
+
+def _companions(c: Candidate, estimation: Estimation, scale: float) -> int:
+    """Count the modes on one resonance curve with a growing one, if a stronger one decays."""
+    sections = estimation.solution.sections
+    poles = sections.poles()
+    coefficients = np.concatenate([part.coefficients for part in estimation.solution.parts])
+    strength = np.linalg.norm(residues(sections, coefficients), axis=1)
+    distance = np.abs(poles - c.pole / scale)
+    own = int(np.argmin(distance))
+    width, widths = abs(poles[own].real), np.abs(poles.real)
+    near = (distance < COMPANION_WIDTHS * np.maximum(widths, width)) & (poles.imag > 0)
+    near &= widths < COMPANION_RATIO * width
+    stronger = near & (poles.real < 0) & (strength > strength[own])
+    return int(near.sum()) - 1 if stronger.any() else 0
+
+
+def _persistence(c: Candidate, estimation: Estimation, scale: float) -> Evidence:
+    """Check that the pole is there, on the same side, at a higher order."""
+    pole = c.pole / scale
+    std = math.sqrt(float(np.trace(c.covariance))) / scale
+    allowed = 5 * std + 0.5 * abs(pole.real)
+    name = "persistence over orders"
+    order = estimation.past.sections.order
+    if order == estimation.solution.sections.order:
+        return Evidence(name, None, "too few points for a model of higher order")
+    other = nearest(pole, estimation.past.sections.poles())
+    shift = math.inf if other is None else abs(other - pole)
+    passed = shift <= allowed
+    detail = (
+        f"with {order} poles instead of {estimation.solution.sections.order} "
+        f"it moves by {shift * scale:.3g} rad/s, {shift * scale / max(abs(c.pole), 1e-300):.2g} "
+        "of its magnitude"
+        if other is not None
+        else f"with {order} poles it is not found"
+    )
+    return Evidence(name, passed, detail)
+
+
+def _against_stable(against: Comparison, estimation: Estimation, companions: int) -> Evidence:
+    stable, whiteness = against.stable, estimation.whiteness
+    asked = COMPANION_MISFIT[2 if against.distorted else min(companions, 2)]
+    asked *= 1.0 if whiteness.white else COLOURED_MISFIT
+    detail = (
+        f"the best model without right-half-plane poles ({stable.order} poles) misses the data "
+        f"{stable.misfit_ratio:.4g} times as far"
+    )
+    doubts = [] if whiteness.white else ["the residual is not noise-like"]
+    if companions:
+        doubts.append("the mode lies on the resonance curve of a stronger, decaying one")
+    elif against.distorted:
+        doubts.append("a resonance in the band looks distorted")
+    if doubts:
+        detail += f"; as {' and '.join(doubts)}, {asked:g} times are asked for"
+    rise = stable.rise / whiteness.inflation
+    return Evidence(
+        "stable-model misfit", rise > STABLE_MODEL_RISE and stable.misfit_ratio > asked, detail
+    )
+
+
+def nearest(pole: complex, poles: ComplexArray) -> complex | None:
+    """Return the nearest pole of the same kind, real or one of a pair."""
+    same = poles[(poles.imag == 0) == (pole.imag == 0)]
+    if same.size == 0:
+        return None
+    return complex(same[int(np.argmin(np.abs(same - pole)))])
