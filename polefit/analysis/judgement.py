@@ -60,7 +60,7 @@ def judge(
     covariance = covariance * estimation.level * estimation.whiteness.inflation
     found = [
         _candidate(estimation, covariance, i, scale, band_hz)
-        for i in range(estimation.solution.sections.count)
+        for i in range(estimation.solution.sections.number)
     ]
     claimed, background = _claim(found, estimation, scale)
     deciding = sum(c.in_band for c in claimed)
@@ -220,7 +220,7 @@ def _node_views(
         [np.sqrt(np.mean(np.abs(block.values) ** 2, axis=1)) for block in estimation.blocks]
     )
     views = []
-    for index in range(sections.count):
+    for index in range(sections.number):
         pole = sections.poles()[poles[index]] * scale
         width = max(abs(pole.real), 1e-12 * abs(pole))
         listed = []
@@ -261,8 +261,8 @@ def residue_std(estimation: Estimation) -> FloatArray:
     factor = estimation.level * estimation.whiteness.inflation
     per_block = []
     for part, linear in zip(estimation.solution.parts, estimation.info.linear, strict=True):
-        out = np.zeros((sections.count, part.coefficients.shape[0], 2))
-        for index in range(sections.count):
+        out = np.zeros((sections.number, part.coefficients.shape[0], 2))
+        for index in range(sections.number):
             columns = section_columns(sections, index)
             rows = linear.inverse[:, columns]
             slope = linear.slope[:, columns]

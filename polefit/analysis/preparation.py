@@ -7,6 +7,7 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
+from polefit.engine.blocks import ComplexArray
 from polefit.engine.estimation import Measured
 from polefit.errors import ArgumentError, DataError, NotSupportedError
 from polefit.responses import Channel, ResponseSet
@@ -134,7 +135,7 @@ def _columns(one: ResponseSet, keep: list[int]) -> ResponseSet:
 def _measured(one: ResponseSet, scale: float) -> Measured:
     values = np.ascontiguousarray(one.values.T)
     known = np.zeros((values.shape[0], 2, one.points))
-    turn = None
+    turn: ComplexArray | None = None
     if one.sample_std is not None:
         known += (one.sample_std.T**2)[:, np.newaxis, :]
     if one.precision is not None:
@@ -143,9 +144,10 @@ def _measured(one: ResponseSet, scale: float) -> Measured:
         known[:, 1] += second.T**2
         if polar:
             size = np.abs(values)
-            turn = np.where(size > 0, values.conj() / np.where(size > 0, size, 1.0), 1.0)
+            unit = values.conj() / np.where(size > 0, size, 1.0)
+            turn = np.where(size > 0, unit, 1.0).astype(np.complex128)
     s = 2j * np.pi * one.frequency_hz / scale
-    return Measured(s, values, known, turn)
+    return Measured(s, values.astype(np.complex128, copy=False), known, turn)
 
 
 def node_names(channels: Sequence[Channel]) -> tuple[str, ...]:

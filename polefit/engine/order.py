@@ -150,10 +150,10 @@ def _rich_fit(blocks: Sequence[Block]) -> Solution:
         if _criterion(blocks, richer) >= _criterion(blocks, best):
             break
         best = richer
-    if all(part is whole for part, whole in zip(blocks, everything, strict=True)):
+    if all(few is all_ for few, all_ in zip(blocks, everything, strict=True)):
         return best
-    start = solve(everything, best.sections, best.direct)
-    return refine(everything, start, iterations=5, tolerance=1.0)
+    whole = solve(everything, best.sections, best.direct)
+    return refine(everything, whole, iterations=5, tolerance=1.0)
 
 
 def _explained(blocks: Sequence[Block], solution: Solution) -> bool:
@@ -198,10 +198,10 @@ def prune(blocks: Sequence[Block], start: Solution, places: int) -> Solution:
     pair = threshold(channels, places, KEEP_CHANCE)
     real = threshold(channels, places, KEEP_CHANCE, columns=1)
     current = split(blocks, start)
-    kept = np.zeros(current.sections.count, dtype=bool)
-    largest_batch = current.sections.count
-    while current.sections.count:
-        limit = np.where(np.arange(current.sections.count) < current.sections.c1.size, pair, real)
+    kept = np.zeros(current.sections.number, dtype=bool)
+    largest_batch = current.sections.number
+    while current.sections.number:
+        limit = np.where(np.arange(current.sections.number) < current.sections.c1.size, pair, real)
         level = variance_factor(blocks, current)
         scores = section_scores(blocks, current, information(current))
         score = scores.spared / level / limit
@@ -212,7 +212,7 @@ def prune(blocks: Sequence[Block], start: Solution, places: int) -> Solution:
         if weak.size == 0:
             break
         take = weak[: max(1, min(weak.size, largest_batch))]
-        mask = np.ones(current.sections.count, dtype=bool)
+        mask = np.ones(current.sections.number, dtype=bool)
         mask[take] = False
         trial = solve(blocks, current.sections.keep(mask), current.direct)
         trial = refine(blocks, trial, iterations=10, tolerance=0.1)
@@ -220,7 +220,7 @@ def prune(blocks: Sequence[Block], start: Solution, places: int) -> Solution:
         allowed = _allowed(channels, places, take, current.sections.c1.size)
         if rise < allowed or (take.size == 1 and glitch[take[0]]):
             current = split(blocks, trial)
-            kept = np.zeros(current.sections.count, dtype=bool)
+            kept = np.zeros(current.sections.number, dtype=bool)
         elif take.size > 1:
             largest_batch = take.size // 2
         else:
@@ -240,7 +240,8 @@ def trial_grid(blocks: Sequence[Block], count: int) -> FloatArray:
     axis = axis[axis > 0]
     if axis.size <= count:
         return axis
-    return axis[np.unique(np.linspace(0, axis.size - 1, count).astype(int))]
+    picked: FloatArray = axis[np.unique(np.linspace(0, axis.size - 1, count).astype(int))]
+    return picked
 
 
 def grow(blocks: Sequence[Block], start: Solution, places: int) -> Solution:

@@ -14,8 +14,8 @@ memory); where columns are too nearly dependent for that, from an orthogonal fac
 
 from __future__ import annotations
 
-from collections.abc import Sequence
-from typing import NamedTuple
+from collections.abc import Iterable, Sequence
+from typing import NamedTuple, cast
 
 import numpy as np
 
@@ -140,8 +140,8 @@ def cholesky(gram: FloatArray) -> FloatArray | None:
         return None
     if np.diagonal(lower, axis1=1, axis2=2).min() < TIE:
         return None
-    upper: FloatArray = lower.transpose(0, 2, 1) * size[:, np.newaxis, :]
-    return upper
+    upper = lower.transpose(0, 2, 1) * size[:, np.newaxis, :]
+    return cast(FloatArray, upper)
 
 
 def _normal_solve(factor: FloatArray, right: FloatArray) -> FloatArray:
@@ -152,20 +152,32 @@ def _normal_solve(factor: FloatArray, right: FloatArray) -> FloatArray:
 
 def _by_orthogonalisation(block: Block, sections: Sections, direct: int) -> Projected:
     m, n = sections.order + direct, sections.order
-    triangles = []
-    for piece in pieces(block):
-        rows = weighted(piece, evaluate_with_slopes(sections, piece.s, direct))
-        rows = np.concatenate((rows, piece.target[:, :, np.newaxis]), axis=2)
-        triangles.append(np.linalg.qr(rows, mode="r"))
-    r = triangles[0]
-    if len(triangles) > 1:
-        r = np.linalg.qr(np.concatenate(triangles, axis=1), mode="r")
+    r = orthogonal_triangle(
+        np.concatenate(
+            (
+                weighted(piece, evaluate_with_slopes(sections, piece.s, direct)),
+                piece.target[:, :, np.newaxis],
+            ),
+            axis=2,
+        )
+        for piece in pieces(block)
+    )
     basis = regular(r[:, :m, :m])
-    coefficients = np.linalg.solve(basis, r[:, :m, -1:])[:, :, 0]
+    coefficients = cast(FloatArray, np.linalg.solve(basis, r[:, :m, -1:])[:, :, 0])
     inner, reach = r[:, m : m + n, m : m + n], r[:, m : m + n, -1:]
     pull = (inner.transpose(0, 2, 1) @ reach)[:, :, 0]
     misfit = float(np.sum(r[:, m:, -1] ** 2))
     return Projected(coefficients, basis, r[:, :m, m : m + n], inner, pull, misfit)
+
+
+def orthogonal_triangle(rows: Iterable[FloatArray]) -> FloatArray:
+    """Return the triangular factors, (K, m, m), of tall matrices given in pieces (K, rows, m)."""
+    factor: FloatArray | None = None
+    for piece in rows:
+        stacked = piece if factor is None else np.concatenate((factor, piece), axis=1)
+        factor = cast(FloatArray, np.linalg.qr(stacked, mode="r"))
+    assert factor is not None
+    return factor
 
 
 def regular(r: FloatArray) -> FloatArray:

@@ -38,7 +38,7 @@ class Sections(NamedTuple):
         return 2 * self.c1.size + self.c.size
 
     @property
-    def count(self) -> int:
+    def number(self) -> int:
         """Number of sections, P + R."""
         return self.c1.size + self.c.size
 
@@ -83,7 +83,7 @@ class Sections(NamedTuple):
         return Sections(self.c1, self.c0, np.delete(self.c, index - p))
 
     def keep(self, mask: NDArray[np.bool_]) -> Sections:
-        """Return the sections where `mask`, of length `count`, is true."""
+        """Return the sections where `mask`, of length `number`, is true."""
         p = self.c1.size
         return Sections(self.c1[mask[:p]], self.c0[mask[:p]], self.c[mask[p:]])
 

@@ -11,7 +11,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
-from typing import NamedTuple
+from typing import NamedTuple, cast
 
 import numpy as np
 import scipy.special
@@ -75,7 +75,8 @@ def information(solution: Solution) -> Information:
         slopes, along = chain(solution.sections, part.coefficients)
         flat = (part.inner @ slopes).reshape(part.coefficients.shape[0] * n, n)
         total += flat.T @ flat
-        inverse = np.linalg.solve(part.factor, np.eye(part.factor.shape[1])[np.newaxis])
+        identity = np.eye(part.factor.shape[1])[np.newaxis]
+        inverse = cast(FloatArray, np.linalg.solve(part.factor, identity))
         linear.append(Linear(inverse, inverse @ (part.coupling @ slopes) + along))
     return Information(total, tuple(linear))
 
@@ -163,7 +164,7 @@ def _wald(solution: Solution, info: Information, columns: NDArray[np.intp]) -> F
     # own poles are empty rows; the small addition also settles what the data leave open
     moved = np.linalg.solve(stiffness + 1e-13 * np.eye(n), right)
     explained = np.sum(right * moved, axis=(1, 2))
-    return np.maximum(direct - explained, 0.0)
+    return cast(FloatArray, np.maximum(direct - explained, 0.0))
 
 
 def _narrow(blocks: Sequence[Block], sections: Sections, index: int) -> bool:
@@ -303,10 +304,10 @@ def _products(
         both = even[:, :, np.newaxis] * model.conj()
         odd = (piece.weight[:, 0] ** 2 - piece.weight[:, 1] ** 2) / 2
         if odd.any():
-            odd = odd if piece.turn is None else odd * piece.turn**2
-            own += (odd @ x**2).real
-            cross += (odd @ (left * right)).real
-            both += odd[:, :, np.newaxis] * model
+            turned = odd.astype(np.complex128) if piece.turn is None else odd * piece.turn**2
+            own += (turned @ x**2).real
+            cross += (turned @ (left * right)).real
+            both += turned[:, :, np.newaxis] * model
         stacked = np.concatenate((both.real, -both.imag), axis=1).transpose(0, 2, 1)
         with_model += stacked @ np.concatenate((x.real, x.imag))
         with_residual += (pulled_back(piece, rest) @ x).real

@@ -15,7 +15,7 @@ import numpy as np
 import scipy.linalg
 
 from polefit.engine.blocks import Block, FloatArray, pieces, weighted
-from polefit.engine.projection import cholesky
+from polefit.engine.projection import cholesky, orthogonal_triangle
 from polefit.engine.sections import Sections, evaluate, from_poles
 
 
@@ -100,10 +100,7 @@ def _reduced(block: Block, sections: Sections, direct: int) -> FloatArray:
     assert grams is not None
     factor = cholesky(grams)
     if factor is None:
-        triangles = [np.linalg.qr(_rows(piece, sections, direct), mode="r") for piece in parts]
-        factor = triangles[0]
-        if len(triangles) > 1:
-            factor = np.linalg.qr(np.concatenate(triangles, axis=1), mode="r")
+        factor = orthogonal_triangle(_rows(piece, sections, direct) for piece in parts)
     return factor[:, n + direct :, n + direct :].reshape(-1, n + 1)
 
 
