@@ -66,14 +66,17 @@ def convert(
     a, b, c, d = _diagonals(responses.quantity, quantity, old, new)
     shape = (responses.points, ports, ports)
     matrices = responses.values[:, order].reshape(shape)
-    inverse = _inverse(c, d, matrices, responses, quantity)
-    numerator = a[:, np.newaxis] * np.eye(ports) + b[:, np.newaxis] * matrices
-    result = numerator @ inverse
-    std = _known_std(responses)
-    if std is not None:
-        left = b[:, np.newaxis] * np.eye(ports) - result * d
-        variance = np.abs(left) ** 2 @ std[:, order].reshape(shape) ** 2 @ np.abs(inverse) ** 2
-        std = _unordered(np.sqrt(variance), order)
+    with np.errstate(all="ignore"):  # what is not finite is refused
+        inverse = _inverse(c, d, matrices, responses, quantity)
+        numerator = a[:, np.newaxis] * np.eye(ports) + b[:, np.newaxis] * matrices
+        result = numerator @ inverse
+        _refuse_not_finite(result, responses, quantity)
+        std = _known_std(responses)
+        if std is not None:
+            left = b[:, np.newaxis] * np.eye(ports) - result * d
+            variance = np.abs(left) ** 2 @ std[:, order].reshape(shape) ** 2 @ np.abs(inverse) ** 2
+            _refuse_not_finite(variance, responses, quantity)
+            std = _unordered(np.sqrt(variance), order)
     return replace(
         responses,
         values=_unordered(result, order),
@@ -183,11 +186,22 @@ def _diagonals(
     return a, b, c, d
 
 
+def _refuse_not_finite(matrices: np.ndarray, responses: ResponseSet, quantity: str) -> None:
+    bad = np.flatnonzero(~np.isfinite(matrices).all(axis=(1, 2)))
+    if bad.size:
+        raise DataError(
+            f"the {responses.quantity} matrix at {responses.frequency_hz[bad[0]]:.9g} Hz is too "
+            f"large to be converted to {quantity}; leave out that point, or use the "
+            f"{responses.quantity} as it is"
+        )
+
+
 def _inverse(
     c: FloatArray, d: FloatArray, matrices: ComplexArray, responses: ResponseSet, quantity: str
 ) -> ComplexArray:
     """Invert c + d M, where that is more than the rounding of its two terms."""
     terms = d[:, np.newaxis] * matrices
+    _refuse_not_finite(terms, responses, quantity)
     divisor = c[:, np.newaxis] * np.eye(c.size) + terms
     size = np.abs(c) + np.abs(terms).max(axis=-1)  # by rows, whose units may differ
     empty = np.any(size == 0, axis=-1)

@@ -6,7 +6,17 @@ from pathlib import Path
 
 
 class PolefitError(Exception):
-    """Base class of every error that polefit raises on purpose."""
+    """Base class of every error that polefit raises on purpose.
+
+    Parameters
+    ----------
+    message : str
+        What is wrong, and the remedy. Folded into one printable line, since names taken from
+        files may hold anything.
+    """
+
+    def __init__(self, message: str = "") -> None:
+        super().__init__(one_line(message))
 
 
 class ArgumentError(PolefitError, ValueError):
@@ -52,7 +62,7 @@ class FileError(PolefitError):
                 "" if self.line is None else f"line {self.line}: ",
             )
         )
-        return one_line(f"{place}{self.what}; {self.remedy}")
+        return f"{place}{self.what}; {self.remedy}"
 
     def in_file(self, file: str | Path) -> FileError:
         """Return the same error naming `file`, for parsers that only see text or bytes."""

@@ -170,6 +170,16 @@ def test_a_matrix_without_counterpart_names_the_frequency():
         convert(data(s, "scattering", 50.0), "impedance")
 
 
+def test_numbers_too_large_to_be_converted():
+    s = invented(1)
+    s[1] = 1.7e308
+    with pytest.raises(DataError, match="too large"):
+        convert(data(s, "scattering", 50.0), "impedance")
+    z = data(np.full((5, 1, 1), 1e-200 + 0j), "impedance", sample_std=np.full(5, 1e-150))
+    with pytest.raises(DataError, match="too large"):
+        convert(z, "admittance")
+
+
 def test_missing_responses_are_named():
     part = data(invented(), "scattering", 50.0).select(["in", "mid"])
     with pytest.raises(DataError, match=r"needs all 9 .*missing: out ← in, out ← mid, out"):

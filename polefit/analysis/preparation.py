@@ -133,7 +133,7 @@ def _columns(one: ResponseSet, keep: list[int]) -> ResponseSet:
 
 
 def _measured(one: ResponseSet, scale: float) -> Measured:
-    values = np.ascontiguousarray(one.values.T)
+    values: ComplexArray = np.ascontiguousarray(one.values.T, dtype=np.complex128)
     known = np.zeros((values.shape[0], 2, one.points))
     turn: ComplexArray | None = None
     if one.sample_std is not None:
@@ -146,8 +146,8 @@ def _measured(one: ResponseSet, scale: float) -> Measured:
             size = np.abs(values)
             unit = values.conj() / np.where(size > 0, size, 1.0)
             turn = np.where(size > 0, unit, 1.0).astype(np.complex128)
-    s = 2j * np.pi * one.frequency_hz / scale
-    return Measured(s, values.astype(np.complex128, copy=False), known, turn)
+    s: ComplexArray = np.asarray(2j * np.pi * one.frequency_hz / scale, dtype=np.complex128)
+    return Measured(s, values, known, turn)
 
 
 def node_names(channels: Sequence[Channel]) -> tuple[str, ...]:

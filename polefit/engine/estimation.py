@@ -241,7 +241,7 @@ def _laws(
 
 def go_past(blocks: Sequence[Block], solution: Solution, info: Information) -> Solution:
     """Add two pairs where they help most, wanted or not, to see what depends on the order."""
-    frequencies = trial_grid(blocks, TRIALS)
+    frequencies = trial_grid(blocks, TRIALS // 2)
     if solution.sections.order + 4 > largest_order(blocks) or frequencies.size < 4:
         return solution
     gap = np.gradient(frequencies)
@@ -252,7 +252,7 @@ def go_past(blocks: Sequence[Block], solution: Solution, info: Information) -> S
     second = int(np.argmax(np.where(away, gain, -1.0)))
     richer = solution.sections.join(from_poles(poles[[first, second]]))
     return split(
-        blocks, refine(blocks, solve(blocks, richer, solution.direct), iterations=8, tolerance=0.1)
+        blocks, refine(blocks, solve(blocks, richer, solution.direct), iterations=8, tolerance=0.5)
     )
 
 

@@ -139,7 +139,7 @@ def _reweighted(squares: FloatArray, shapes: FloatArray, fixed: FloatArray) -> F
             new = np.zeros(2)
             new[keep] = right[keep] / matrix[keep, keep]
         new = np.maximum(new, 0.0)
-        done = np.allclose(new, x, rtol=1e-4, atol=0)
+        done = np.allclose(new, x, rtol=1e-3, atol=0)
         x = new
         if done:
             break

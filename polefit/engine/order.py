@@ -147,13 +147,14 @@ def _rich_fit(blocks: Sequence[Block]) -> Solution:
             break
         extra = starting_sections(low, high, order - best.sections.order)
         richer = _vector_fit(blocks, best.sections.join(extra))
+        richer = refine(blocks, richer, iterations=5, tolerance=1.0)
         if _criterion(blocks, richer) >= _criterion(blocks, best):
             break
         best = richer
     if all(few is all_ for few, all_ in zip(blocks, everything, strict=True)):
         return best
     whole = solve(everything, best.sections, best.direct)
-    return refine(everything, whole, iterations=5, tolerance=1.0)
+    return refine(everything, whole, iterations=2, tolerance=1.0)
 
 
 def _explained(blocks: Sequence[Block], solution: Solution) -> bool:
@@ -165,11 +166,11 @@ def _explained(blocks: Sequence[Block], solution: Solution) -> bool:
         return True
     pairs = zip(blocks, solution.parts, strict=True)
     whiteness = judge_whiteness([residual(block, solution, part) for block, part in pairs])
-    return whiteness.probability > LOOKS_WHITE
+    return whiteness.probability > LOOKS_WHITE or whiteness.tendency < 2.0
 
 
 def _vector_fit(blocks: Sequence[Block], start: Sections) -> Solution:
-    """Relocate a few times and keep the best, then refine a little."""
+    """Relocate a few times and keep the best."""
     sections = start
     best: Solution | None = None
     for _ in range(RELOCATIONS):
@@ -181,7 +182,7 @@ def _vector_fit(blocks: Sequence[Block], start: Sections) -> Solution:
             if not improved:
                 break
     assert best is not None
-    return refine(blocks, split(blocks, best), iterations=5, tolerance=1.0)
+    return split(blocks, best)
 
 
 def split(blocks: Sequence[Block], solution: Solution) -> Solution:

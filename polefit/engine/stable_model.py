@@ -74,11 +74,11 @@ def compare_with_stable(
     StableModel
     """
     best: tuple[float, Solution] | None = None
-    starts = [on_axis(free.sections), reflected(free.sections)]
+    starts = [reflected(free.sections), on_axis(free.sections)]
     starts += [reflected(solution.sections) for solution in richer]
     for number, start in enumerate(starts):
-        if number >= 2 and best is not None and best[1].misfit > FAR * free.misfit:
-            break
+        if best is not None and best[1].misfit > (FAR**3, FAR)[number > 1] * free.misfit:
+            break  # the starts that took part already say how far off a stable model is
         confined = _confine(blocks, start, free)
         # each further parameter lowers χ² by one in the mean, whether it is needed or not
         cost = confined.misfit / level + parameters(blocks, confined)

@@ -6,6 +6,7 @@ models", Biometrika 65(2), 297-303, 1978 (from memory), along the frequency axis
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 from typing import NamedTuple
 
@@ -27,12 +28,16 @@ class Whiteness(NamedTuple):
         Whether white noise would look like this.
     probability : float
         Of so much correlation in white noise.
+    tendency : float
+        Sum of the first correlations over its standard deviation: what a model leaves out makes
+        it positive, too many parameters make it negative.
     inflation : float
         Factor >= 1 by which correlated residuals raise the variance of estimates; 1 when white.
     """
 
     white: bool
     probability: float
+    tendency: float
     inflation: float
 
 
@@ -49,6 +54,7 @@ def judge_whiteness(residuals: Sequence[FloatArray]) -> Whiteness:
     Whiteness
     """
     statistic, freedom = 0.0, 0
+    first, first_variance = 0.0, 0.0
     factors: list[float] = []
     for residual in residuals:
         channels, rows = residual.shape
@@ -67,11 +73,13 @@ def judge_whiteness(residuals: Sequence[FloatArray]) -> Whiteness:
         scaled = correlation**2 * (2 * points) * (points + 2) / (points - lag)
         statistic += float(scaled.sum())
         freedom += channels * lags
+        first += float(correlation[:, :3].sum())
+        first_variance += channels * min(3, lags) / (2 * points)
         weight = 1 - lag / (lags + 1)
         factors.extend(1 + 2 * correlation @ weight)
     if freedom == 0:
-        return Whiteness(True, 1.0, 1.0)
+        return Whiteness(True, 1.0, 0.0, 1.0)
     probability = float(scipy.special.chdtrc(freedom, statistic))
     white = probability > CHANCE
     inflation = 1.0 if white else max(1.0, float(np.mean(factors)))
-    return Whiteness(white, probability, inflation)
+    return Whiteness(white, probability, first / math.sqrt(first_variance), inflation)

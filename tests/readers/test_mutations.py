@@ -22,28 +22,45 @@ TOKENS = [
     b"\t", b";", b",", b"99999999", b"# GHz Y MA R 1", "Ω".encode(), b"freq", b"%n", b"e", b"1d5",
 ]  # fmt: skip
 
-TOUCHSTONE = [
-    "! invented\n# GHz S MA R 50\n"
-    + "".join(f"{i} 0.{i}5 {20 * i} 3.57 157 .04 76 0.66 -14\n" for i in range(1, 9))
-    + "2 1.1 0.3 45 0.2\n4 1.2 0.3 50 0.2\n",
-    "[Version] 2.0\n# MHz Z RI R 50\n[Number of Ports] 3\n[Number of Frequencies] 4\n"
-    "[Reference] 50 75\n 100\n[Matrix Format] Lower\n[Network Data]\n"
-    + "".join(f"{i} " + "1.5 -2 " * 6 + "\n" for i in range(1, 5))
-    + "[End]\n",
-    "#\n! Port[1] = in\n" + "".join(f"{i} {i / 7:.6f} {i * 11}\n" for i in range(1, 20)),
-]
-DELIMITED = [
-    "freq [GHz],Re(Z(a)) [Ohm],Im(Z(a)) [Ohm],Re(Z(b)),Im(Z(b))\n"
-    + "".join(f"{i},{i / 7:.5f},{-i},{i / 3:.3e},2\n" for i in range(1, 12)),
-    "Frequenz (MHz);Re(Y);Im(Y)\n"
-    + "".join(f"{i},5;{i},25;-{i},75\n" for i in range(1, 12)),
-    "freq (Hz)\tV(a)\n" + "".join(f"{i}e6\t({i}.5dB,{i}°)\n" for i in range(1, 12)),
-    (DATA / "wrdata_names.data").read_bytes(),
-    (DATA / "two_node_print.log").read_bytes()[:4000],
-]  # fmt: skip
-RAW_ASCII = [(DATA / n).read_bytes() for n in ("two_node_write.raw", "two_node_batch_ascii.raw")]
-RAW_BINARY = [(DATA / n).read_bytes() for n in ("two_node_batch.raw", "ports.raw")]
 DRIVEN = {"driven": "gate2"}
+# Content, extension and options with which the whole file is read.
+CASES = {
+    "touchstone": [
+        ("! invented\n# GHz S MA R 50\n"
+         + "".join(f"{i} 0.{i}5 {20 * i} 3.57 157 .04 76 0.66 -14\n" for i in range(1, 9))
+         + "2 1.1 0.3 45 0.2\n4 1.2 0.3 50 0.2\n", ".s2p", {}),
+        ("[Version] 2.0\n# MHz Z RI R 50\n[Number of Ports] 3\n[Number of Frequencies] 4\n"
+         "[Reference] 50 75\n 100\n[Matrix Format] Lower\n[Network Data]\n"
+         + "".join(f"{i} " + "1.5 -2 2 3 9 1.5 -2 2 7 9 1 3\n" for i in range(1, 5))
+         + "[End]\n", ".s3p", {"quantity": "admittance"}),
+        ("#\n! Port[1] = in\n" + "".join(f"{i} {i / 7:.6f} {i * 11}\n" for i in range(1, 20)),
+         ".s1p", {"quantity": "impedance"}),
+        ("# Hz Y RI R 50 75\n" + "".join(f"{i} 1 2 3 4 5 6 7 8\n" for i in range(1, 20)),
+         ".ts", {"scaling": "absolute"}),
+    ],
+    "delimited": [
+        ("freq [GHz],Re(Z(a)) [Ohm],Im(Z(a)) [Ohm],Re(Z(b)),Im(Z(b))\n"
+         + "".join(f"{i},{i / 7:.5f},{-i},{i / 3:.3e},2\n" for i in range(1, 12)), ".csv", {}),
+        ("Frequenz (MHz);Re(Y);Im(Y)\n"
+         + "".join(f"{i},5;{i},25;-{i},75\n" for i in range(1, 12)), ".csv", {}),
+        ("freq (Hz)\tV(gate2)\n" + "".join(f"{i}e6\t({i}.5dB,{i}°)\n" for i in range(1, 12)),
+         ".txt", DRIVEN),
+        ("f (Hz),Z\n" + "".join(f"{i}e6,({i}.5-{i}j)\n" for i in range(1, 12)), ".csv", {}),
+        ("".join(f"{i}e6 {i}.5 {i}\n" for i in range(1, 12)), ".dat",
+         {"quantity": "impedance", "form": "magnitude-angle", "angle_unit": "deg"}),
+        ((DATA / "wrdata_names.data").read_bytes(), ".data", DRIVEN),
+        ((DATA / "two_node_print.log").read_bytes()[:4000], ".log", DRIVEN),
+    ],
+    "raw ascii": [
+        ((DATA / "two_node_write.raw").read_bytes(), ".raw", DRIVEN),
+        ((DATA / "two_node_batch_ascii.raw").read_bytes(), ".raw", DRIVEN),
+    ],
+    "raw binary": [
+        ((DATA / "two_node_batch.raw").read_bytes(), ".raw", {**DRIVEN, "quantity": "transfer"}),
+        ((DATA / "ports.raw").read_bytes(), ".raw", {}),
+    ],
+    "hdf5": [],  # made by hdf5()
+}  # fmt: skip
 
 
 def hdf5(folder):
@@ -63,22 +80,24 @@ def hdf5(folder):
         sample_std=np.ones((40, 2)),
         source=Source("a.s2p", "0" * 64, "Touchstone 1.0", ("one", "two")),
     )
-    contents = []
+    cases = []
     for name, data in (("full.h5", full), ("two.h5", [plain, plain])):
         polefit.write_hdf5(folder / name, data)
-        contents.append((folder / name).read_bytes())
-    return contents
+        cases.append(((folder / name).read_bytes(), ".h5", {}))
+    return cases
 
 
 def mutated(content, random):
     """One to three wounds: flipped, lost, doubled, moved or foreign bytes; or a cut."""
     data = bytearray(content)
-    for _ in range(random.integers(1, 4)):
+    for _ in range(random.choice([1, 1, 1, 2, 4])):
         at = int(random.integers(0, max(len(data), 1)))
-        length = int(random.choice([1, 2, 8, 60, 500]))
-        match random.integers(0, 9):
+        length = int(random.choice([1, 1, 1, 2, 8, 60, 500]))
+        match random.integers(0, 10):
             case 0:
                 data[at : at + 1] = bytes([random.integers(0, 256)])
+            case 9:
+                data[at : at + 1] = bytes([random.choice(list(b"0123456789.-+eE ,;\n"))])
             case 1:
                 del data[at : at + length]
             case 2:
@@ -102,40 +121,29 @@ def mutated(content, random):
     return bytes(data)
 
 
-CASES = {
-    "touchstone": (TOUCHSTONE, (".s2p", ".s3p", ".s1p"), [{}, {"quantity": "impedance"}]),
-    "delimited": (DELIMITED, (".csv", ".txt"), [{}, DRIVEN, {"quantity": "impedance",
-                                                            "form": "real-imaginary"}]),
-    "raw ascii": (RAW_ASCII, (".raw",), [DRIVEN, {}]),
-    "raw binary": (RAW_BINARY, (".raw",), [DRIVEN, {}]),
-    "hdf5": (None, (".h5",), [{}]),
-}  # fmt: skip
-
-
 @pytest.mark.parametrize("case", CASES)
 def test_nothing_escapes(case, tmp_path):
-    bases, suffixes, options = CASES[case]
     random = np.random.default_rng(2026)
     tried = refused = 0
-    for base in bases or hdf5(tmp_path):
+    for base, suffix, options in CASES[case] or hdf5(tmp_path):
         raw = base if isinstance(base, bytes) else base.encode()
+        path = tmp_path / f"damaged{suffix}"
+        path.write_bytes(raw)
+        assert polefit.read_all(path, **options)
         for _ in range(EACH):
-            path = tmp_path / f"damaged{suffixes[tried % len(suffixes)]}"
             path.write_bytes(mutated(raw, random))
             tried += 1
-            for given in options:
-                try:
-                    read = polefit.read_all(path, **given)
-                except PolefitError as error:
-                    refused += 1
-                    text = str(error)
-                    assert "\n" not in text
-                    assert text.isprintable()
-                    if isinstance(error, FileError):
-                        assert text.startswith(f"{path}: ")
-                else:
-                    assert read
-                    assert all(np.isfinite(one.values).all() for one in read)
+            try:
+                read = polefit.read_all(path, **options)
+            except PolefitError as error:
+                refused += 1
+                text = str(error)
+                assert text.isprintable()  # one line
+                if isinstance(error, FileError):
+                    assert text.startswith(f"{path}: ")
+            else:
+                assert read
+                assert all(np.isfinite(one.values).all() for one in read)
     assert tried >= 200
     # Else the mutations are too gentle, or so rough that no parser beyond the first is reached.
-    assert 0.1 < refused / (tried * len(options)) < 0.995
+    assert 0.2 < refused / tried < 0.95
