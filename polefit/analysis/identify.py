@@ -123,7 +123,7 @@ def _answer(prepared: Prepared, estimation: Estimation, confidence: float) -> Id
         fit=fit,
         model=model,
         detection=_detection(estimation, prepared.scale_rad_per_s),
-        notes=_notes(prepared, estimation, fit),
+        notes=(*_notes(prepared, estimation, fit), *_edge_notes(judged.modes, band)),
         noise_std=tuple(np.sqrt(v.sum(axis=1)).T for v in estimation.noise),
     )
 
@@ -248,3 +248,14 @@ def _notes(prepared: Prepared, estimation: Estimation, fit: FitQuality) -> tuple
             f"variances were raised {estimation.whiteness.inflation:.3g} times"
         )
     return tuple(dict.fromkeys(notes))
+
+
+def _edge_notes(modes: Sequence[Mode], band: tuple[float, float]) -> list[str]:
+    """Tell of growing modes that the band's edge keeps from deciding the verdict."""
+    return [
+        f"a mode at {mode.frequency_hz.value:.4g} Hz grows, but lies at the edge of the band or "
+        f"beyond it ({band[0]:.4g} to {band[1]:.4g} Hz) and decides nothing; simulate a band that "
+        "has it well inside"
+        for mode in modes
+        if not mode.in_band and mode.pole_rad_per_s.real > 0 and mode.verdict != "stable"
+    ]

@@ -113,7 +113,7 @@ def evaluate(sections: Sections, s: ComplexArray, direct: int) -> ComplexArray:
     sections : Sections
         P second-order and R first-order sections.
     s : (N,) complex ndarray
-        Normalised complex frequency, on the imaginary axis.
+        Normalised complex frequency.
     direct : int
         0: none, 1: constant, 2: constant and s.
 
@@ -122,10 +122,28 @@ def evaluate(sections: Sections, s: ComplexArray, direct: int) -> ComplexArray:
     (N, 2P + R + direct) complex ndarray
         s/q, √|c0|/q with q = s² + c1·s + c0, 1/(s + c), then 1 and s as asked for.
     """
-    # on the axis, s = jω, real arithmetic is several times faster than complex division
-    omega = s.imag[:, np.newaxis]
     p, r = sections.c1.size, sections.c.size
     columns = np.empty((s.size, 2 * p + r + direct), dtype=np.complex128)
+    fill = _fill if s.real.any() else _fill_on_axis
+    fill(sections, s, columns[:, : 2 * p + r])
+    if direct:
+        columns[:, 2 * p + r] = 1.0
+    if direct > 1:
+        columns[:, 2 * p + r + 1] = s
+    return columns
+
+
+def _fill(sections: Sections, s: ComplexArray, columns: ComplexArray) -> None:
+    p, column = sections.c1.size, s[:, np.newaxis]
+    inverse = 1.0 / ((column + sections.c1) * column + sections.c0)
+    np.multiply(column, inverse, out=columns[:, :p])
+    np.multiply(sections.weights(), inverse, out=columns[:, p : 2 * p])
+    np.divide(1.0, column + sections.c, out=columns[:, 2 * p :])
+
+
+def _fill_on_axis(sections: Sections, s: ComplexArray, columns: ComplexArray) -> None:
+    """For s = jω: real arithmetic, several times faster than complex division."""
+    p, omega, weights = sections.c1.size, s.imag[:, np.newaxis], sections.weights()
     real, imag = columns.real, columns.imag
     a, b = sections.c0 - omega**2, omega * sections.c1
     size = a**2 + b**2
@@ -133,17 +151,11 @@ def evaluate(sections: Sections, s: ComplexArray, direct: int) -> ComplexArray:
     b /= size
     np.multiply(omega, b, out=real[:, :p])
     np.multiply(omega, a, out=imag[:, :p])
-    weights = sections.weights()
     np.multiply(weights, a, out=real[:, p : 2 * p])
     np.multiply(-weights, b, out=imag[:, p : 2 * p])
     size = omega**2 + sections.c**2
-    np.divide(sections.c, size, out=real[:, 2 * p : 2 * p + r])
-    np.divide(-omega, size, out=imag[:, 2 * p : 2 * p + r])
-    if direct:
-        columns[:, 2 * p + r] = 1.0
-    if direct > 1:
-        columns[:, 2 * p + r + 1] = s
-    return columns
+    np.divide(sections.c, size, out=real[:, 2 * p :])
+    np.divide(-omega, size, out=imag[:, 2 * p :])
 
 
 def evaluate_with_slopes(sections: Sections, s: ComplexArray, direct: int) -> ComplexArray:
