@@ -198,7 +198,12 @@ def _run_verdict(judged: Judged, fit: FitQuality, band: tuple[float, float]) -> 
     if fit.rms_relative > POOR_FIT and fit.noise_relative < POOR_FIT:
         return "undecided", "the model does not describe the data well enough to carry a verdict"
     if unstable:
-        return "unstable", f"{len(unstable)} mode(s) in the band grow, all evidence agreeing"
+        grow = (
+            "1 mode in the band grows"
+            if len(unstable) == 1
+            else f"{len(unstable)} modes in the band grow"
+        )
+        return "unstable", f"{grow}, all evidence agreeing"
     if undecided:
         failed = [e for e in undecided[0].evidence if e.passed is False]
         why = failed[0].detail if failed else "its growth rate cannot be told from zero"
