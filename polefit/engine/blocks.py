@@ -83,11 +83,21 @@ def weighted(block: Block, columns: ComplexArray) -> FloatArray:
 
 PIECE = 8192
 """Channels times points that are worked on at once: their columns fit into the cache."""
+COLUMNS = 32
+"""Columns that a channel usually has."""
 
 
-def pieces(block: Block) -> list[Block]:
-    """Cut a block along the frequency axis into parts small enough to work on at once."""
-    length = max(PIECE // block.channels, 64)
+def pieces(block: Block, shared: int = 0) -> list[Block]:
+    """Cut a block along the frequency axis into parts small enough to work on at once.
+
+    Parameters
+    ----------
+    block : Block
+        Data.
+    shared : int
+        How many columns are formed for all channels together, if more than usual.
+    """
+    length = max(PIECE // max(block.channels, shared // COLUMNS), 64)
     if block.s.size <= length:
         return [block]
     points = block.s.size

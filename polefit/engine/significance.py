@@ -289,7 +289,7 @@ def _products(
     with_model = np.zeros((channels, inner, 2 * count))
     with_residual = np.zeros((channels, 2 * count))
     scale = trial.weights()
-    for piece in pieces(block):
+    for piece in pieces(block, shared=4 * count):
         columns = evaluate(trial, piece.s, 0)
         along, across = columns[:, :count], columns[:, count:] / scale
         # residue x + jy  ->  x·(2s/q − 2·Re p/q) − y·2·Im p/q
