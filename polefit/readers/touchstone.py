@@ -7,7 +7,9 @@ was taken is always told, and ``scaling="absolute"`` takes the other.
 
 from __future__ import annotations
 
+import math
 import re
+from collections.abc import Iterable
 from dataclasses import replace
 from typing import Literal
 
@@ -38,6 +40,7 @@ _QUANTITY: dict[str, Quantity] = {
     "G": "inverse-hybrid",
 }
 _SUFFIX = re.compile(r"\.([syzhg])(\d{1,6})p", re.IGNORECASE)
+_NUMBER = re.compile(r"[+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?")
 _ROWS = 4096
 
 
@@ -100,12 +103,12 @@ def parse(content: Content, options: ReadOptions, *, stem: str, suffix: str = ""
         quantity=_QUANTITY[header.option.parameter],
         reference_ohm=layout.references if header.option.parameter == "S" else None,
     )
-    comment_line = header.reference_comment_line or found.reference_comment_line
+    comments = (*header.reference_comments, *found.reference_comments)
     return Parsed(
         responses=_with_precision(responses, _precision(header, layout), scales),
         format=f"Touchstone {_version(header)}",
         assumptions=(*assumed, *named, *_noise_note(layout)),
-        warnings=(*layout.warnings, *_warnings(header, layout, suffix, comment_line)),
+        warnings=(*layout.warnings, *_warnings(header, layout, suffix, comments)),
         scaling=_scaling(header, scales),
         frequency_unit=unit_name(header.option.unit_hz),
     )
@@ -274,19 +277,29 @@ def _noise_note(layout: Layout) -> tuple[str, ...]:
 
 
 def _warnings(
-    header: Header, layout: Layout, suffix: str, comment_line: int | None
+    header: Header, layout: Layout, suffix: str, comments: Iterable[tuple[int, str]]
 ) -> tuple[str, ...]:
     found = []
     parameter = header.option.parameter
     letter = _SUFFIX.fullmatch(suffix)
     if letter and letter[1].upper() not in ("S", parameter):
         found.append(f"named {suffix}, but its option line says {parameter}, which is taken")
-    if comment_line is not None and parameter == "S":
+    other = (line for line, said in comments if _states_other(said, layout.references))
+    if parameter == "S" and (comment_line := next(other, None)) is not None:
         listed = ", ".join(f"{r:g}" for r in dict.fromkeys(layout.references))
         found.append(
-            f"line {comment_line}: a comment states port impedances; the standard's reference, "
-            f"{listed} Ω, is taken instead: check that the export was renormalised to it"
+            f"line {comment_line}: a comment states other port impedances; the reference of the "
+            f"file, {listed} Ω, is taken: check that the export was renormalised to it"
         )
     if header.option.form == "ma" and np.any(layout.table[:, 1::2] < 0):
         found.append("negative magnitudes, taken as a turn by 180 degrees")
     return tuple(found)
+
+
+def _states_other(said: str, references: tuple[float, ...]) -> bool:
+    """Whether a comment such as ``50.0 0.0 75.0 0.0`` (real, imaginary) differs."""
+    numbers = [abs(float(word)) for word in _NUMBER.findall(said)]
+    return any(
+        number != 0 and not any(math.isclose(number, r, rel_tol=1e-6) for r in references)
+        for number in numbers
+    )

@@ -13,7 +13,7 @@ from polefit.errors import FormatError
 _UNITS = {"hz": 1.0, "khz": 1e3, "mhz": 1e6, "ghz": 1e9}
 _FORMS = ("ma", "db", "ri")
 _PORT_NAME = re.compile(r"!\s*port\s*[\[(]?\s*(\d{1,6})\s*[\])]?\s*[=:]\s*(\S.*)", re.IGNORECASE)
-_PORT_IMPEDANCE = re.compile(r"!\s*(?:port\s+impedance|gamma)\b", re.IGNORECASE)
+PORT_IMPEDANCE = re.compile(r"!\s*port\s+impedance\b([^\n]*)", re.IGNORECASE)
 _KEYWORD = re.compile(r"\[\s*([^\]]*?)\s*\](.*)")
 _KNOWN = {
     "version",
@@ -93,8 +93,8 @@ class Header:
         Line at which the numbers begin.
     port_names : dict
         Names that comments give to ports, by number from 1.
-    reference_comment_line : int or None
-        First comment that states a port impedance.
+    reference_comments : tuple of (int, str)
+        Comments that state port impedances, by line, with what they say.
     """
 
     version: str
@@ -102,7 +102,7 @@ class Header:
     keywords: dict[str, Keyword]
     first_line: int
     port_names: dict[int, str]
-    reference_comment_line: int | None
+    reference_comments: tuple[tuple[int, str], ...]
 
 
 def read_header(lines: Iterable[tuple[int, str]]) -> Header:
@@ -125,15 +125,15 @@ def read_header(lines: Iterable[tuple[int, str]]) -> Header:
     option: OptionLine | None = None
     keywords: dict[str, Keyword] = {}
     names: dict[int, str] = {}
-    comment_line: int | None = None
+    comments: dict[str, int] = {}
     number = 1
     last: str | None = None
     rows = _outside_information(iter(lines))
     for number, row in rows:
         if found := _PORT_NAME.match(row.strip()):
             names.setdefault(int(found[1]), found[2].strip())
-        if comment_line is None and _PORT_IMPEDANCE.match(row.strip()):
-            comment_line = number
+        if found := PORT_IMPEDANCE.match(row.strip()):
+            comments.setdefault(found[1], number)
         content = row.partition("!")[0].strip()
         if not content:
             continue
@@ -161,7 +161,8 @@ def read_header(lines: Iterable[tuple[int, str]]) -> Header:
         remedy = "put [Network Data] above the numbers"
         raise FormatError("numbers outside [Network Data]", remedy, line=number)
     version = keywords["version"].arguments[0] if keywords else "1"
-    return Header(version, option, keywords, number, names, comment_line)
+    told = tuple((line, text) for text, line in comments.items())
+    return Header(version, option, keywords, number, names, told)
 
 
 def parse_option_line(content: str, line: int) -> OptionLine:

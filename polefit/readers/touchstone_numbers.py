@@ -16,6 +16,7 @@ from numpy.typing import NDArray
 from polefit.errors import FormatError
 from polefit.readers.large_files import Growing
 from polefit.readers.text_blocks import Text
+from polefit.readers.touchstone_header import PORT_IMPEDANCE
 from polefit.responses import FloatArray
 
 IntArray = NDArray[np.int64]
@@ -23,10 +24,10 @@ IntArray = NDArray[np.int64]
 _COMMENT = re.compile(r"![^\n]*")
 _OPTION_LINE = re.compile(r"^[ \t]*#[^\n]*", re.MULTILINE)
 _KEYWORD_LINE = re.compile(r"^[ \t]*\[[^\n]*", re.MULTILINE)
-_PER_POINT_REFERENCE = re.compile(r"!\s*(?:port\s+impedance|gamma)\b", re.IGNORECASE)
 # Numbers whose printed form is kept from the first block and from each later one: enough to see
 # every digit count.
 _SAMPLE = (1500, 200)
+_COMMENTS_KEPT = 100
 
 
 @dataclass(frozen=True, eq=False)
@@ -73,12 +74,12 @@ class Scan:
     ----------
     sections : tuple of Section
         At least one.
-    reference_comment_line : int or None
-        First comment that states a port impedance or propagation constant.
+    reference_comments : tuple of (int, str)
+        Comments that state port impedances, by line, with what they say; each text once.
     """
 
     sections: tuple[Section, ...]
-    reference_comment_line: int | None
+    reference_comments: tuple[tuple[int, str], ...]
 
 
 @dataclass
@@ -152,7 +153,7 @@ def scan(text: Text, first_line: int) -> Scan:
         If something there is not a finite number; the line is named.
     """
     collectors = [_Collector("", first_line)]
-    comment_line: int | None = None
+    comments: dict[str, int] = {}
     line = 1
     seen = 0
     for block in text.blocks():
@@ -160,12 +161,14 @@ def scan(text: Text, first_line: int) -> Scan:
         seen += len(block)
         if line + count > first_line:
             body = _without_head(block, first_line - line)
-            if comment_line is None and (found := _PER_POINT_REFERENCE.search(body)):
-                comment_line = line + body.count("\n", 0, found.start())
+            for found in PORT_IMPEDANCE.finditer(body) if "!" in body else ():
+                if found[1] not in comments and len(comments) < _COMMENTS_KEPT:
+                    comments[found[1]] = line + body.count("\n", 0, found.start())
             share = min(1.0, seen * (1 + text.wide) / len(text.content))
             _collect(_without_comments(body), line, share, collectors)
         line += count
-    return Scan(tuple(c.section() for c in collectors), comment_line)
+    told = tuple((at, said) for said, at in comments.items())
+    return Scan(tuple(c.section() for c in collectors), told)
 
 
 def _collect(body: str, line: int, share: float, collectors: list[_Collector]) -> None:

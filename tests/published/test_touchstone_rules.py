@@ -412,6 +412,11 @@ def test_port_impedance_comments_are_no_part_of_the_standard():
     found = parse(text.encode(), ReadOptions(), stem="n", suffix=".s1p")
     assert found.responses.reference_ohm == (50,)
     assert any("line 2" in warning for warning in found.warnings)
+    same = text.replace("30 4", "50.000 0.0")
+    assert parse(same.encode(), ReadOptions(), stem="n", suffix=".s1p").warnings == ()
+    later = same + "! Gamma 1 2\n! port impedance 49 0\n2e9 0.5 0\n"
+    (told,) = parse(later.encode(), ReadOptions(), stem="n", suffix=".s1p").warnings
+    assert "line 5" in told
 
 
 def test_scaling_of_version_2_cannot_be_turned_to_version_1():
