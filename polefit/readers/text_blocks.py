@@ -15,6 +15,7 @@ from polefit.readers.large_files import Content as Content
 from polefit.readers.large_files import release
 
 BLOCK_BYTES = 1 << 21
+LONGEST_LINE = 1 << 24
 _HEAD_BYTES = 4096
 # Control characters that no text file holds; tab, line ends and form feed are allowed.
 _CONTROL = {*range(9), *range(14, 32), 127}
@@ -58,6 +59,8 @@ class Text:
             if cut:
                 yield body[:cut]
             pending = body[cut:] + held
+            if len(pending) > LONGEST_LINE:
+                raise FormatError(f"a line of more than {LONGEST_LINE} characters", _RESAVE)
         pending = pending.replace("\r", "\n")
         if pending:
             yield pending if pending.endswith("\n") else pending + "\n"

@@ -233,6 +233,17 @@ def test_zeros_behind_a_good_beginning_are_refused_quickly(tmp_path):
         path.unlink()
 
 
+def test_an_endless_line_is_refused_quickly(tmp_path):
+    """Such as a large JSON file in one line."""
+    for name in ("a.s1p", "a.csv", "a.raw"):
+        path = tmp_path / name
+        path.write_bytes(b"[1.0, 2.0, " * 2_000_000)
+        start = time.process_time()
+        refusal(path)
+        assert time.process_time() - start < 3.0
+        path.unlink()
+
+
 def test_hdf5_of_another_program(tmp_path):
     path = tmp_path / "other.h5"
     with h5py.File(path, "w") as handle:
