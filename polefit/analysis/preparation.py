@@ -14,6 +14,7 @@ from polefit.responses import Channel, ResponseSet
 
 FEWEST_POINTS = 8
 """Fewer points cannot tell one pair and its residue from noise with any degree of freedom left."""
+LARGEST = 1e100
 
 _SHARES_POLES = {"impedance", "transfer"}
 """Quantities whose modes do not depend on which node the probe drives."""
@@ -69,6 +70,7 @@ def prepare(
                 f"{one.channels[0]}: {one.points} points cannot carry a verdict; "
                 f"simulate at least {FEWEST_POINTS} in the band"
             )
+        _check_sizes(one)
     scale = 2 * np.pi * max(one.band_hz[1] for one in usable)
     return Prepared(usable, tuple(_measured(one, scale) for one in usable), scale, tuple(notes))
 
@@ -103,6 +105,16 @@ def _check_together(sets: tuple[ResponseSet, ...]) -> None:
             f"responses: channel {twice} is given twice; name the nodes (node=, --node), or "
             "identify each file on its own (--separately)"
         )
+
+
+def _check_sizes(one: ResponseSet) -> None:
+    """Refuse sizes whose squares leave double precision; no physical response has them."""
+    for channel, largest in zip(one.channels, np.abs(one.values).max(axis=0), strict=True):
+        if not 1 / LARGEST < largest < LARGEST:
+            raise DataError(
+                f"{channel}: the largest response is {largest:.3g}, beyond {1 / LARGEST:g} to "
+                f"{LARGEST:g}; check the unit"
+            )
 
 
 def _without_useless(one: ResponseSet, notes: list[str]) -> ResponseSet | None:
