@@ -74,7 +74,7 @@ class Solution(NamedTuple):
     parts : tuple of Projected
         One for each block.
     misfit : float
-        χ², the sum of squared weighted residuals.
+        χ², the sum of squared weighted residuals; infinite where the model is.
     """
 
     sections: Sections
@@ -162,11 +162,13 @@ def _by_orthogonalisation(block: Block, sections: Sections, direct: int) -> Proj
         )
         for piece in pieces(block)
     )
+    misfit = float(np.sum(r[:, m:, -1] ** 2))
+    if not np.isfinite(r).all():  # a sample on a pole, or a pole far out of range
+        r, misfit = np.zeros_like(r), np.inf
     basis = regular(r[:, :m, :m])
     coefficients = cast(FloatArray, np.linalg.solve(basis, r[:, :m, -1:])[:, :, 0])
     inner, reach = r[:, m : m + n, m : m + n], r[:, m : m + n, -1:]
     pull = (inner.transpose(0, 2, 1) @ reach)[:, :, 0]
-    misfit = float(np.sum(r[:, m:, -1] ** 2))
     return Projected(coefficients, basis, r[:, :m, m : m + n], inner, pull, misfit)
 
 
@@ -188,12 +190,12 @@ def regular(r: FloatArray) -> FloatArray:
     """
     norms = np.sqrt(np.sum(r**2, axis=1))
     pivots = np.abs(np.diagonal(r, axis1=1, axis2=2))
-    weak = pivots < 1e-11 * norms
+    weak = pivots <= 1e-11 * norms
     if not weak.any():
         return r
     mended = r.copy()
     k, i = np.nonzero(weak)
-    mended[k, i, i] = np.maximum(norms[k, i], 1e-300)
+    mended[k, i, i] = np.where(norms[k, i] > 1e-150, norms[k, i], 1.0)
     return mended
 
 
