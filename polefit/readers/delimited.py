@@ -158,7 +158,11 @@ def _chosen(
 def _layout(
     draft: Draft, headings: tuple[Heading, ...] | None, options: ReadOptions, simulator: bool
 ) -> Layout:
-    told: dict[str, Form] = {"unit": "real-imaginary", "decibels": "decibel-angle"}
+    told: dict[str, Form] = {
+        "unit": "real-imaginary",
+        "decibels": "decibel-angle",
+        "slash": "magnitude-angle",
+    }
     return resolve(
         draft.kinds,
         headings,

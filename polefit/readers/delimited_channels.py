@@ -159,7 +159,10 @@ def _channels(
             "were driven, so none of them counts as a driving-point response"
         )
     if any(label.output and not label.input for label in labels):
-        assumptions.append("each named response is taken as observed where it is driven")
+        assumptions.append(
+            "each named response is taken as observed where it is driven; if one node was driven "
+            "for all, name it with driven= (--driven)"
+        )
     channels = [
         Channel(label.output, label.input or label.output)
         if label.output

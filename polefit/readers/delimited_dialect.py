@@ -28,6 +28,7 @@ _STARTED = rf"(?<![\w.])\(?({_SIGNED})"  # a number from its first character on
 _DECIBELS = re.compile(
     rf"\(\s*({_SIGNED})\s*dB\s*[,;]\s*({_SIGNED})\s*(?:\xc2?\xb0|deg)\s*\)", re.IGNORECASE
 )
+_SLASHED = re.compile(rf"(?<![\w./])({_SIGNED})[ \t]*/[ \t]*({_SIGNED})(?![\w./])")  # 12.5 / -30.2
 _UNIT_LAST = re.compile(rf"{_STARTED}[ \t]*(?:\+[ \t]*)?([+-])[ \t]*({_UNSIGNED})\*?[ij]\)?")
 # a+bj without blanks; begins with the sign, since that is quick to search for.
 _PLAIN_SUM = re.compile(rf"([+-])(?<=[\d.][+-])({_UNSIGNED})[ij](?![\w(*])")
@@ -56,7 +57,8 @@ class Dialect:
     decimal : str
         Decimal mark.
     complex_style : str
-        How two numbers share a field: "", "bracketed", "decibels", "unit", "quoted" or "comma".
+        How two numbers share a field: "", "bracketed", "decibels", "slash", "unit", "quoted"
+        or "comma".
     quoted : bool
         Whether fields are put in quotation marks.
     fortran : bool
@@ -109,6 +111,8 @@ class Dialect:
             return _BRACKETED.sub(rf"\1{PAIR}\2", text)
         if self.complex_style == "decibels":
             return _DECIBELS.sub(rf"\1{PAIR}\2", text)
+        if self.complex_style == "slash":
+            return _SLASHED.sub(rf"\1{PAIR}\2", text)
         if self.complex_style == "unit":
             marked, count = _PLAIN_SUM.subn(rf"{PAIR}\1\2", text)
             brackets = text.count("(")
@@ -247,6 +251,8 @@ def _hypotheses(lines: Sequence[str], options: ReadOptions) -> Iterator[Dialect]
         styles = ["bracketed"]
     elif _DECIBELS.search(text) or _DECIBELS.search(pointed):
         styles = ["decibels"]
+    elif _SLASHED.search(text):
+        styles.append("slash")  # a date above the table may look like it
     elif any(p.search(t) for p in (_UNIT_LAST, _UNIT_FIRST) for t in (text, pointed)):
         styles = ["unit"]
     elif _QUOTED_PAIR.search(text):

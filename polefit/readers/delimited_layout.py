@@ -126,8 +126,8 @@ def resolve(
         Whether the file is evidently a simulator's own table: complex vectors are then
         printed as real and imaginary part, frequencies in hertz.
     pairs : str or None
-        What two numbers in one field are, where their marks leave no doubt; decibels then go
-        with degrees.
+        What two numbers in one field are, where their marks leave no doubt; angles are then in
+        degrees.
 
     Returns
     -------
@@ -277,7 +277,7 @@ def _pair_trace(column: Column, options: ReadOptions, notes: _Notes) -> Trace:
     if options.form is None and notes.pairs is None:
         _say_once(notes.assumptions, "two numbers in one field taken as real and imaginary part")
     unit = column.heading
-    degrees = "deg" if notes.pairs == "decibel-angle" else unit.angle_unit
+    degrees = "deg" if notes.pairs not in (None, "real-imaginary") else unit.angle_unit
     return Trace(column.start, column.start + 1, form, unit.scale or 1.0, degrees, column.heading)
 
 

@@ -145,6 +145,16 @@ def test_decibels_and_degrees_in_one_field(degree):
         read(b"Freq.\tV(g)\n" + body.replace(b"*", degree), driven="g", form="real-imaginary")
 
 
+@pytest.mark.parametrize("separator", ["\t", "  ", ","])
+def test_magnitude_and_degrees_with_a_slash(separator):
+    body = rows(f"%.6e{separator}%.15e / %.15e", F, SIZE, DEGREES)
+    found = read(f"freq (Hz){separator}Z(g)\n{body}")
+    check(found, names=["g"], quantity="impedance", rtol=1e-13)
+    assert found.responses.precision is None  # 16 digits
+    dated = "1/2 of a table, 12/01/2026\nfreq (Hz),Re(Z(g)),Im(Z(g))\n" + rows("%r,%r,%r", *RI)
+    check(read(dated), names=["g"])
+
+
 def test_network_parameters_by_ports():
     text = "freq,re_Z11,im_Z11,re_Z21,im_Z21\n" + rows("%r,%r,%r,%r,%r", *TWO)
     check(read(text), names=["port1", "port2 ← port1"], columns=(Z, W), quantity="impedance")
