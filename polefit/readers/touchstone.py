@@ -16,6 +16,7 @@ from typing import Literal
 import numpy as np
 
 from polefit.errors import ArgumentError, FormatError
+from polefit.estimates import si
 from polefit.precision import Precision, Printed
 from polefit.readers.large_files import Content
 from polefit.readers.reading import Parsed, ReadOptions, printed_form, unit_name
@@ -42,6 +43,8 @@ _QUANTITY: dict[str, Quantity] = {
 _SUFFIX = re.compile(r"\.([syzhg])(\d{1,6})p", re.IGNORECASE)
 _NUMBER = re.compile(r"[+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?")
 _ROWS = 4096
+# A normalised impedance level beyond this, 2 kΩ on 50 Ω, may as well be ohms.
+_UNUSUAL = 40.0
 
 
 def ports_of_suffix(suffix: str) -> int | None:
@@ -104,11 +107,12 @@ def parse(content: Content, options: ReadOptions, *, stem: str, suffix: str = ""
         reference_ohm=layout.references if header.option.parameter == "S" else None,
     )
     comments = (*header.reference_comments, *found.reference_comments)
+    doubts = () if options.scaling else _scaling_doubt(responses, layout, scales)
     return Parsed(
         responses=_with_precision(responses, _precision(header, layout), scales),
         format=f"Touchstone {_version(header)}",
         assumptions=(*assumed, *named, *_noise_note(layout)),
-        warnings=(*layout.warnings, *_warnings(header, layout, suffix, comments)),
+        warnings=(*layout.warnings, *_warnings(header, layout, suffix, comments), *doubts),
         scaling=_scaling(header, scales),
         frequency_unit=unit_name(header.option.unit_hz),
     )
@@ -201,6 +205,24 @@ def _scaling(header: Header, scales: FloatArray) -> str | None:
         return f"printed numbers × {scales[0]:g} = {unit}"
     listed = ", ".join(f"{scale:.6g}" for scale in scales[:9])
     return f"printed numbers × {listed}{' …' if scales.size > 9 else ''}, row by row"
+
+
+def _scaling_doubt(responses: ResponseSet, layout: Layout, scales: FloatArray) -> tuple[str, ...]:
+    """Warn where normalised numbers would be so large that ohm or siemens seem to be meant."""
+    if np.all(scales == 1) or responses.quantity not in ("impedance", "admittance"):
+        return ()
+    own = slice(None, None, layout.ports + 1)  # diagonal of the matrix
+    size = float(np.median(np.abs(responses.values[:_ROWS, own] / scales[own])))
+    if responses.quantity == "impedance":
+        suspicious, level = size > _UNUSUAL, size * scales[0]
+    else:
+        suspicious, level = size < 1 / _UNUSUAL, 1 / (size * scales[0]) if size else np.inf
+    if not suspicious:
+        return ()
+    return (
+        f"taken as normalised, the numbers are typically {si(level, 'Ω', 2)}: if the exporter ignored "
+        'the normalisation, say scaling="absolute" (--scaling)',
+    )
 
 
 def _normalisation(parameter: str, references: FloatArray) -> FloatArray:

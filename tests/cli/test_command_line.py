@@ -87,6 +87,14 @@ def test_separately_treats_each_on_its_own(polefit_command, tmp_path):
     assert (tmp_path / "r.html").read_text(encoding="utf-8").count("<main") == 2
 
 
+def test_the_sets_of_one_file_are_probes_of_one_circuit(polefit_command, monkeypatch):
+    monkeypatch.setattr("polefit.readers.read_all", lambda file, **_: (f"1 of {file}", "2"))
+    polefit_command("identify", "all.h5", "--quiet")
+    polefit_command("identify", "all.h5", "b.h5", "--quiet", "--separately")
+    assert [c[0] for c in polefit_command.identified] == [
+        ["1 of all.h5", "2"], ["1 of all.h5", "2"], ["1 of b.h5", "2"]]  # fmt: skip
+
+
 def test_unstable_outweighs_undecided(polefit_command):
     polefit_command.verdict = ["undecided", "unstable", "stable"]
     assert polefit_command("identify", "a", "b", "c", "--separately").status == 1

@@ -78,6 +78,18 @@ def test_the_scaling_taken_is_told_and_the_other_can_be_asked_for(file):
     assert report.responses.values[0, 0] == 2
 
 
+@pytest.mark.parametrize(
+    ("letter", "numbers", "level"),
+    [("Z", "120 5", "6 kΩ"), ("Z", "2 5", ""), ("Y", "0.02 0.001", "2.5 kΩ"), ("Y", "1 2", "")],
+)
+def test_numbers_that_look_like_ohm_or_siemens_are_doubted(letter, numbers, level):
+    text = f"# Hz {letter} RI R 50\n1e9 {numbers}\n2e9 {numbers}\n"
+    told = " ".join(read(text).warnings)
+    assert (f"typically {level}:" in told) if level else not told
+    assert read(text, scaling="normalised").warnings == ()
+    assert read(text, scaling="absolute").warnings == ()
+
+
 def test_with_one_ohm_there_is_nothing_to_tell():
     assert read("# Hz Z RI R 1\n1e9 2 0\n").assumptions == ()
 
