@@ -220,8 +220,8 @@ def _scaling_doubt(responses: ResponseSet, layout: Layout, scales: FloatArray) -
     if not suspicious:
         return ()
     return (
-        f"taken as normalised, the numbers are typically {si(level, 'Ω', 2)}: if the exporter ignored "
-        'the normalisation, say scaling="absolute" (--scaling)',
+        f"taken as normalised, the numbers are typically {si(level, 'Ω', 2)}: if the exporter "
+        'ignored the normalisation, say scaling="absolute" (--scaling)',
     )
 
 
