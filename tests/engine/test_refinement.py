@@ -93,7 +93,8 @@ def test_never_worse_than_the_start(confined):
 
 def test_one_step_from_nearby_is_nearly_enough():
     """The first damping of 1e-3 leaves that share of the step where the data are sharp: its
-    square would be 1e-6 of the misfit, and blunter directions cost two or three more decades."""
+    square would be 1e-6 of the misfit, and blunter directions cost two or three more decades.
+    """
     s = axis(151)
     blocks = [block(s, response(s))]
     begin = start(blocks, shift=1e-3)

@@ -150,7 +150,8 @@ def test_chain_against_differences(direct):
 
 def test_residues_are_those_of_scipy():
     """scipy.signal.residue of the same rational function multiplied out; five poles, so that
-    its polynomials keep about ten digits."""
+    its polynomials keep about ten digits.
+    """
     sections = Sections(np.array([0.04, -0.3]), np.array([0.09, 0.5]), np.array([0.4]))
     coefficients = np.random.default_rng(3).normal(size=(3, 7))
     found = residues(sections, coefficients)
@@ -196,4 +197,4 @@ def test_vector_round_trip():
     again = MIXED.with_vector(MIXED.vector())
     assert all(np.array_equal(*pair) for pair in zip(again, MIXED, strict=True))
     moved = MIXED.with_vector(MIXED.vector() + np.arange(8))
-    assert moved.c0.tolist() == (MIXED.c0 + [3, 4, 5]).tolist()
+    assert moved.c0.tolist() == (MIXED.c0 + np.arange(3, 6)).tolist()
