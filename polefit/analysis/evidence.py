@@ -20,7 +20,7 @@ COLOURED_MISFIT = 10.0
 """Where the residual is not noise-like a stable model must fit this many times worse."""
 COMPANION_MISFIT = (1.0, 3.0, 10.0)
 """The same for a growing mode that shares its resonance curve with no, one, or more other modes of
-which one is stronger and decays. That is how a fit mends data that no small rational function
+which one is stronger. That is how a fit mends data that no small rational function
 describes: passive resonators, distorted by drive or behind unmodelled lines, were seen to reach 8
 with several companions, 4.5 with a coloured residual and 19 with both."""
 COMPANION_WIDTHS = 3.0
@@ -62,7 +62,9 @@ class Comparison:
     Parameters
     ----------
     stable : StableModel
-        The comparison.
+        With all poles confined.
+    alone : dict of int to StableModel
+        For each growing mode in the band, with the other growing modes left where they are.
     companions : dict of int to int
         For each growing mode in the band, how many modes share its resonance curve.
     distorted : bool
@@ -70,6 +72,7 @@ class Comparison:
     """
 
     stable: StableModel
+    alone: dict[int, StableModel]
     companions: dict[int, int]
     distorted: bool
 
@@ -81,15 +84,25 @@ def compare(
     growing = [c for c in claimed if c.pole.real > 0 and c.in_band]
     if not growing:
         return None
-    stable = compare_with_stable(
-        estimation.blocks,
-        estimation.solution,
-        [estimation.past, estimation.richest],
-        estimation.level,
-    )
+
+    def against(others: Sequence[Candidate]) -> StableModel:
+        return compare_with_stable(
+            estimation.blocks,
+            estimation.solution,
+            [estimation.past, estimation.richest],
+            estimation.level,
+            [c.pole / scale for c in others],
+        )
+
+    stable = against(())
+    alone = {c.index: stable for c in growing}
+    if len(growing) > 1:
+        alone = {c.index: against([o for o in growing if o is not c]) for c in growing}
     companions = {c.index: _companions(c, estimation, scale) for c in growing}
-    asked = COMPANION_MISFIT[min(max(companions.values()), 2)]
-    return Comparison(stable, companions, stable.misfit_ratio < asked)
+    distorted = any(
+        n > 0 and alone[i].misfit_ratio < COMPANION_MISFIT[min(n, 2)] for i, n in companions.items()
+    )
+    return Comparison(stable, alone, companions, distorted)
 
 
 def evidence_for(
@@ -120,12 +133,12 @@ def evidence_for(
         _persistence(c, estimation, scale),
     ]
     if against is not None and c.index in against.companions:
-        items.append(_against_stable(against, estimation, against.companions[c.index]))
+        items.append(_against_stable(c, against, estimation))
     return tuple(items)
 
 
 def _companions(c: Candidate, estimation: Estimation, scale: float) -> int:
-    """Count the modes on one resonance curve with a growing one, if a stronger one decays."""
+    """Count the modes on one resonance curve with a growing one, if one of them is stronger."""
     sections = estimation.solution.sections
     poles = sections.poles()
     coefficients = np.concatenate([part.coefficients for part in estimation.solution.parts])
@@ -135,8 +148,7 @@ def _companions(c: Candidate, estimation: Estimation, scale: float) -> int:
     width, widths = abs(poles[own].real), np.abs(poles.real)
     near = (distance < COMPANION_WIDTHS * np.maximum(widths, width)) & (poles.imag > 0)
     near &= widths < COMPANION_RATIO * width
-    stronger = near & (poles.real < 0) & (strength > strength[own])
-    return int(near.sum()) - 1 if stronger.any() else 0
+    return int(near.sum()) - 1 if np.any(near & (strength > strength[own])) else 0
 
 
 def _persistence(c: Candidate, estimation: Estimation, scale: float) -> Evidence:
@@ -150,6 +162,8 @@ def _persistence(c: Candidate, estimation: Estimation, scale: float) -> Evidence
         return Evidence(name, None, "too few points for a model of higher order")
     other = nearest(pole, estimation.past.sections.poles())
     shift = math.inf if other is None else abs(other - pole)
+    if shift == 0:
+        return Evidence(name, None, "a model of higher order could not be fitted any better")
     passed = shift <= allowed
     detail = (
         f"with {order} poles instead of {estimation.solution.sections.order} "
@@ -161,17 +175,18 @@ def _persistence(c: Candidate, estimation: Estimation, scale: float) -> Evidence
     return Evidence(name, passed, detail)
 
 
-def _against_stable(against: Comparison, estimation: Estimation, companions: int) -> Evidence:
-    stable, whiteness = against.stable, estimation.whiteness
+def _against_stable(c: Candidate, against: Comparison, estimation: Estimation) -> Evidence:
+    stable, whiteness = against.alone[c.index], estimation.whiteness
+    companions = against.companions[c.index]
     asked = COMPANION_MISFIT[2 if against.distorted else min(companions, 2)]
     asked *= 1.0 if whiteness.white else COLOURED_MISFIT
     detail = (
-        f"the best model without right-half-plane poles ({stable.order} poles) misses the data "
-        f"{stable.misfit_ratio:.4g} times as far"
+        f"the best model without {'this' if len(against.alone) > 1 else 'a'} right-half-plane pole "
+        f"({stable.order} poles) misses the data {stable.misfit_ratio:.4g} times as far"
     )
     doubts = [] if whiteness.white else ["the residual is not noise-like"]
     if companions:
-        doubts.append("the mode lies on the resonance curve of a stronger, decaying one")
+        doubts.append("the mode lies on the resonance curve of a stronger one")
     elif against.distorted:
         doubts.append("a resonance in the band looks distorted")
     if doubts:

@@ -10,6 +10,7 @@ from threadpoolctl import ThreadpoolController
 
 from polefit.analysis.judgement import CLAIM_CHANCE, Judged, judge
 from polefit.analysis.preparation import Prepared, node_names, prepare
+from polefit.engine.blocks import FloatArray
 from polefit.engine.detection import residue_limits
 from polefit.engine.estimation import Estimation, estimate_model
 from polefit.engine.order import trial_grid
@@ -87,8 +88,8 @@ def identify(
     >>> polefit.identify(data).verdict
     'unstable'
     """
-    if not 0.5 < confidence < 1:
-        raise ArgumentError(f"confidence: {confidence} is not between 0.5 and 1; give e.g. 0.95")
+    if not isinstance(confidence, int | float) or not 0.5 < confidence < 1:
+        raise ArgumentError(f"confidence: {confidence!r} is not between 0.5 and 1; give e.g. 0.95")
     prepared = prepare(responses, band_hz)
     with _thread_pools().limit(limits=1), np.errstate(all="ignore"):
         estimation = estimate_model(prepared.measured, progress or (lambda _: None))
@@ -110,7 +111,7 @@ def _answer(prepared: Prepared, estimation: Estimation, confidence: float) -> Id
     )
     model = _model(estimation, prepared.scale_rad_per_s, channels)
     fit = _quality(prepared, estimation, judged, model)
-    verdict, reason = _run_verdict(judged, fit, band)
+    verdict, reason = _run_verdict(judged, fit, _poor(estimation))
     return Identification(
         verdict=verdict,
         reason=reason,
@@ -123,7 +124,7 @@ def _answer(prepared: Prepared, estimation: Estimation, confidence: float) -> Id
         fit=fit,
         model=model,
         detection=_detection(estimation, prepared.scale_rad_per_s),
-        notes=(*_notes(prepared, estimation, fit), *_edge_notes(judged.modes, band)),
+        notes=(*_notes(prepared, estimation, fit), *_edge_notes(judged.beyond, band)),
         noise_std=tuple(np.sqrt(v.sum(axis=1)).T for v in estimation.noise),
     )
 
@@ -146,25 +147,39 @@ def _model(estimation: Estimation, scale: float, channels: tuple[Channel, ...]) 
 def _quality(
     prepared: Prepared, estimation: Estimation, judged: Judged, model: RationalModel
 ) -> FitQuality:
+    errors, noises = _relative(estimation)
+    stable = judged.stable_model
+    return FitQuality(
+        order=estimation.solution.sections.order,
+        order_reason=estimation.reason,
+        rms_relative=float(np.sqrt(np.mean(errors))),
+        noise_relative=float(np.sqrt(np.median(noises))),
+        noise_origin=_noise_origin(prepared, estimation),
+        residual_white=estimation.whiteness.white,
+        stable_model_misfit=None if stable is None else stable.misfit_ratio,
+    )
+
+
+def _relative(estimation: Estimation) -> tuple[FloatArray, FloatArray]:
+    """Return squared errors and noise variances over |H|², where noise does not hide it."""
     errors, noises = [], []
     for part, block, noise in zip(
         estimation.solution.parts, estimation.blocks, estimation.noise, strict=True
     ):
         fitted = model_values(block.s, estimation.solution, part)
-        size = np.abs(block.values)
-        usable = size > 0
+        size, total = np.abs(block.values), noise.sum(axis=1)
+        usable = size**2 > total
+        if not usable.any():
+            usable = size > 0
         errors.append((np.abs(fitted - block.values)[usable] / size[usable]) ** 2)
-        noises.append(noise.sum(axis=1)[usable] / size[usable] ** 2)
-    stable = judged.stable_model
-    return FitQuality(
-        order=estimation.solution.sections.order,
-        order_reason=estimation.reason,
-        rms_relative=float(np.sqrt(np.mean(np.concatenate(errors)))),
-        noise_relative=float(np.sqrt(np.median(np.concatenate(noises)))),
-        noise_origin=_noise_origin(prepared, estimation),
-        residual_white=estimation.whiteness.white,
-        stable_model_misfit=None if stable is None else stable.misfit_ratio,
-    )
+        noises.append(total[usable] / size[usable] ** 2)
+    return np.concatenate(errors), np.concatenate(noises)
+
+
+def _poor(estimation: Estimation) -> bool:
+    """Tell whether the model misses the data by far more than their noise."""
+    errors, noises = (float(np.mean(part)) for part in _relative(estimation))
+    return errors > POOR_FIT**2 and noises < errors / 4
 
 
 def _noise_origin(prepared: Prepared, estimation: Estimation) -> str:
@@ -191,11 +206,11 @@ def _digits(one: ResponseSet) -> bool:
     return any(p.significant is not None or p.decimals is not None for p in printed)
 
 
-def _run_verdict(judged: Judged, fit: FitQuality, band: tuple[float, float]) -> tuple[Verdict, str]:
+def _run_verdict(judged: Judged, fit: FitQuality, poor: bool) -> tuple[Verdict, str]:
     inside = [mode for mode in judged.modes if mode.in_band]
     unstable = [mode for mode in inside if mode.verdict == "unstable"]
     undecided = [mode for mode in inside if mode.verdict == "undecided"]
-    if fit.rms_relative > POOR_FIT and fit.noise_relative < POOR_FIT:
+    if poor:
         return "undecided", "the model does not describe the data well enough to carry a verdict"
     if unstable:
         grow = (
@@ -255,12 +270,18 @@ def _notes(prepared: Prepared, estimation: Estimation, fit: FitQuality) -> tuple
     return tuple(dict.fromkeys(notes))
 
 
-def _edge_notes(modes: Sequence[Mode], band: tuple[float, float]) -> list[str]:
+def _edge_notes(beyond: Sequence[complex], band: tuple[float, float]) -> list[str]:
     """Tell of growing modes that the band's edge keeps from deciding the verdict."""
     return [
-        f"a mode at {mode.frequency_hz.value:.4g} Hz grows, but lies at the edge of the band or "
-        f"beyond it ({band[0]:.4g} to {band[1]:.4g} Hz) and decides nothing; simulate a band that "
-        "has it well inside"
-        for mode in modes
-        if not mode.in_band and mode.pole_rad_per_s.real > 0 and mode.verdict != "stable"
+        f"a growing mode at {_hertz(pole.imag / (2 * np.pi))} lies at the edge of the band or "
+        f"beyond it ({_hertz(band[0])} to {_hertz(band[1])}) and is not judged: widen the sweep"
+        for pole in beyond
     ]
+
+
+def _hertz(value: float) -> str:
+    """Return a frequency with an SI prefix."""
+    for size, prefix in ((1e12, "T"), (1e9, "G"), (1e6, "M"), (1e3, "k")):
+        if value >= size:
+            return f"{value / size:.4g} {prefix}Hz"
+    return f"{value:.4g} Hz"

@@ -24,6 +24,10 @@ CLAIM_CHANCE = 1e-3
 """Chance per run that a pole fitted to pure noise is claimed as a mode."""
 EDGE_WIDTHS = 0.3
 """Half-widths by which a mode must lie inside the band: most of its curve must be seen."""
+BEYOND = 2.0
+"""Growing poles up to this factor outside the band are mentioned, if they are sure ..."""
+BEYOND_SCORE = 100.0
+"""... and stand out of the noise by this χ²: fits put poles there for other reasons, too."""
 NEAR_BAND = 0.2
 """Modes up to this share of the band edge outside it are shown; they decide nothing."""
 
@@ -38,6 +42,8 @@ class Judged:
         Most dangerous first.
     background : tuple of BackgroundPole
         With reasons.
+    beyond : tuple of complex
+        Growing poles outside the band, and not far, whose residues stand out.
     stable_model : StableModel or None
         Comparison with the best stable model, when a right-half-plane mode was in question.
     """
@@ -45,6 +51,7 @@ class Judged:
     modes: tuple[Mode, ...]
     background: tuple[BackgroundPole, ...]
     stable_model: StableModel | None
+    beyond: tuple[complex, ...]
 
 
 def judge(
@@ -70,7 +77,17 @@ def judge(
     views = _node_views(estimation, scale, channels, quantity)
     modes = [_mode(c, estimation, against, factor, scale, views[c.index]) for c in claimed]
     modes.sort(key=_danger)
-    return Judged(tuple(modes), tuple(background), None if against is None else against.stable)
+    beyond = [c.pole for c in found if _beyond(c, band_hz, factor)]
+    stable = None if against is None else against.stable
+    return Judged(tuple(modes), tuple(background), stable, tuple(beyond))
+
+
+def _beyond(c: Candidate, band_hz: tuple[float, float], factor: float) -> bool:
+    """Tell whether a growing pole outside the band deserves a wider sweep."""
+    at = c.pole.imag / (2 * math.pi)
+    not_far = band_hz[0] / BEYOND < at < band_hz[1] * BEYOND
+    sure = c.pole.real > factor * math.sqrt(max(c.covariance[0, 0], 0.0))
+    return not c.in_band and not_far and sure and c.score > BEYOND_SCORE
 
 
 def _danger(mode: Mode) -> tuple[int, int, float]:

@@ -57,6 +57,7 @@ def prepare(
         raise ArgumentError("responses: give a ResponseSet or a sequence of them")
     _check_together(sets)
     if band_hz is not None:
+        _check_band(band_hz)
         sets = tuple(one.in_band(*band_hz) for one in sets)
     notes: list[str] = []
     usable = tuple(
@@ -73,6 +74,20 @@ def prepare(
         _check_sizes(one)
     scale = 2 * np.pi * max(one.band_hz[1] for one in usable)
     return Prepared(usable, tuple(_measured(one, scale) for one in usable), scale, tuple(notes))
+
+
+def _check_band(band_hz: object) -> None:
+    """Refuse what is not two frequencies in hertz."""
+    try:
+        low, high = (float(edge) for edge in band_hz)  # type: ignore[attr-defined]
+    except (TypeError, ValueError):
+        raise ArgumentError(
+            f"band_hz: {band_hz!r} is not a pair of frequencies in hertz; give e.g. (1e6, 6e9)"
+        ) from None
+    if not 0 <= low < high:
+        raise ArgumentError(
+            f"band_hz: {low:g} to {high:g} Hz is no band; give the lower edge first"
+        )
 
 
 def _check_together(sets: tuple[ResponseSet, ...]) -> None:

@@ -40,6 +40,10 @@ uncertainty."""
 RAISES = 3
 """How often the order is raised by two pairs while the residual is not noise-like."""
 
+BELOW = 0.25
+"""χ² per degree of freedom below which the residual says nothing: the noise was overstated, as the
+floor of double precision is for data of a closed form."""
+
 
 class Measured(NamedTuple):
     """Responses on one frequency axis, as the engine takes them.
@@ -184,14 +188,21 @@ def _settle_order(blocks: Sequence[Block], solution: Solution) -> _Settled:
     for left in range(RAISES, -1, -1):
         info = information(solution)
         past = go_past(blocks, solution, info)
-        pairs = zip(blocks, solution.parts, strict=True)
-        whiteness = judge_whiteness([residual(block, solution, part) for block, part in pairs])
+        whiteness = _whiteness(blocks, solution)
         more = parameters(blocks, past) - parameters(blocks, solution)
         gain = (solution.misfit - past.misfit) / variance_factor(blocks, past)
         if left == 0 or whiteness.white or gain <= 2 * more:
             break
         solution = split(blocks, refine(blocks, past, iterations=20, tolerance=1e-3))
     return _Settled(solution, info, past, whiteness)
+
+
+def _whiteness(blocks: Sequence[Block], solution: Solution) -> Whiteness:
+    """Judge the residual; one well below the known noise needs no judgement."""
+    if solution.misfit < BELOW * (samples(blocks) - parameters(blocks, solution)):
+        return Whiteness(True, 1.0, 0.0, 1.0)
+    pairs = zip(blocks, solution.parts, strict=True)
+    return judge_whiteness([residual(block, solution, part) for block, part in pairs])
 
 
 def _change(before: Sequence[Block], after: Sequence[Block]) -> float:

@@ -18,6 +18,8 @@ RELATIVE_FLOOR = 1e-13
 """Below this share of |H| double precision itself is the noise: no order may chase it."""
 ABSOLUTE_FLOOR = 1e-15
 """The same for samples near zero, as a share of the channel's largest |H|."""
+COMMON_FLOOR = 3e-16
+"""The same as a share of the largest |H| of all channels: matrices come out of inversions."""
 STEPS = 60
 LAW_GAIN = 8.0
 """Likelihood gain 2·Δln L that a second coefficient must bring (χ² with one degree, p = 0.005)."""
@@ -55,12 +57,19 @@ def variance(law: NoiseLaw, size: FloatArray, known: FloatArray) -> FloatArray:
     (K, 2, N) float ndarray
         Strictly positive.
     """
+    own = law.relative[:, np.newaxis] ** 2 * size**2 + law.absolute[:, np.newaxis] ** 2
+    total: FloatArray = known + (own + _floor(size))[:, np.newaxis, :]
+    return total
+
+
+def _floor(size: FloatArray) -> FloatArray:
+    """Variance that double precision itself brings."""
     squared = size**2
     top = np.maximum(squared.max(axis=1, keepdims=True), 1e-280)
-    share = (law.relative**2 + RELATIVE_FLOOR**2)[:, np.newaxis]
-    level = (law.absolute**2)[:, np.newaxis] + ABSOLUTE_FLOOR**2 * top
-    total: FloatArray = known + (share * squared + level)[:, np.newaxis, :]
-    return total
+    floor: FloatArray = (
+        RELATIVE_FLOOR**2 * squared + ABSOLUTE_FLOOR**2 * top + COMMON_FLOOR**2 * top.max()
+    )
+    return floor
 
 
 def first_guess(size: FloatArray) -> NoiseLaw:
@@ -95,9 +104,7 @@ def estimate(residual: FloatArray, size: FloatArray, known: FloatArray, spent: f
     points = residual.shape[2]
     squares = residual**2 * (2 * points / max(2 * points - spent, 1.0))
     squared = size**2
-    top = np.maximum(squared.max(axis=1, keepdims=True), 1e-280)
-    floor = RELATIVE_FLOOR**2 * squared + ABSOLUTE_FLOOR**2 * top
-    fixed = known + floor[:, np.newaxis, :]
+    fixed = known + _floor(size)[:, np.newaxis, :]
     shapes = np.stack((squared, np.ones_like(squared)), axis=1)
     best = np.zeros((size.shape[0], 2))
     best_cost = _cost(squares, fixed)

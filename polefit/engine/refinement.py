@@ -11,6 +11,7 @@ from collections.abc import Sequence
 
 import numpy as np
 import scipy.linalg
+from numpy.typing import NDArray
 
 from polefit.engine.blocks import Block, FloatArray
 from polefit.engine.projection import Solution, normal_equations, solve
@@ -25,7 +26,7 @@ def refine(
     *,
     iterations: int = 30,
     tolerance: float = 1e-4,
-    left_half_plane: bool = False,
+    confined: NDArray[np.bool_] | None = None,
 ) -> Solution:
     """Minimise the misfit over the poles.
 
@@ -40,8 +41,8 @@ def refine(
     tolerance : float
         Stop when the expected decrease falls below this many standard deviations squared,
         in units of the misfit per degree of freedom.
-    left_half_plane : bool
-        Keep all coefficients positive, which confines the poles to Re s < 0.
+    confined : (order,) bool ndarray, optional
+        Parameters to keep positive, which confines their poles to Re s < 0.
 
     Returns
     -------
@@ -57,16 +58,16 @@ def refine(
     for _ in range(iterations):
         theta = best.sections.vector()
         free = np.ones(theta.size, dtype=bool)
-        if left_half_plane:
-            free = (theta > BOUND) | (gradient > 0)
+        if confined is not None:
+            free = ~confined | (theta > BOUND) | (gradient > 0)
         if not free.any():
             break
         step, expected = _damped_step(information, gradient, free, damping)
         if expected <= tolerance * best.misfit / samples:
             break
         moved = theta + step
-        if left_half_plane:
-            moved = np.maximum(moved, BOUND)
+        if confined is not None:
+            moved = np.where(confined, np.maximum(moved, BOUND), moved)
         trial = solve(blocks, best.sections.with_vector(moved), best.direct)
         if trial.misfit < best.misfit:
             gain = (best.misfit - trial.misfit) / max(expected, 1e-300)

@@ -7,9 +7,10 @@ from collections.abc import Sequence
 from typing import NamedTuple
 
 import numpy as np
+from numpy.typing import NDArray
 
 from polefit.engine.blocks import Block
-from polefit.engine.order import parameters, samples, split
+from polefit.engine.order import parameters, samples
 from polefit.engine.projection import Solution, solve
 from polefit.engine.refinement import BOUND, refine
 from polefit.engine.sections import Sections
@@ -38,22 +39,35 @@ class StableModel(NamedTuple):
     order: int
 
 
-def reflected(sections: Sections) -> Sections:
+def reflected(sections: Sections, exempt: NDArray[np.bool_]) -> Sections:
     """Return the sections with every coefficient made positive: a start, not an answer."""
-    return Sections(*(np.maximum(np.abs(part), BOUND) for part in sections))
+    theta = sections.vector()
+    positive = np.maximum(np.abs(theta), BOUND)
+    return sections.with_vector(np.where(_parameters_of(sections, exempt), theta, positive))
 
 
-def on_axis(sections: Sections) -> Sections:
+def on_axis(sections: Sections, exempt: NDArray[np.bool_]) -> Sections:
     """Return the sections with right-half-plane pairs moved to the axis: another start."""
-    return Sections(
+    moved = Sections(
         np.maximum(sections.c1, 1e-9 * np.sqrt(np.abs(sections.c0))),
         np.maximum(np.abs(sections.c0), BOUND),
         np.maximum(sections.c, BOUND),
     )
+    keep = _parameters_of(sections, exempt)
+    return sections.with_vector(np.where(keep, sections.vector(), moved.vector()))
+
+
+def _parameters_of(sections: Sections, which: NDArray[np.bool_]) -> NDArray[np.bool_]:
+    pairs = sections.c1.size
+    return np.concatenate((which[:pairs], which[:pairs], which[pairs:]))
 
 
 def compare_with_stable(
-    blocks: Sequence[Block], free: Solution, richer: Sequence[Solution], level: float
+    blocks: Sequence[Block],
+    free: Solution,
+    richer: Sequence[Solution],
+    level: float,
+    exempt: Sequence[complex] = (),
 ) -> StableModel:
     """Fit models confined to the left half-plane.
 
@@ -68,18 +82,21 @@ def compare_with_stable(
         allowed more poles than the free one if it pays for them.
     level : float
         Noise variance of the weighted samples.
+    exempt : sequence of complex
+        Poles that may stay where they are, so that the others are tested alone.
 
     Returns
     -------
     StableModel
     """
     best: tuple[float, Solution] | None = None
-    starts = [reflected(free.sections), on_axis(free.sections)]
-    starts += [reflected(solution.sections) for solution in richer]
-    for number, start in enumerate(starts):
+    starts = [(reflected, free), (on_axis, free), *((reflected, one) for one in richer)]
+    for number, (bring, solution) in enumerate(starts):
         if best is not None and best[1].misfit > (FAR**3, FAR)[number > 1] * free.misfit:
             break  # the starts that took part already say how far off a stable model is
-        confined = _confine(blocks, start, free)
+        sections = solution.sections.split()
+        spared = _spared(sections, exempt)
+        confined = _confine(blocks, bring(sections, spared), spared, free)
         # each further parameter lowers χ² by one in the mean, whether it is needed or not
         cost = confined.misfit / level + parameters(blocks, confined)
         if best is None or cost < best[0]:
@@ -90,11 +107,26 @@ def compare_with_stable(
     return StableModel(ratio, rise, best[1].sections.order)
 
 
-def _confine(blocks: Sequence[Block], start: Sections, free: Solution) -> Solution:
+def _spared(sections: Sections, exempt: Sequence[complex]) -> NDArray[np.bool_]:
+    """Tell which sections hold the poles that are exempt, or what is left of them."""
+    spared = np.zeros(sections.number, dtype=bool)
+    pairs, poles = sections.c1.size, sections.poles()
+    own = np.concatenate((poles[:pairs], poles[2 * pairs :]))
+    for pole in exempt:
+        distance = np.abs(own - pole)
+        if distance.size and distance.min() < abs(pole.real):
+            spared[int(np.argmin(distance))] = True
+    return spared
+
+
+def _confine(
+    blocks: Sequence[Block], start: Sections, spared: NDArray[np.bool_], free: Solution
+) -> Solution:
     """Fit with bounds; finely only where the confined model comes near the free one."""
-    confined = split(blocks, solve(blocks, start, free.direct))
+    solution = solve(blocks, start, free.direct)
+    bounds = ~_parameters_of(start, spared)
     coarse = COARSE * samples(blocks)
-    confined = refine(blocks, confined, iterations=25, tolerance=coarse, left_half_plane=True)
-    if confined.misfit > FAR * free.misfit:
-        return confined
-    return refine(blocks, confined, iterations=20, tolerance=0.1, left_half_plane=True)
+    solution = refine(blocks, solution, iterations=25, tolerance=coarse, confined=bounds)
+    if solution.misfit > FAR * free.misfit:
+        return solution
+    return refine(blocks, solution, iterations=20, tolerance=0.1, confined=bounds)

@@ -63,18 +63,22 @@ def judge_whiteness(residuals: Sequence[FloatArray]) -> Whiteness:
         if lags < 1:
             continue
         series = residual.reshape(channels, 2, points)
-        energy = np.sum(series**2, axis=(1, 2))
+        parts = np.sum(series**2, axis=2)
+        energy = parts.sum(axis=1)
         energy[energy == 0] = 1.0
+        # 2 where real and imaginary part are equally noisy, 1 where only one of them is
+        independent = energy**2 / np.maximum(np.sum(parts**2, axis=1), 1e-300)
         lag = np.arange(1, lags + 1)
         correlation = np.stack(
             [np.sum(series[..., k:] * series[..., :-k], axis=(1, 2)) / energy for k in lag], axis=1
         )
-        # each lag sums two independent parts: variance about 1 / (2 N)
-        scaled = correlation**2 * (2 * points) * (points + 2) / (points - lag)
+        # each lag sums the independent parts: variance about 1 / (2 N)
+        count = np.clip(independent, 1.0, 2.0)[:, np.newaxis] * points
+        scaled = correlation**2 * count * (points + 2) / (points - lag)
         statistic += float(scaled.sum())
         freedom += channels * lags
         first += float(correlation[:, :3].sum())
-        first_variance += channels * min(3, lags) / (2 * points)
+        first_variance += float(np.sum(min(3, lags) / count))
         weight = 1 - lag / (lags + 1)
         factors.extend(1 + 2 * correlation @ weight)
     if freedom == 0:

@@ -86,7 +86,8 @@ def test_never_worse_than_the_start(confined):
         poles = generator.uniform(-0.3, -0.01, 3) + 1j * generator.uniform(0.1, 1, 3)
         begin = solve(blocks, from_poles(poles), 2)
         for iterations in (1, 3):
-            found = refine(blocks, begin, iterations=iterations, left_half_plane=confined)
+            bounds = np.full(begin.sections.order, confined)
+            found = refine(blocks, begin, iterations=iterations, confined=bounds)
             assert found.misfit <= begin.misfit
             assert found.sections.order == begin.sections.order
 
@@ -108,7 +109,8 @@ def test_confined_model_is_the_best_in_the_box():
     free = refine(blocks, start(blocks, poles=HARDLY), iterations=60)
     mirrored = np.where(HARDLY.real > 0, -HARDLY.conj(), HARDLY)
     begin = solve(blocks, true_sections(mirrored), 2)
-    found = refine(blocks, begin, iterations=60, tolerance=1e-9, left_half_plane=True)
+    everything = np.ones(begin.sections.order, dtype=bool)
+    found = refine(blocks, begin, iterations=60, tolerance=1e-9, confined=everything)
     assert np.all(found.sections.vector() >= BOUND)
     assert np.all(found.sections.poles().real <= 0)
     # a model without its growing pair fits clearly worse: the box is felt
@@ -124,7 +126,8 @@ def test_bounds_do_not_matter_where_they_are_not_touched():
     blocks = noisy(poles=STABLE)
     begin = start(blocks, poles=STABLE)
     free = refine(blocks, begin, tolerance=1e-9, iterations=60)
-    confined = refine(blocks, begin, tolerance=1e-9, iterations=60, left_half_plane=True)
+    everything = np.ones(begin.sections.order, dtype=bool)
+    confined = refine(blocks, begin, tolerance=1e-9, iterations=60, confined=everything)
     assert np.all(free.sections.vector() > 0)
     assert confined.misfit == pytest.approx(free.misfit, rel=1e-8)
 

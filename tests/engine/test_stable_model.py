@@ -97,7 +97,7 @@ def test_level_scales_the_rise_but_not_the_ratio():
 @pytest.mark.parametrize("start", [reflected, on_axis])
 def test_starts_lie_in_the_box(start):
     mixed = Sections(np.array([0.1, -0.2, -3.0]), np.array([1.0, 2.0, -0.5]), np.array([-1.0, 2.0]))
-    confined = start(mixed)
+    confined = start(mixed, np.zeros(mixed.number, dtype=bool))
     assert np.all(confined.vector() >= BOUND)
     # what was stable stays where it was
     assert (confined.c1[0], confined.c0[0], confined.c[1]) == (0.1, 1.0, 2.0)
