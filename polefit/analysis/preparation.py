@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
 
@@ -15,6 +16,8 @@ from polefit.responses import Channel, ResponseSet
 FEWEST_POINTS = 8
 """Fewer points cannot tell one pair and its residue from noise with any degree of freedom left."""
 LARGEST = 1e100
+NUMERICAL_ZERO = 1e-14
+"""A transfer so much smaller than its driving points is what inverting a matrix leaves."""
 
 _SHARES_POLES = {"impedance", "transfer"}
 """Quantities whose modes do not depend on which node the probe drives."""
@@ -79,7 +82,7 @@ def prepare(
 def _check_band(band_hz: object) -> None:
     """Refuse what is not two frequencies in hertz."""
     try:
-        low, high = (float(edge) for edge in band_hz)  # type: ignore[attr-defined]
+        _, _ = (float(edge) for edge in band_hz)  # type: ignore[attr-defined]
     except (TypeError, ValueError):
         raise ArgumentError(
             f"band_hz: {band_hz!r} is not a pair of frequencies in hertz; give e.g. (1e6, 6e9)"
@@ -135,10 +138,19 @@ def _check_sizes(one: ResponseSet) -> None:
 def _without_useless(one: ResponseSet, notes: list[str]) -> ResponseSet | None:
     """Leave out channels that are zero throughout or repeat another one, and say so."""
     keep: list[int] = []
+    largest = np.abs(one.values).max(axis=0)
+    own = {c.output: top for c, top in zip(one.channels, largest, strict=True) if c.driving_point}
     for i, channel in enumerate(one.channels):
         column = one.values[:, i]
+        beside = math.sqrt(own.get(channel.output, 0.0)) * math.sqrt(own.get(channel.input, 0.0))
         if not np.any(column):
             notes.append(f"channel {channel} is zero throughout and was left out")
+            continue
+        if largest[i] < NUMERICAL_ZERO * beside:
+            notes.append(
+                f"channel {channel} is zero to double precision beside the driving points of its "
+                "nodes and was left out"
+            )
             continue
         twin = next((j for j in keep if np.array_equal(one.values[:, j], column)), None)
         if twin is not None:

@@ -18,8 +18,6 @@ RELATIVE_FLOOR = 1e-13
 """Below this share of |H| double precision itself is the noise: no order may chase it."""
 ABSOLUTE_FLOOR = 1e-15
 """The same for samples near zero, as a share of the channel's largest |H|."""
-COMMON_FLOOR = 3e-16
-"""The same as a share of the largest |H| of all channels: matrices come out of inversions."""
 STEPS = 60
 LAW_GAIN = 8.0
 """Likelihood gain 2·Δln L that a second coefficient must bring (χ² with one degree, p = 0.005)."""
@@ -66,9 +64,7 @@ def _floor(size: FloatArray) -> FloatArray:
     """Variance that double precision itself brings."""
     squared = size**2
     top = np.maximum(squared.max(axis=1, keepdims=True), 1e-280)
-    floor: FloatArray = (
-        RELATIVE_FLOOR**2 * squared + ABSOLUTE_FLOOR**2 * top + COMMON_FLOOR**2 * top.max()
-    )
+    floor: FloatArray = RELATIVE_FLOOR**2 * squared + ABSOLUTE_FLOOR**2 * top
     return floor
 
 
