@@ -1,5 +1,7 @@
 """What speaks for and against a growing mode, and the company it keeps."""
 
+import re
+
 import numpy as np
 import pytest
 from rational import complex_noise, nearest_mode, partial_fractions, response_set
@@ -9,6 +11,7 @@ from polefit.analysis.evidence import (
     COLOURED_MISFIT,
     COMPANION_MISFIT,
     STABLE_MODEL_RISE,
+    Candidate,
     Comparison,
     _against_stable,
 )
@@ -19,6 +22,9 @@ HZ = np.linspace(0.5e9, 1.5e9, 301)
 GROWING = 2 * np.pi * 1e9 * (0.01 + 1j)
 
 
+CANDIDATE = Candidate(0, GROWING, np.zeros((2, 2)), 1e4, in_band=True, near_band=True)
+
+
 class Estimated:
     """As much of an estimation as the comparison looks at."""
 
@@ -27,8 +33,9 @@ class Estimated:
 
 
 def outcome(ratio, rise=1e3, companions=0, distorted=False, **more):
-    against = Comparison(StableModel(ratio, rise, 4), {0: companions}, distorted)
-    return _against_stable(against, Estimated(**more), companions)
+    stable = StableModel(ratio, rise, 4)
+    against = Comparison(stable, {0: stable}, {0: companions}, distorted)
+    return _against_stable(CANDIDATE, against, Estimated(**more))
 
 
 @pytest.mark.parametrize(
@@ -78,11 +85,11 @@ def test_a_lone_growing_mode_has_everything_for_it():
 
 
 def test_a_weak_growing_mode_on_a_strong_ones_curve_is_asked_for_more():
-    """A stronger, decaying pair within three half-widths and less than five times as wide."""
+    """A stronger pair within three half-widths and less than five times as wide."""
     neighbour = 2 * np.pi * 1.01e9 * (-0.02 + 1j)
     result = identified([GROWING, neighbour], [1e8, 1e9])
     detail = evidence(result, "stable-model misfit").detail
-    assert "on the resonance curve of a stronger, decaying one" in detail
+    assert "on the resonance curve of a stronger one" in detail
     assert f"{COMPANION_MISFIT[1]:g} times are asked for" in detail
 
 
@@ -98,6 +105,21 @@ def test_other_company_casts_no_doubt(neighbour, residue):
     result = identified([GROWING, neighbour], [1e8, residue])
     assert "resonance curve" not in evidence(result, "stable-model misfit").detail
     assert result.verdict == "unstable"
+
+
+def test_each_growing_mode_is_tested_with_the_others_left_alone():
+    """A strong growing pair must not lend its evidence to a second one."""
+    second = 2 * np.pi * 1.3e9 * (0.02 + 1j)
+    result = identified([GROWING, second], [1e8, 3e8])
+    assert [m.verdict for m in result.modes] == ["unstable", "unstable"]
+    details = [
+        next(e for e in m.evidence if e.name == "stable-model misfit").detail for m in result.modes
+    ]
+    ratios = [float(re.search(r"data ([\d.e+]+) times", d).group(1)) for d in details]
+    assert all("without this right-half-plane pole" in d for d in details)
+    # each has a misfit of its own, and no stable model fits better than with one pole spared
+    assert ratios[0] != ratios[1]
+    assert all(1 < r <= 1.01 * result.fit.stable_model_misfit for r in ratios)
 
 
 def test_stable_modes_are_not_compared():

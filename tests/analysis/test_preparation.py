@@ -60,7 +60,16 @@ def test_a_band_with_too_few_points_is_refused():
 
 @pytest.mark.parametrize(
     ("band", "text"),
-    [((2e9, 1e9), "give low, then high"), ((1e9, 1e9), "empty"), ((3e9, 4e9), "the data cover")],
+    [
+        ((2e9, 1e9), "give the lower edge first"),
+        ((1e9, 1e9), "give the lower edge first"),
+        ((-1e9, 1e9), "no band"),
+        ((np.nan, 1e9), "no band"),
+        ((3e9, 4e9), "the data cover"),
+        (1e9, "not a pair of frequencies"),
+        ((1e9,), "not a pair of frequencies"),
+        (("low", "high"), "not a pair of frequencies"),
+    ],
 )
 def test_a_band_without_points_is_refused(band, text):
     message = refused(ArgumentError, one(), band)
