@@ -24,6 +24,7 @@ from polefit.engine.order import (
 from polefit.engine.projection import residual, solve
 from polefit.engine.refinement import refine
 from polefit.engine.sections import Sections, from_poles
+from polefit.engine.significance import information, section_scores, threshold
 from polefit.engine.whiteness import judge_whiteness
 
 S = axis(201)
@@ -64,6 +65,19 @@ def test_pruning_stops_where_the_misfit_would_rise():
     kept = prune(blocks, exact, count_places(blocks))
     assert kept.sections.order == 7
     assert kept.misfit <= exact.misfit * (1 + 1e-6)
+
+
+def test_of_two_pairs_that_stand_in_for_each_other_one_is_kept():
+    """Either may go, not both: each alone scores nothing, since the other would take over."""
+    blocks = noisy()
+    twin = from_poles(POLES[:1] + 1e-5j)
+    rich = solve(blocks, true_sections().join(twin), 2)
+    level = variance_factor(blocks, rich)
+    scores = section_scores(blocks, rich, information(rich)).full / level
+    assert np.sum(scores < threshold(2, count_places(blocks), 0.01)) >= 2
+    found = prune(blocks, rich, count_places(blocks))
+    assert found.sections.order == 7
+    assert np.all(np.abs(nearest(found, POLES[:3]) - POLES[:3]) < 1e-2)
 
 
 def test_a_glitch_is_not_kept():

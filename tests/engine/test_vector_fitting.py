@@ -2,10 +2,11 @@
 
 import numpy as np
 import pytest
-from problems import POLES, axis, block, noise, response, sorted_poles, true_sections
+from problems import POLES, axis, block, noise, response, sorted_poles, true_sections, uneven_block
 
 from polefit.engine import blocks as blocks_module
-from polefit.engine.sections import Sections, from_poles
+from polefit.engine.blocks import weighted
+from polefit.engine.sections import Sections, evaluate, from_poles
 from polefit.engine.vector_fitting import relocate, starting_sections, zeros_of_weighting
 
 S = axis(201)
@@ -55,6 +56,35 @@ def test_growing_pair_is_never_reflected(growth):
 def test_true_poles_are_a_fixed_point():
     found = relocate(EXACT, true_sections(), 2)
     assert np.allclose(sorted_poles(found), sorted_poles(true_sections()), atol=1e-11)
+
+
+def test_one_relocation_of_noisy_data_against_a_dense_solution():
+    """All unknowns of both channels in one matrix, as the paper writes it, by numpy's lstsq."""
+    generator = np.random.default_rng(44)
+    clean = response(S)
+    one = uneven_block(generator, S, clean + noise(generator, clean.shape, 0.05))
+    start = true_sections(POLES * 1.05)
+    n, m = start.order, start.order + 2
+    basis = evaluate(start, S, 2)
+    shared = np.hstack((basis[:, :n], np.ones((S.size, 1))))
+    matrix = np.zeros((one.rows + 1, 2 * m + n + 1))
+    for k in (0, 1):
+        rows = np.s_[2 * k * S.size : 2 * (k + 1) * S.size]
+        matrix[rows, k * m : (k + 1) * m] = weighted(one, basis)[k]
+        every = weighted(one, -one.values[:, :, None] * shared)
+        matrix[rows, 2 * m :] = every[k]
+    # the relaxed condition: the mean of Re(weighting) is one, weighed like the data
+    scale = np.linalg.norm(one.target) / S.size
+    matrix[-1, 2 * m :] = scale * shared.real.sum(axis=0)
+    right = np.zeros(one.rows + 1)
+    right[-1] = scale * S.size
+    size = np.linalg.norm(matrix, axis=0)
+    found = np.linalg.lstsq(matrix / size, right, rcond=None)[0] / size
+    expected = zeros_of_weighting(start, found[2 * m :])
+    got = relocate([one], start, 2)
+    # rounding times the condition of the columns
+    assert np.allclose(sorted_poles(got), sorted_poles(expected), rtol=1e-7, atol=1e-9)
+    assert not np.allclose(sorted_poles(got), sorted_poles(start), atol=1e-3)
 
 
 def test_several_axes_and_many_pieces_share_their_poles(monkeypatch):
