@@ -43,6 +43,56 @@ class Printed:
 
 
 @dataclass(frozen=True)
+class FrequencyPrecision:
+    """How a text file prints its frequencies.
+
+    Parameters
+    ----------
+    printed : Printed
+        Precision of the printed number.
+    scale_hz : float
+        frequency = scale_hz * printed number (unit prefix).
+    exact : bool
+        Whether nothing was rounded away: the frequencies lie on a grid that the digits hold.
+    """
+
+    printed: Printed
+    scale_hz: float = 1.0
+    exact: bool = False
+
+    def quantum_hz(self, frequency_hz: FloatArray) -> FloatArray:
+        """Return one unit of the last printed digit of each frequency, zero where unknown."""
+        quantum: FloatArray = self.scale_hz * self.printed.quantum(frequency_hz / self.scale_hz)
+        return quantum
+
+    def frequency_rounding_std(self, frequency_hz: FloatArray) -> FloatArray:
+        """Return the standard uncertainty left by rounding: quantum / sqrt(12), uniform error.
+
+        Parameters
+        ----------
+        frequency_hz : (N,) float ndarray
+            As read, in hertz.
+
+        Returns
+        -------
+        (N,) float ndarray
+            In hertz; zeros where the frequencies are exact or nothing is known.
+        """
+        if self.exact:
+            return np.zeros(frequency_hz.shape)
+        std: FloatArray = self.quantum_hz(frequency_hz) / np.sqrt(12.0)
+        return std
+
+    def __str__(self) -> str:
+        if self.printed.decimals is not None:
+            places = self.printed.decimals
+            return f"{places} decimal place{'' if places == 1 else 's'}"
+        if self.printed.significant is not None:
+            return f"{self.printed.significant} digits"
+        return "an unknown number of digits"
+
+
+@dataclass(frozen=True)
 class Precision:
     """What is known of the precision with which a text file prints its numbers.
 

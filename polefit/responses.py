@@ -16,7 +16,7 @@ from polefit.channels import Channel as Channel
 from polefit.channels import as_channel as as_channel
 from polefit.channels import port_channels as port_channels
 from polefit.errors import ArgumentError, DataError
-from polefit.precision import Precision
+from polefit.precision import FrequencyPrecision, Precision
 
 if TYPE_CHECKING:
     import skrf
@@ -98,6 +98,8 @@ class ResponseSet:
         Standard uncertainty of each real and imaginary part, where known beforehand.
     source : Source, optional
         File, digest, format and assumptions.
+    frequency_precision : FrequencyPrecision, optional
+        How the frequencies were printed; None for full double precision.
 
     Raises
     ------
@@ -117,6 +119,7 @@ class ResponseSet:
     precision: Precision | None = None
     sample_std: FloatArray | None = field(default=None, repr=False)
     source: Source | None = None
+    frequency_precision: FrequencyPrecision | None = None
 
     def __post_init__(self) -> None:
         if self.quantity not in QUANTITIES:
@@ -271,6 +274,24 @@ class ResponseSet:
     def unit(self) -> str:
         """Unit of the values, empty for a ratio."""
         return UNITS.get(self.quantity, "")
+
+    def frequency_rounding_std(self, frequency_hz: FloatArray | None = None) -> FloatArray:
+        """Return the standard uncertainty of each frequency that printing has left.
+
+        Parameters
+        ----------
+        frequency_hz : (N,) float ndarray, optional
+            Frequencies of this set, in hertz; by default all.
+
+        Returns
+        -------
+        (N,) float ndarray
+            In hertz; zeros where the frequencies are exact or nothing is known.
+        """
+        at = self.frequency_hz if frequency_hz is None else frequency_hz
+        if self.frequency_precision is None:
+            return np.zeros(at.shape)
+        return self.frequency_precision.frequency_rounding_std(at)
 
     def in_band(self, low_hz: float, high_hz: float) -> ResponseSet:
         """Return the points with low_hz <= f <= high_hz.

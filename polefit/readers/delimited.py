@@ -27,6 +27,7 @@ from polefit.readers.delimited_table import (
 )
 from polefit.readers.driven import Responses
 from polefit.readers.large_files import Content
+from polefit.readers.printed_frequency import frequency_precision
 from polefit.readers.reading import Parsed, ReadOptions, unit_name
 from polefit.readers.spice_print import is_print, load_print
 from polefit.readers.text_blocks import Text, open_text
@@ -302,6 +303,7 @@ def _parsed(
         quantity=what.responses.quantity,
         reference_ohm=what.reference_ohm,
         precision=printed,
+        frequency_precision=frequency_precision(table.axis, frequency, layout.frequency_scale),
     )
     assumptions = (
         *notes,

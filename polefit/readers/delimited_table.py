@@ -33,8 +33,8 @@ class Table:
         In the unit of the file.
     parts : (N, K) complex ndarray
         First number of each trace as real, second as imaginary part, whatever they mean.
-    first, second : list of str
-        Samples of the printed numbers.
+    first, second, axis : list of str
+        Samples of the printed numbers, and of the frequencies.
     line_of : callable
         Line number of a row, for error messages; may be slow.
     """
@@ -44,6 +44,7 @@ class Table:
     line_of: Callable[[int], int]
     first: list[str] = field(default_factory=list)
     second: list[str] = field(default_factory=list)
+    axis: list[str] = field(default_factory=list)
 
 
 def load(text: Text, dialect: Dialect, layout: Layout, first_line: int) -> Table:
@@ -71,8 +72,7 @@ def load(text: Text, dialect: Dialect, layout: Layout, first_line: int) -> Table
     """
     frequency = Growing(None, np.float64)
     parts = Growing(len(layout.traces), np.complex128)
-    first: list[str] = []
-    second: list[str] = []
+    samples: tuple[list[str], list[str], list[str]] = ([], [], [])
     rows_before = characters = 0
 
     def line_of(row: int) -> int:
@@ -92,11 +92,11 @@ def load(text: Text, dialect: Dialect, layout: Layout, first_line: int) -> Table
         share = characters / len(text.content)
         frequency.add(axis, share)
         parts.add(values, share)
-        _sample(rows, dialect, layout, first, second)
+        _sample(rows, dialect, layout, *samples)
         rows_before += len(rows)
     if not rows_before:
         raise FormatError("no row of numbers", "export the file again")
-    return Table(frequency.finished(), parts.finished(), line_of, first, second)
+    return Table(frequency.finished(), parts.finished(), line_of, *samples)
 
 
 def _shifted(line_of: Callable[[int], int], rows: int) -> Callable[[int], int]:
@@ -167,12 +167,18 @@ def take(
 
 
 def _sample(
-    rows: list[str], dialect: Dialect, layout: Layout, first: list[str], second: list[str]
+    rows: list[str],
+    dialect: Dialect,
+    layout: Layout,
+    first: list[str],
+    second: list[str],
+    axis: list[str],
 ) -> None:
     """Collect printed numbers of some rows, spread over the block."""
     stride = max(1, len(layout.traces) // _TRACES_SAMPLED)
     for row in rows[:: max(1, len(rows) // _TOKENS_PER_BLOCK)]:
         tokens = [t for part in dialect.fields(row) for t in part.split(PAIR)]
+        axis.append(tokens[layout.frequency])
         for trace in layout.traces[::stride]:
             first.append(tokens[trace.first])
             second.append(tokens[trace.second])

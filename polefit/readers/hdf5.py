@@ -19,6 +19,8 @@ Layout, version 1. Text is UTF-8, of fixed or variable length; frequencies are i
                                   ``form``, ``scale``, ``radians`` and, where known,
                                   ``first_significant``, ``first_decimals``,
                                   ``second_significant``, ``second_decimals``
+``…/frequency_precision``         group (optional): how the frequencies were printed; attributes
+                                  ``scale_hz``, ``exact`` and ``significant`` or ``decimals``
 ``…/source``                      group (optional): attributes ``file``, ``sha256``, ``format``,
                                   dataset ``assumptions`` (m,) text
 ================================  =================================================================
@@ -36,7 +38,7 @@ import numpy as np
 
 from polefit.atomic import whole_file
 from polefit.errors import ArgumentError, DataError, FormatError
-from polefit.precision import Precision, Printed
+from polefit.precision import FrequencyPrecision, Precision, Printed
 from polefit.readers.hdf5_safely import (
     child_dataset,
     child_group,
@@ -216,6 +218,8 @@ def _put(group: h5py.Group, responses: ResponseSet) -> None:
         group.create_dataset("sample_std", data=responses.sample_std)
     if responses.precision is not None:
         _put_precision(group.create_group("precision"), responses.precision)
+    if responses.frequency_precision is not None:
+        _put_axis(group.create_group("frequency_precision"), responses.frequency_precision)
     if responses.source is not None:
         _put_source(group.create_group("source"), responses.source)
 
@@ -229,6 +233,15 @@ def _put_precision(group: h5py.Group, precision: Precision) -> None:
             group.attrs[f"{place}_significant"] = printed.significant
         if printed.decimals is not None:
             group.attrs[f"{place}_decimals"] = printed.decimals
+
+
+def _put_axis(group: h5py.Group, precision: FrequencyPrecision) -> None:
+    group.attrs["scale_hz"] = precision.scale_hz
+    group.attrs["exact"] = precision.exact
+    if precision.printed.significant is not None:
+        group.attrs["significant"] = precision.printed.significant
+    if precision.printed.decimals is not None:
+        group.attrs["decimals"] = precision.printed.decimals
 
 
 def _put_source(group: h5py.Group, source: Source) -> None:
@@ -269,6 +282,7 @@ def _parsed(group: h5py.Group) -> Parsed:
             precision=_precision(group),
             sample_std=None if std is None else float_array(std, dimensions=2),
             source=_source(group),
+            frequency_precision=_axis(group),
         )
     except (DataError, ArgumentError) as error:
         what, _, remedy = str(error).partition("; ")
@@ -327,6 +341,17 @@ def _precision(group: h5py.Group) -> Precision | None:
     )
     radians = bool(number(stored, "radians"))
     return Precision(form, first, second, scale, radians)  # type: ignore[arg-type]
+
+
+def _axis(group: h5py.Group) -> FrequencyPrecision | None:
+    if group.get("frequency_precision", getlink=True) is None:
+        return None
+    stored = child_group(group, "frequency_precision")
+    scale = number(stored, "scale_hz")
+    if not 0 < scale < np.inf:
+        raise FormatError(f"{stored.name}: scale_hz = {scale:g}", "give hertz per printed unit")
+    printed = Printed(_whole(stored, "significant"), _whole(stored, "decimals"))
+    return FrequencyPrecision(printed, scale, bool(number(stored, "exact")))
 
 
 def _source(group: h5py.Group) -> Source | None:

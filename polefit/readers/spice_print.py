@@ -86,7 +86,9 @@ def load_print(text: Text, options: ReadOptions) -> tuple[Table, Layout]:
     lines = sections[0].lines
     frequency, parts = take(kept, layout, lambda row: lines[row])
     printed = [t for group in tokens for t in group]
-    return Table(frequency, parts, lambda row: lines[row], printed, printed), layout
+    rows = sections[0].rows
+    axis = [row.split(None, 2)[1] for row in rows[:: max(1, len(rows) // 200)]]
+    return Table(frequency, parts, lambda row: lines[row], printed, printed, axis), layout
 
 
 def _sections(text: Text) -> list[_Section]:

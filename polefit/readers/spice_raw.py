@@ -15,6 +15,7 @@ from polefit.errors import AmbiguousFileError, ArgumentError, FormatError
 from polefit.precision import Precision, Printed
 from polefit.readers.driven import Responses, Vector, port_responses, responses_of
 from polefit.readers.large_files import Content
+from polefit.readers.printed_frequency import frequency_precision
 from polefit.readers.reading import REFERENCE_UNKNOWN, Parsed, ReadOptions, printed_form
 from polefit.readers.spice_raw_numbers import Numbers, ascii_numbers, binary_numbers
 from polefit.responses import ComplexArray, FloatArray, ResponseSet
@@ -106,6 +107,7 @@ def parse(content: Content, options: ReadOptions, *, stem: str) -> Parsed:
         quantity=how.quantity,
         reference_ohm=reference,
         precision=_precision(numbers.tokens),
+        frequency_precision=frequency_precision(numbers.tokens[2], frequency, 1.0),
     )
     name = f"SPICE raw ({'binary' if plot.binary else 'ASCII'})"
     taken = [f"plot {plot.name!r} taken; {', '.join(map(repr, others))} left out"] if others else []
@@ -365,7 +367,7 @@ def _check_rising(frequency: FloatArray, place_of: Callable[[int], tuple[str, in
     )
 
 
-def _precision(tokens: tuple[Sequence[str], Sequence[str]]) -> Precision | None:
+def _precision(tokens: tuple[Sequence[str], Sequence[str], Sequence[str]]) -> Precision | None:
     first, second = printed_form(tokens[0]), printed_form(tokens[1])
     if first is None and second is None:
         return None

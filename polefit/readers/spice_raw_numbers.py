@@ -23,6 +23,8 @@ _HIGHEST_HZ = 1e15  # a byte order that gives more is the wrong one
 _TITLE = re.compile(rb"^[ \t]*[A-Za-z][A-Za-z. ]*:", re.MULTILINE)
 _SEPARATORS = bytes.maketrans(b",\t\r\n", b"    ")
 _ROWS_AT_ONCE = 8192
+_PAIR = re.compile(r"\s([^\s,]+),[ \t]*([^\s,]+)")
+_BEGINS_POINT = re.compile(r"[ \t]*\d+[ \t]")  # its index, then the frequency
 
 
 class Header(Protocol):
@@ -65,8 +67,8 @@ class Numbers:
         Byte and line behind the plot.
     place_of : callable
         Place of a row for messages: text, and line number or None.
-    tokens : (list of str, list of str)
-        Samples of the printed real and imaginary parts; empty for binary.
+    tokens : (list of str, list of str, list of str)
+        Samples of the printed real parts, imaginary parts and frequencies; empty for binary.
     assumptions : tuple of str
         How binary numbers were read.
     """
@@ -77,7 +79,7 @@ class Numbers:
     end: int
     end_line: int
     place_of: Callable[[int], tuple[str, int | None]]
-    tokens: tuple[Sequence[str], Sequence[str]] = ((), ())
+    tokens: tuple[Sequence[str], Sequence[str], Sequence[str]] = ((), (), ())
     assumptions: tuple[str, ...] = ()
 
 
@@ -123,7 +125,7 @@ def binary_numbers(content: Content, plot: Header, wanted: tuple[int, ...]) -> N
         release(content, plot.start + start * row_bytes, plot.start + rows.stop * row_bytes)
     del view, table  # they would keep a mapped file from being closed
     _refuse_not_finite(frequency, values, _point)
-    return Numbers(frequency, values, wanted, end, plot.line, _point, ([], []), (assumption,))
+    return Numbers(frequency, values, wanted, end, plot.line, _point, ([], [], []), (assumption,))
 
 
 def _point(row: int) -> tuple[str, int | None]:
@@ -327,17 +329,21 @@ class _AsciiReader:
                 return number
         return self.plot.line
 
-    def tokens(self, parts: int) -> tuple[list[str], list[str]]:
-        """Return samples of the printed real and imaginary parts."""
+    def tokens(self, parts: int) -> tuple[list[str], list[str], list[str]]:
+        """Return samples of the printed real parts, imaginary parts and frequencies."""
         if parts != 2:
-            return [], []
-        pairs = [
-            match
-            for sample in self.samples
-            for match in re.findall(r"\t([^\s,]+),([^\s,]+)", sample.decode("latin-1"))
-        ]
+            return [], [], []
+        pairs = []
+        axis = []
+        for sample in self.samples:
+            for line in sample.decode("latin-1").split("\n")[:-1]:  # the last may be cut
+                pair = _PAIR.search(line)
+                if pair and _BEGINS_POINT.match(line):
+                    axis.append(pair[1])
+                elif pair:
+                    pairs.append(pair)
         stride = max(1, len(pairs) // 2000)
-        return [p[0] for p in pairs[::stride]], [p[1] for p in pairs[::stride]]
+        return [p[1] for p in pairs[::stride]], [p[2] for p in pairs[::stride]], axis
 
 
 def _floats(text: bytes) -> FloatArray | None:

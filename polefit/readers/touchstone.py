@@ -17,8 +17,9 @@ import numpy as np
 
 from polefit.errors import ArgumentError, FormatError
 from polefit.estimates import si
-from polefit.precision import Precision, Printed
+from polefit.precision import FrequencyPrecision, Precision, Printed
 from polefit.readers.large_files import Content
+from polefit.readers.printed_frequency import frequency_precision
 from polefit.readers.reading import Parsed, ReadOptions, printed_form, unit_name
 from polefit.readers.text_blocks import numbered_lines, open_text
 from polefit.readers.touchstone_header import Header, read_header
@@ -106,6 +107,7 @@ def parse(content: Content, options: ReadOptions, *, stem: str, suffix: str = ""
         quantity=_QUANTITY[header.option.parameter],
         reference_ohm=layout.references if header.option.parameter == "S" else None,
     )
+    responses = replace(responses, frequency_precision=_axis_precision(header, layout, responses))
     comments = (*header.reference_comments, *found.reference_comments)
     doubts = () if options.scaling else _scaling_doubt(responses, layout, scales)
     return Parsed(
@@ -244,12 +246,7 @@ def _normalisation(parameter: str, references: FloatArray) -> FloatArray:
 
 def _precision(header: Header, layout: Layout) -> Precision | None:
     """Tell from a sample how the numbers were printed, first and second of a pair apart."""
-    width = layout.table.shape[1]
-    places = [
-        (index % width, token)
-        for index, token in layout.section.sample
-        if index < layout.table.size
-    ]
+    places = _sample(layout)
     first = printed_form([token for place, token in places if place % 2 == 1])
     second = printed_form([token for place, token in places if place and place % 2 == 0])
     if first is None and second is None:
@@ -260,6 +257,23 @@ def _precision(header: Header, layout: Layout) -> Precision | None:
         "db": "decibel-angle",
     }
     return Precision(forms[header.option.form], first or Printed(), second or Printed())
+
+
+def _sample(layout: Layout) -> list[tuple[int, str]]:
+    """Numbers as printed, with their place in the row."""
+    width = layout.table.shape[1]
+    return [
+        (index % width, token)
+        for index, token in layout.section.sample
+        if index < layout.table.size
+    ]
+
+
+def _axis_precision(
+    header: Header, layout: Layout, responses: ResponseSet
+) -> FrequencyPrecision | None:
+    tokens = [token for place, token in _sample(layout) if place == 0]
+    return frequency_precision(tokens, responses.frequency_hz, header.option.unit_hz)
 
 
 def _with_precision(
