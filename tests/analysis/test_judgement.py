@@ -201,10 +201,11 @@ def test_a_pole_far_outside_stands_for_what_is_beyond():
 
 
 @pytest.mark.parametrize(
-    ("edge", "inside"), [(0.553, False), (0.54, False), (0.545, False), (0.58, True)]
+    ("edge", "inside"),
+    [(0.553, False), (0.5547, False), (0.54, False), (0.545, False), (0.58, True)],
 )
 def test_a_mode_at_the_upper_edge_does_not_decide(edge, inside):
-    """Pair at 0.55 GHz with a half-width of 0.015: 0.3 of it and one step, 0.005, are asked for."""
+    """Pair at 0.55 GHz: one step, 0.00495, is asked for, and 0.3 half-widths, 0.0045."""
     found = judged(estimation(*fitted()), band=(1e7, edge * 1e9))
     mode = min(found.modes, key=lambda m: abs(m.pole_rad_per_s - POLES[1] * SCALE))
     assert mode.in_band is inside

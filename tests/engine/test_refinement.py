@@ -132,6 +132,16 @@ def test_bounds_do_not_matter_where_they_are_not_touched():
     assert confined.misfit == pytest.approx(free.misfit, rel=1e-8)
 
 
+def test_a_parameter_on_its_bound_is_released_when_the_data_pull_inside():
+    """Stable data, started with the first pair on the axis, its neighbours at the truth."""
+    blocks = noisy(poles=STABLE)
+    sections = true_sections(STABLE)
+    sections.c1[0] = BOUND
+    everything = np.ones(sections.order, dtype=bool)
+    found = refine(blocks, solve(blocks, sections, 2), iterations=60, confined=everything)
+    assert found.sections.c1[0] == pytest.approx(-2 * STABLE[0].real, rel=0.1)
+
+
 def test_start_beyond_floating_point_is_handed_back():
     s = axis(20)
     with np.errstate(all="ignore"):
