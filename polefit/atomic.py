@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import os
+import stat
 import tempfile
 from collections.abc import Iterator
 from contextlib import contextmanager
@@ -18,7 +19,8 @@ def whole_file(path: str | Path) -> Iterator[Path]:
     Parameters
     ----------
     path : str or pathlib.Path
-        The file to appear. Missing parent directories are made.
+        The file to appear. Missing parent directories are made. A symbolic link stays, and the
+        file it names is written; a pipe or device is written to and stays what it is.
 
     Yields
     ------
@@ -30,26 +32,27 @@ def whole_file(path: str | Path) -> Iterator[Path]:
     FileError
         If the file cannot be written there.
     """
-    target = Path(path)
     try:
-        target.parent.mkdir(parents=True, exist_ok=True)
-        if target.is_dir():
-            raise IsADirectoryError(21, "Is a directory")
+        target, mode = _place(Path(path))
+        # beside a device nothing may appear: its folder belongs to the system
+        folder = target.parent if mode is None or stat.S_ISREG(mode) else None
         handle, name = tempfile.mkstemp(
-            dir=target.parent, prefix=f".{target.stem[:40]}-", suffix=target.suffix
+            dir=folder, prefix=f".{target.stem[:40]}-", suffix=target.suffix
         )
     except OSError as error:
-        reason = error.strerror or type(error).__name__
-        raise FileError(f"cannot be written: {reason}", "choose another path", file=path) from error
+        raise _unwritable(path, error) from error
     os.close(handle)
     temporary = Path(name)
     try:
         yield temporary
-        temporary.chmod(0o666 & ~_umask())
-        temporary.replace(target)
+        if folder is None:
+            with target.open("wb", buffering=0) as node:
+                _pour(temporary.read_bytes(), node.fileno())
+        else:
+            temporary.chmod(0o666 & ~_umask() if mode is None else stat.S_IMODE(mode))
+            temporary.replace(target)
     except OSError as error:
-        reason = error.strerror or type(error).__name__
-        raise FileError(f"cannot be written: {reason}", "choose another path", file=path) from error
+        raise _unwritable(path, error) from error
     finally:
         temporary.unlink(missing_ok=True)
 
@@ -58,6 +61,32 @@ def write_text(path: str | Path, text: str) -> None:
     """Write `text` as UTF-8, whole or not at all."""
     with whole_file(path) as temporary:
         temporary.write_text(text, encoding="utf-8")
+
+
+def _place(target: Path) -> tuple[Path, int | None]:
+    """Return where to write and the mode of what is there; make missing folders."""
+    try:
+        mode = target.stat().st_mode
+    except FileNotFoundError:
+        target = target.resolve()
+        target.parent.mkdir(parents=True, exist_ok=True)
+        return target, None
+    if stat.S_ISDIR(mode):
+        raise IsADirectoryError(21, "Is a directory")
+    if not os.access(target, os.W_OK):
+        raise PermissionError(13, "Permission denied")
+    return (target.resolve() if stat.S_ISREG(mode) else target), mode
+
+
+def _pour(content: bytes, handle: int) -> None:
+    """Write everything: a pipe takes part of it at a time."""
+    while content:
+        content = content[os.write(handle, content) :]
+
+
+def _unwritable(path: str | Path, error: OSError) -> FileError:
+    reason = error.strerror or type(error).__name__
+    return FileError(f"cannot be written: {reason}", "choose another path", file=path)
 
 
 def _umask() -> int:

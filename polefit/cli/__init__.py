@@ -67,6 +67,9 @@ def main(argv: Sequence[str] | None = None) -> int:
                 prog_name="polefit",
                 standalone_mode=False,
             )
+        except click.exceptions.NoArgsIsHelpError as error:
+            sys.stderr.write(error.format_message() + "\n")
+            return BAD_INPUT
         except click.ClickException as error:
             return _refused(_usage_text(error))
         except (click.Abort, KeyboardInterrupt):

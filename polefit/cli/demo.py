@@ -10,6 +10,7 @@ import click
 
 from polefit.cli import options
 from polefit.cli.output import put, say
+from polefit.cli.paths import check_replaceable
 from polefit.cli.progress import Progress
 from polefit.errors import FileError
 
@@ -28,6 +29,8 @@ def demo(output: str, quiet: bool) -> int:
     The example is an invented amplifier of three stages. Ends with status 0 whatever its verdict.
     """
     folder = Path(output)
+    for option, name in (("json", "result.json"), ("html", "report.html"), ("hdf5", "result.h5")):
+        check_replaceable(f"--{option}", folder / name)
     with Progress(quiet) as progress:
         files = copy_example(folder)
         from polefit.analysis.identify import identify
@@ -57,7 +60,8 @@ def copy_example(folder: Path) -> list[Path]:
     Raises
     ------
     FileError
-        If the example is missing or the folder cannot be written.
+        If the example is missing, the folder cannot be written, or it holds another file of
+        such a name.
     """
     from polefit.atomic import whole_file
 
@@ -66,6 +70,10 @@ def copy_example(folder: Path) -> list[Path]:
         if not source.is_file():
             continue
         target = folder / source.name
+        if target.is_file() and target.read_bytes() != source.read_bytes():
+            raise FileError(
+                "exists and is not that of the example", "give another --output", file=target
+            )
         with whole_file(target) as temporary:
             temporary.write_bytes(source.read_bytes())
         copied.append(target)

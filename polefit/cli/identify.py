@@ -8,9 +8,11 @@ from typing import Any
 import click
 
 from polefit.cli import options
-from polefit.cli.output import Outputs, check_paths, deliver
+from polefit.cli.output import Outputs, deliver
+from polefit.cli.paths import check_paths
 from polefit.cli.progress import Progress
 from polefit.cli.reading import read_files
+from polefit.errors import ArgumentError
 
 
 @click.command()
@@ -18,7 +20,7 @@ from polefit.cli.reading import read_files
 @options.band_option
 @click.option(
     "--confidence",
-    type=options.Number(0, 1, min_open=True, max_open=True),
+    type=options.Number(0.5, 1, min_open=True, max_open=True),
     default=0.95,
     metavar="P",
     show_default=True,
@@ -31,6 +33,9 @@ from polefit.cli.reading import read_files
 @options.figures_option
 @options.figure_format_option
 @options.quiet_option
+@options.quantity_option(
+    [name for name in options.QUANTITY_NAMES if name not in options.NOT_IDENTIFIED]
+)
 @options.reading_options
 def identify(
     files: tuple[str, ...],
@@ -50,8 +55,10 @@ def identify(
     Several FILEs are several probes of one circuit and share their modes; a one-port file names
     its node by its stem. Exit status: 0 nothing unstable, 1 unstable, 3 undecided, 2 bad input.
     """
-    outputs = Outputs(json, html, hdf5, figures, figure_format, quiet)
-    check_paths(outputs)
+    if figure_format and figures is None:
+        raise ArgumentError("--figure-format: no figures were asked for; give --figures DIR, too")
+    check_paths(json=json, html=html, hdf5=hdf5, figures=figures, inputs=files)
+    outputs = Outputs(json, html, hdf5, figures, figure_format or ("png",), quiet)
     band_hz = options.checked_band(band)
     with Progress(quiet) as progress:
         responses = read_files(files, reading, progress)

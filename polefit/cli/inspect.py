@@ -7,7 +7,8 @@ from typing import Any
 import click
 
 from polefit.cli import options
-from polefit.cli.output import Outputs, check_paths, put
+from polefit.cli.output import Outputs, put
+from polefit.cli.paths import check_paths
 from polefit.cli.progress import Progress
 from polefit.cli.reading import options_for
 
@@ -16,6 +17,7 @@ from polefit.cli.reading import options_for
 @click.argument("file")
 @options.json_option
 @options.quiet_option
+@options.quantity_option()
 @options.reading_options
 def inspect(file: str, json: str | None, quiet: bool, **reading: Any) -> int:
     """Tell what was read from a response file, and every assumption made.
@@ -24,7 +26,7 @@ def inspect(file: str, json: str | None, quiet: bool, **reading: Any) -> int:
     will limit the verdict.
     """
     outputs = Outputs(json=json, quiet=quiet)
-    check_paths(outputs)
+    check_paths(json=json, inputs=[file])
     with Progress(quiet) as progress:
         progress(f"reading {file}")
         from polefit.analysis.inspection import inspect_all

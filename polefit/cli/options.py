@@ -4,13 +4,14 @@ from __future__ import annotations
 
 import math
 import re
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from functools import reduce
 from typing import TYPE_CHECKING, Any, TypeVar
 
 import click
 
 from polefit.errors import ArgumentError
+from polefit.estimates import si
 
 Command = TypeVar("Command", bound=Callable[..., Any])
 
@@ -25,23 +26,24 @@ QUANTITY_NAMES = (
     "loop-gain",
 )
 _FREQUENCY = re.compile(r"\s*(\+?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?)\s*([A-Za-z]*)\s*")
-_FACTORS = {"": 1.0, "hz": 1.0, "khz": 1e3, "mhz": 1e6, "ghz": 1e9, "thz": 1e12}
+_PREFIXES = {"": 1.0, "k": 1e3, "m": 1e6, "meg": 1e6, "g": 1e9, "t": 1e12}
+_FACTORS = _PREFIXES | {f"{prefix}hz": factor for prefix, factor in _PREFIXES.items()}
 
 
 def as_frequency(text: str) -> float:
-    """Turn ``1.5e9``, ``1.5GHz`` or ``1500 MHz`` into hertz.
+    """Turn ``1.5e9``, ``1.5GHz``, ``1.5G`` or ``1500 MHz`` into hertz.
 
     Raises
     ------
     ArgumentError
-        If it is neither; ``mHz`` is refused, since it may mean a thousandth.
+        If it is neither; ``m`` and ``mHz`` are refused, since they may mean a thousandth.
     """
     match = _FREQUENCY.fullmatch(text)
     unit = match[2] if match else ""
     if match is None or unit.lower() not in _FACTORS:
         raise ArgumentError(f"{text!r} is not a frequency; write it like 1.5e9, 1.5GHz or 1500MHz")
-    if unit.lower() == "mhz" and unit[0] == "m":
-        raise ArgumentError(f"{text!r} could mean a thousandth of a hertz; write MHz for 1e6")
+    if unit.lower() in ("m", "mhz") and unit[0] == "m":
+        raise ArgumentError(f"{text!r} could mean thousandths of a hertz; write MHz for 1e6")
     value = float(match[1]) * _FACTORS[unit.lower()]
     if value == float("inf"):
         raise ArgumentError(f"{text!r} is not a finite frequency")
@@ -110,12 +112,19 @@ def _together(*options: Callable[[Command], Command]) -> Callable[[Command], Com
 
 _FORMS = ("real-imaginary", "magnitude-angle", "decibel-angle")
 
-reading_options = _together(
-    click.option(
+NOT_IDENTIFIED = ("return-difference", "loop-gain")
+
+
+def quantity_option(names: Sequence[str] = QUANTITY_NAMES) -> Callable[[Command], Command]:
+    """Return the option that says what the values are, with the names that a command can use."""
+    return click.option(
         "--quantity",
-        type=click.Choice(QUANTITY_NAMES),
+        type=click.Choice(names),
         help="What the values are; matrices are converted to it.",
-    ),
+    )
+
+
+reading_options = _together(
     click.option(
         "--driven",
         multiple=True,
@@ -165,8 +174,7 @@ figure_format_option = click.option(
     "--figure-format",
     type=click.Choice(("png", "svg", "pdf")),
     multiple=True,
-    default=("png",),
-    show_default=True,
+    show_default="png",
     help="Of the figures; may be given several times.",
 )
 hdf5_option = click.option("--hdf5", metavar="PATH", help="Write data and result as HDF5.")
@@ -184,5 +192,6 @@ def checked_band(band: tuple[float, float] | None) -> tuple[float, float] | None
         If it is reversed or empty.
     """
     if band and not band[0] < band[1]:
-        raise ArgumentError(f"--band: {band[0]:g} to {band[1]:g} Hz is empty; give LO, then HI")
+        low, high = (si(edge, "Hz", 6) for edge in band)
+        raise ArgumentError(f"--band: {low} to {high} is empty; give LO, then HI")
     return band or None

@@ -9,7 +9,7 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING, TextIO
 
-from polefit.errors import ArgumentError
+from polefit.cli.paths import check_replaceable
 
 if TYPE_CHECKING:
     from polefit.modes import Identification
@@ -150,7 +150,9 @@ def _write_files(results: Sequence[Identification], outputs: Outputs, separately
         if outputs.hdf5 is not None:
             from polefit.report.hdf5 import write_identification
 
-            write_identification(_suffixed(Path(outputs.hdf5), stem), result)
+            path = _suffixed(Path(outputs.hdf5), stem)
+            check_replaceable("--hdf5", path)
+            write_identification(path, result)
         if outputs.figures is not None:
             from polefit.report.figures import save_figures
 
@@ -171,34 +173,6 @@ def _write_json(results: Sequence[Identification], outputs: Outputs, separately:
         put(text.rstrip("\n"))
     else:
         write_text(str(outputs.json), text)
-
-
-def check_paths(outputs: Outputs) -> None:
-    """Refuse outputs that would overwrite each other, before any work is done.
-
-    Raises
-    ------
-    ArgumentError
-        If two of them name the same file, or ``-`` is not JSON.
-    """
-    named = {
-        "--json": outputs.json,
-        "--html": outputs.html,
-        "--hdf5": outputs.hdf5,
-        "--figures": outputs.figures,
-    }
-    taken: dict[Path, str] = {}
-    for option, value in named.items():
-        if value is None or (option == "--json" and value == "-"):
-            continue
-        if value == "-":
-            raise ArgumentError(f"{option}: only --json can go to standard output; give a path")
-        path = Path(value).resolve()
-        if path in taken:
-            raise ArgumentError(
-                f"{option}: {value} is already given to {taken[path]}; give another"
-            )
-        taken[path] = option
 
 
 def _name(result: Identification) -> str:

@@ -158,6 +158,10 @@ def test_band_and_confidence_reach_the_engine(polefit_command):
         ("0", 0.0),
         ("50Hz", 50.0),
         ("+2.GHZ", 2e9),
+        ("0.1G", 1e8),
+        ("6000M", 6e9),
+        ("3 k", 3e3),
+        ("2meg", 2e6),
     ],
 )
 def test_frequencies(text, hertz):
@@ -165,16 +169,17 @@ def test_frequencies(text, hertz):
 
 
 @pytest.mark.parametrize(
-    "text", ["", "GHz", "1.5G", "-1GHz", "nan", "1,5GHz", "1e999", "1.5 m", "1..5", "0x10", "1_0"]
+    "text", ["", "GHz", "1.5Q", "-1GHz", "nan", "1,5GHz", "1e999", "1.5 d", "1..5", "0x10", "1_0"]
 )
 def test_what_is_no_frequency(text):
     with pytest.raises(ArgumentError, match="frequency"):
         as_frequency(text)
 
 
-def test_a_thousandth_of_a_hertz_is_not_guessed():
+@pytest.mark.parametrize("text", ["5mHz", "5m", "5 mhz"])
+def test_a_thousandth_of_a_hertz_is_not_guessed(text):
     with pytest.raises(ArgumentError, match="write MHz"):
-        as_frequency("5mHz")
+        as_frequency(text)
 
 
 def test_name_lists():
@@ -184,14 +189,17 @@ def test_name_lists():
 @pytest.mark.parametrize(
     ("argv", "words"),
     [
-        ([], ""),
         (["identify"], "Missing argument"),
         (["identify", "a", "--nonsense"], "see polefit identify --help"),
         (["nonsense"], "No such command"),
         (["identify", "a", "--band", "1GHz"], "--band"),
-        (["identify", "a", "--band", "2GHz", "1GHz"], "is empty; give LO, then HI"),
+        (["identify", "a", "--band", "2GHz", "1GHz"], "2 GHz to 1 GHz is empty; give LO, then HI"),
         (["identify", "a", "--band", "1Gz", "2GHz"], "is not a frequency"),
         (["identify", "a", "--confidence", "1.5"], "--confidence"),
+        (["identify", "a", "--confidence", "0.5"], "not in the range 0.5<x<1"),
+        (["identify", "a", "--quantity", "loop-gain"], "'loop-gain' is not one of 'impedance'"),
+        (["identify", "a", "--figure-format", "svg"], "give --figures DIR, too"),
+        (["identify", "a", "--json", "--html", "x.html"], "'--html' would be its path"),
         (["identify", "a", "--confidence", "nan"], "--confidence"),
         (["identify", "a", "--reference-ohm", "nan"], "--reference-ohm"),
         (["identify", "a", "--reference-ohm", "-3"], "--reference-ohm"),
@@ -205,12 +213,18 @@ def test_name_lists():
 def test_usage_errors_take_one_line_and_status_2(polefit_command, argv, words):
     run = polefit_command(*argv)
     assert run.status == 2
-    if argv:
-        assert run.out == ""
-        assert one_line(run.err)
-        assert run.err.startswith("polefit: error: ")
-        assert words in run.err
+    assert run.out == ""
+    assert one_line(run.err)
+    assert run.err.startswith("polefit: error: ")
+    assert words in run.err
     assert not polefit_command.identified
+
+
+def test_no_command_shows_the_help(polefit_command):
+    run = polefit_command()
+    assert (run.status, run.out) == (2, "")
+    assert run.err.startswith("Usage: polefit [OPTIONS] COMMAND")
+    assert all(f"\n  {name}  " in run.err for name in commands.commands)
 
 
 def test_errors_of_the_package_take_one_line(polefit_command):
