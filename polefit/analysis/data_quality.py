@@ -135,7 +135,7 @@ def _copies(responses: ResponseSet) -> list[str]:
 
 
 def _accuracy(responses: ResponseSet) -> list[str]:
-    """Coarse rounding, and noise that shows above it."""
+    """Coarse rounding of values and frequencies, and noise that shows above it."""
     frequency, values = _middle(responses)
     rounding = _rounding(responses, values)
     found = []
@@ -151,6 +151,9 @@ def _accuracy(responses: ResponseSet) -> list[str]:
             f"few digits: rounding leaves about {rounding:.1g} of the response uncertain; "
             "export more digits"
         )
+    found += _axis_rounding(responses)
+    by_axis = _by_axis(frequency, values, responses.frequency_rounding_std(frequency))
+    rounding = float(np.hypot(rounding, _typical(by_axis, values)))
     noise = [visible_noise(frequency, values[:, k]) for k in range(values.shape[1])]
     worst = int(np.argmax(noise))
     if noise[worst] > max(3 * rounding, LEAST_NOISE):
@@ -158,6 +161,63 @@ def _accuracy(responses: ResponseSet) -> list[str]:
             f"noise shows: about {noise[worst]:.1g} of the response at {responses.channels[worst]}"
         )
     return found
+
+
+def _axis_rounding(responses: ResponseSet) -> list[str]:
+    """Warn where rounded frequencies move a steep response by more than its own digits do."""
+    printed = responses.frequency_precision
+    std = responses.frequency_rounding_std()
+    if printed is None or not std.any():
+        return []
+    worst, at, beside = COARSE_ROUNDING, -1, 0.0
+    for k in range(len(responses.channels)):
+        column = responses.values[:, k : k + 1]
+        moved = _relative(_by_axis(responses.frequency_hz, column, std), column)
+        known = _relative(_by_values(responses, slice(k, k + 1)), column)
+        row = int(np.argmax(np.where(moved > known, moved, 0.0)))
+        if moved[row, 0] > max(worst, known[row, 0]):
+            worst, at, beside = float(moved[row, 0]), row, float(known[row, 0])
+    if at < 0:
+        return []
+    left = f"; the digits of the values leave {beside:.1g}" if beside else ""
+    return [
+        f"frequency printed to {printed}: its rounding moves the response by up to {worst:.1g} "
+        f"where it is steep (at {si(responses.frequency_hz[at], 'Hz')}){left}; export more digits "
+        "of the frequency, or sweep a grid that its digits hold"
+    ]
+
+
+def _by_axis(frequency: FloatArray, values: ComplexArray, std_hz: FloatArray) -> FloatArray:
+    """Tell what an uncertainty of the frequency does to the response: |dH/df| times it."""
+    if frequency.size < 2 or not std_hz.any():
+        return np.zeros(values.shape)
+    slope: FloatArray = np.abs(np.gradient(values, frequency, axis=0))
+    return slope * std_hz[:, np.newaxis]
+
+
+def _by_values(responses: ResponseSet, columns: slice) -> FloatArray:
+    """Tell the standard uncertainty of samples, both parts together, as known of the values."""
+    values = responses.values[:, columns]
+    total = np.zeros(values.shape)
+    if responses.precision is not None:
+        first, second, _ = responses.precision.rounding_std(values)
+        total = np.hypot(first, second)
+    if responses.sample_std is not None:
+        total = np.hypot(total, np.sqrt(2) * responses.sample_std[:, columns])
+    return total
+
+
+def _relative(std: FloatArray, values: ComplexArray) -> FloatArray:
+    """Uncertainties over the response; zero where that is zero."""
+    size = np.abs(values)
+    with np.errstate(divide="ignore", invalid="ignore"):
+        relative: FloatArray = np.where(size > 0, std / size, 0.0)
+    return relative
+
+
+def _typical(std: FloatArray, values: ComplexArray) -> float:
+    """Typical uncertainty over the response, of the worst channel."""
+    return float(np.median(_relative(std, values), axis=0).max())
 
 
 def _middle(responses: ResponseSet) -> tuple[FloatArray, ComplexArray]:
@@ -172,10 +232,7 @@ def _rounding(responses: ResponseSet, values: ComplexArray) -> float:
     if responses.precision is None:
         return 0.0
     first, second, _ = responses.precision.rounding_std(values)
-    size = np.abs(values)
-    with np.errstate(divide="ignore", invalid="ignore"):
-        relative = np.where(size > 0, np.hypot(first, second) / size, 0.0)
-    return float(np.median(relative, axis=0).max())
+    return _typical(np.hypot(first, second), values)
 
 
 def known_uncertainty(responses: ResponseSet) -> float:
@@ -194,10 +251,7 @@ def known_uncertainty(responses: ResponseSet) -> float:
     """
     if responses.sample_std is None:
         return 0.0
-    size = np.abs(responses.values)
-    with np.errstate(divide="ignore", invalid="ignore"):
-        relative = np.where(size > 0, np.sqrt(2) * responses.sample_std / size, 0.0)
-    return float(np.median(relative, axis=0).max())
+    return _typical(np.sqrt(2) * responses.sample_std, responses.values)
 
 
 def visible_noise(frequency: FloatArray, values: ComplexArray) -> float:

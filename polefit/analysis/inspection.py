@@ -93,6 +93,18 @@ class Inspection:
     assumptions: tuple[str, ...]
     warnings: tuple[str, ...]
 
+    @property
+    def frequency_digits(self) -> str | None:
+        """How the frequencies are printed; None for full double precision."""
+        printed = self.responses.frequency_precision
+        return None if printed is None else str(printed)
+
+    def _printed_to(self) -> str:
+        printed = self.responses.frequency_precision
+        if printed is None:
+            return ""
+        return f", printed to {printed}" + (", which hold its grid" if printed.exact else "")
+
     def to_dict(self) -> dict[str, Any]:
         """Return plain data under the schema name ``polefit.inspection``."""
         data = self.responses
@@ -109,6 +121,7 @@ class Inspection:
             "quantity": data.quantity,
             "unit": data.unit,
             "frequency_unit": self.frequency_unit,
+            "frequency_digits": self.frequency_digits,
             "scaling": self.scaling,
             "decimal_mark": self.decimal_mark,
             "digits": self.digits,
@@ -136,7 +149,7 @@ class Inspection:
         rows = {
             "format": self.format,
             "quantity": f"{data.quantity} in {data.unit}" if data.unit else data.quantity,
-            "frequency": f"in {self.frequency_unit}",
+            "frequency": f"in {self.frequency_unit}{self._printed_to()}",
             "scaling": self.scaling,
             "decimal mark": mark or "none: binary numbers",
             "digits": self.digits,

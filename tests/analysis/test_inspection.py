@@ -10,7 +10,7 @@ import polefit
 from polefit.analysis.data_quality import known_uncertainty, limits, visible_noise
 from polefit.analysis.inspection import inspect, inspect_all, step_of
 from polefit.cli import main
-from polefit.precision import Precision, Printed
+from polefit.precision import FrequencyPrecision, Precision, Printed
 
 
 def resonance(frequency, centre=1.5e9):
@@ -45,7 +45,7 @@ def test_a_file_is_told_as_it_was_read(touchstone):
     assert text.startswith(str(touchstone))
     assert rows["format"] == "Touchstone 1.0"
     assert rows["quantity"] == "impedance in Ω"
-    assert rows["frequency"] == "in MHz"
+    assert rows["frequency"] == "in MHz, printed to 6 decimal places, which hold its grid"
     assert rows["scaling"] == "printed numbers × 50 = Ω"
     assert rows["decimal mark"] == "point"
     assert rows["digits"] == "9 significant (real part and imaginary part)"
@@ -166,3 +166,61 @@ def test_known_uncertainty():
     assert known_uncertainty(responses()) == 0
     data = responses(values=np.full(4001, 5 + 0j), sample_std=np.full(4001, 0.01))
     assert known_uncertainty(data) == pytest.approx(np.sqrt(2) * 0.002)
+
+
+# -- digits of the frequency --------------------------------------------------------------------
+
+
+def rounded(frequency, digits):
+    return np.array([float(f"{f:.{digits - 1}e}") for f in frequency])
+
+
+@pytest.fixture
+def steep(tmp_path):
+    """Write a resonance of Q = 40 with 12 digits, its frequencies with fewer."""
+
+    def write(frequency, digits):
+        path = tmp_path / "gate2.csv"
+        rows = (
+            f"{f:.{digits - 1}e},{z.real:.11e},{z.imag:.11e}"
+            for f, z in zip(frequency, resonance(frequency), strict=True)
+        )
+        path.write_text("freq (Hz),Re(Z) (Ohm),Im(Z) (Ohm)\n" + "\n".join(rows) + "\n")
+        return inspect(path)
+
+    return write
+
+
+def test_few_digits_of_the_frequency_are_told_and_warned_of(steep):
+    found = steep(np.geomspace(4e6, 4e9, 2001), 6)
+    assert "in Hz, printed to 6 digits\n" in str(found)
+    assert found.to_dict()["frequency_digits"] == "6 digits"
+    told = next(w for w in found.warnings if w.startswith("frequency printed to 6 digits"))
+    # |H'/H| is 2 Q / f = 80 / 1.5 GHz at most half a bandwidth away (over sqrt(2) there); six
+    # digits leave 10 kHz / sqrt(12): 1.1e-4 to 1.5e-4.
+    assert "up to 0.0001 where it is steep (at 1.5 GHz)" in told or "up to 0.0002" in told
+    assert not any(w.startswith("noise shows") for w in found.warnings)
+
+
+@pytest.mark.parametrize(
+    ("frequency", "digits"),
+    [(np.linspace(1e9, 2e9, 401), 6), (np.geomspace(4e6, 4e9, 2001), 12)],
+    ids=["grid", "digits"],
+)
+def test_digits_that_hold_the_frequency_are_not_warned_of(steep, frequency, digits):
+    found = steep(frequency, digits)
+    assert found.frequency_digits == f"{digits} digits"
+    assert not any(w.startswith("frequency printed") for w in found.warnings)
+
+
+def test_rounded_frequencies_are_no_visible_noise():
+    """Rounding of the frequency alone scatters the samples; it is told as such, not as noise."""
+    frequency = 1.4e9 + 1.03456e5 * np.arange(2001)
+    read = rounded(frequency, 6)
+    data = polefit.ResponseSet.from_arrays(
+        read, resonance(frequency), channels="a", quantity="impedance"
+    )
+    assert any(w.startswith("noise shows") for w in limits(data))
+    known = replace(data, frequency_precision=FrequencyPrecision(Printed(significant=6)))
+    assert not any(w.startswith("noise shows") for w in limits(known))
+    assert any(w.startswith("frequency printed to 6 digits") for w in limits(known))
