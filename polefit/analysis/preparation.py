@@ -82,11 +82,15 @@ def prepare(
 def _check_band(band_hz: object) -> None:
     """Refuse what is not two frequencies in hertz."""
     try:
-        _, _ = (float(edge) for edge in band_hz)  # type: ignore[attr-defined]
+        low, high = (float(edge) for edge in band_hz)  # type: ignore[attr-defined]
     except (TypeError, ValueError):
         raise ArgumentError(
             f"band_hz: {band_hz!r} is not a pair of frequencies in hertz; give e.g. (1e6, 6e9)"
         ) from None
+    if not 0 <= low < high:
+        raise ArgumentError(
+            f"band_hz: {low:g} to {high:g} Hz is no band; give the lower edge first"
+        )
 
 
 def _check_together(sets: tuple[ResponseSet, ...]) -> None:
