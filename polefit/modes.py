@@ -317,6 +317,11 @@ class Identification:
 
         return identification_dict(self)
 
+    def __repr__(self) -> str:
+        from polefit.report.headline import short_form
+
+        return short_form(self)
+
     def __str__(self) -> str:
         from polefit.report.text import identification_text
 

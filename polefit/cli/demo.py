@@ -38,9 +38,9 @@ def demo(output: str, quiet: bool) -> int:
         from polefit.readers import read
         from polefit.report.figures import save_figures
         from polefit.report.hdf5 import write_identification
+        from polefit.report.headline import verdict_sentence
         from polefit.report.html import identification_html
         from polefit.report.json import identification_json
-        from polefit.report.wording import verdict_sentence
 
         result = identify([read(f) for f in files if f.suffix in RESPONSES], progress=progress)
         progress("writing the report")

@@ -34,6 +34,7 @@ _PLAIN = str.maketrans(
         "×": "x",
         "≤": "<=",
         "≥": ">=",
+        "≈": "~",
         "–": "-",
         "’": "'",
         "\N{NO-BREAK SPACE}": " ",
@@ -127,7 +128,7 @@ def deliver(results: Sequence[Identification], outputs: Outputs, *, separately: 
     -------
     int
     """
-    from polefit.report.wording import verdict_sentence
+    from polefit.report.headline import verdict_sentence
 
     _write_files(results, outputs, separately)
     if not outputs.json_on_stdout:
@@ -176,7 +177,7 @@ def _write_json(results: Sequence[Identification], outputs: Outputs, separately:
 
 
 def _name(result: Identification) -> str:
-    from polefit.report.wording import plain
+    from polefit.report.phrases import plain
 
     return ", ".join(plain(s.file, 90) for s in result.sources) or "arrays"
 

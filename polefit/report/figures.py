@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import re
 from collections.abc import Sequence
+from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
@@ -21,7 +22,7 @@ from polefit.atomic import whole_file
 from polefit.errors import ArgumentError
 from polefit.estimates import si
 from polefit.modes import Identification
-from polefit.report import drawing, units, wording
+from polefit.report import drawing, nodes, phrases, units, wording
 from polefit.report.pole_map import plot_poles
 from polefit.report.response_plot import plot_overview, plot_response
 from polefit.responses import UNITS
@@ -51,7 +52,7 @@ def plot_nodes(result: Identification, loop_index: int, *, ax: Axes | None = Non
     loop_index : int
         Index into ``result.loops``.
     ax : matplotlib.axes.Axes, optional
-        Where; by default a new figure.
+        Where; by default a new figure, which may hold second axes below.
 
     Returns
     -------
@@ -65,7 +66,9 @@ def plot_nodes(result: Identification, loop_index: int, *, ax: Axes | None = Non
     Notes
     -----
     From driving-point impedances the bars are the damping ratio that 1 mS to ground adds, to
-    first order. Otherwise they are residues relative to the strongest.
+    first order. Where only transfers are known they are residues relative to the strongest. Of
+    nodes of both kinds a figure of its own shows the leverages above and the residues below;
+    axes that were given show the leverages.
     """
     if not -len(result.loops) <= loop_index < len(result.loops):
         raise ArgumentError(
@@ -73,63 +76,98 @@ def plot_nodes(result: Identification, loop_index: int, *, ax: Axes | None = Non
         )
     loop = result.loops[loop_index]
     mode = result.modes[loop.mode]
-    bars, name = _bars(wording.node_strengths(mode))
-    reach = max((abs(v) + h for _, v, h in bars), default=0.0) or 1.0
-    seen = [bar for bar in bars if abs(bar[1]) >= wording.HARDLY_SEEN * reach]
-    shown = seen[:_MOST_BARS] if len(seen) >= wording.ALWAYS else bars[: wording.ALWAYS]
+    title = f"Nodes of mode {loop.mode + 1}, {phrases.label(mode)}"
+    found = nodes.loop_strengths(result, loop_index)
+    levers, residues = _leverages(found), _residues(found)
+    if not levers.bars:
+        return _draw_bars(ax, residues, title)
+    if ax is not None or len(levers.bars) == len(found):
+        return _draw_bars(ax, levers, title)
+    heights = [max(len(_shown(part)), 2) for part in (levers, residues)]
+    figure = drawing.new_figure(7.2, 1.9 + 0.34 * sum(heights))
+    upper, lower = figure.subplots(2, 1, height_ratios=heights)
+    _draw_bars(lower, residues, "")
+    return _draw_bars(upper, levers, title)
+
+
+@dataclass(frozen=True)
+class _Bars:
+    """What bars show: (name, value, half width at 95 %, whether it makes the mode worse)."""
+
+    caption: str
+    bars: tuple[tuple[str, float, float, bool], ...]
+
+
+def _leverages(found: Sequence[nodes.NodeStrength]) -> _Bars:
+    bars = []
+    for strength in found:
+        added = strength.damping_per_ms
+        if added is None:
+            continue
+        half = 1.96 * (added.std or 0.0)
+        worse = added.value + half < 0 and strength.relative >= nodes.NOTHING
+        bars.append((strength.name, added.value, half, worse))
+    return _Bars("damping ratio added by 1 mS to ground, first order", _sorted(bars))
+
+
+def _residues(found: Sequence[nodes.NodeStrength]) -> _Bars:
+    strongest = max((s.size for s in found), default=0.0) or 1.0
+    bars = [(s.name, s.size / strongest, 0.0, False) for s in found]
+    return _Bars("residue relative to the strongest", _sorted(bars))
+
+
+def _sorted(
+    bars: list[tuple[str, float, float, bool]],
+) -> tuple[tuple[str, float, float, bool], ...]:
+    return tuple(sorted(bars, key=lambda bar: -abs(bar[1])))
+
+
+def _reach(part: _Bars) -> float:
+    return max((abs(value) + half for _, value, half, _ in part.bars), default=0.0) or 1.0
+
+
+def _shown(part: _Bars) -> tuple[tuple[str, float, float, bool], ...]:
+    """Leave out nodes that hardly see the mode, and all but the strongest."""
+    seen = [bar for bar in part.bars if abs(bar[1]) >= nodes.HARDLY_SEEN * _reach(part)]
+    return tuple(seen[:_MOST_BARS]) if len(seen) >= nodes.ALWAYS else part.bars[: nodes.ALWAYS]
+
+
+def _draw_bars(ax: Axes | None, part: _Bars, title: str) -> Axes:
+    shown, reach = _shown(part), _reach(part)
     ax = drawing.axes_or_new(ax, 7.2, 1.2 + 0.34 * max(len(shown), 2))
-    drawing.dress(ax, f"Nodes of mode {loop.mode + 1}, {wording.label(mode)}")
-    for y, (_, value, half) in enumerate(shown):
-        worse = value < 0
+    drawing.dress(ax, title)
+    for y, (_, value, half, _) in enumerate(shown):
         ax.barh(
             y,
             value,
             height=0.62,
-            color=drawing.VERMILLION if worse else drawing.SKY,
+            color=drawing.VERMILLION if value < 0 else drawing.SKY,
             edgecolor=drawing.INK,
             linewidth=0.6,
-            hatch="////" if worse else None,
+            hatch="////" if value < 0 else None,
             xerr=half if half > 0 else None,
             error_kw={"ecolor": drawing.INK, "capsize": 3, "elinewidth": 1.0},
         )
-    labels = [
-        f"{wording.plain(label, 26)}{' (worse)' if v + h < 0 else ''}" for label, v, h in shown
-    ]
+    labels = [f"{phrases.plain(name, 26)}{' (worse)' if w else ''}" for name, _, _, w in shown]
     ax.set_yticks(range(len(shown)), labels, parse_math=False)
     ax.set_ylim(max(len(shown), 1) - 0.4, -0.6)
     ax.axvline(0, color=drawing.INK, linewidth=1.0)
     ax.grid(visible=False, axis="y")
-    units.powers_of_ten(ax.xaxis, reach, name)
+    units.powers_of_ten(ax.xaxis, reach, part.caption)
     ax.set_xlim(
-        min(0.0, *(1.08 * (v - h) for _, v, h in shown), 0.0),
-        max(0.0, *(1.08 * (v + h) for _, v, h in shown), 0.0) or 0.05 * reach,
+        min(0.0, *(1.08 * (v - h) for _, v, h, _ in shown), 0.0),
+        max(0.0, *(1.08 * (v + h) for _, v, h, _ in shown), 0.0) or 0.05 * reach,
     )
-    if len(bars) > len(shown):
+    if len(part.bars) > len(shown):
         drawing.text(
             ax,
             1.0,
             1.02,
-            f"and {len(bars) - len(shown)} weaker",
+            f"and {len(part.bars) - len(shown)} weaker",
             transform=ax.transAxes,
             ha="right",
         )
     return ax
-
-
-def _bars(strengths: Sequence[wording.NodeStrength]) -> tuple[list[tuple[str, float, float]], str]:
-    """Choose what the bars show, and return (name, value, half width at 95 %) of each."""
-    usable = [s for s in strengths if s.damping_per_ms is not None]
-    if usable and len(usable) >= len(strengths) / 2:
-        bars = [
-            (s.name, s.damping_per_ms.value, 1.96 * (s.damping_per_ms.std or 0.0))
-            for s in usable
-            if s.damping_per_ms is not None
-        ]
-        caption = "damping ratio added by 1 mS to ground, first order"
-    else:
-        bars = [(s.name, s.relative, 0.0) for s in strengths]
-        caption = "residue relative to the strongest"
-    return sorted(bars, key=lambda bar: -abs(bar[1])), caption
 
 
 def plot_detection(result: Identification, *, ax: Axes | None = None) -> Axes:
@@ -157,7 +195,7 @@ def plot_detection(result: Identification, *, ax: Axes | None = None) -> Axes:
     ax = drawing.axes_or_new(ax, 7.2, 3.6)
     drawing.dress(
         ax,
-        f"Found with {wording.percent(found.power)} probability above the line: a mode with "
+        f"Found with {phrases.percent(found.power)} probability above the line: a mode with "
         f"damping ratio {si(found.damping_ratio, '', 2)}",
     )
     low, high = drawing.shown_band(result)
@@ -180,7 +218,7 @@ def plot_detection(result: Identification, *, ax: Axes | None = None) -> Axes:
         )
         if named:
             handles.append(Line2D([], [], color=drawing.BLUE, linestyle=style))
-            handles[-1].set_label(wording.plain(name, 20))
+            handles[-1].set_label(phrases.plain(name, 20))
     best = np.fmin.reduce(peaks, axis=1)
     (line,) = ax.plot(frequency, best, color=drawing.INK, linewidth=2.2, label="the best node")
     ax.set_yscale("log")

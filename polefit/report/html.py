@@ -17,7 +17,7 @@ from matplotlib.figure import Figure
 from polefit import __version__
 from polefit.estimates import si
 from polefit.modes import Identification, Mode
-from polefit.report import drawing, wording
+from polefit.report import drawing, headline, nodes, phrases, wording
 from polefit.report.figures import plot_detection, plot_nodes, plot_overview, plot_poles
 from polefit.report.response_plot import plot_response, trace_of
 
@@ -55,7 +55,7 @@ def identifications_html(results: Sequence[Identification]) -> str:
         .get_template("page.html.j2")
         .render(
             views=views,
-            title=wording.plain(title, 80),
+            title=phrases.plain(title, 80),
             version=__version__,
             style=Markup(_file("style.css")),
             dark=Markup(_file("dark.css")),
@@ -89,51 +89,61 @@ def _file(name: str) -> str:
 def _svg(drawn: Axes | Figure, prefix: str, caption: str) -> Markup:
     figure = drawn if isinstance(drawn, Figure) else drawn.get_figure(root=True)
     assert isinstance(figure, Figure), "axes made here belong to a figure"
-    return Markup(drawing.inline_svg(figure, prefix, str(escape(wording.plain(caption, 80)))))
+    return Markup(drawing.inline_svg(figure, prefix, str(escape(phrases.plain(caption, 80)))))
 
 
 def _summary(result: Identification) -> dict[str, Any]:
     """Collect what the top of the page and the notebook fragment share."""
-    word, _, sentence = wording.verdict_sentence(result).partition(":")
+    word, _, sentence = headline.verdict_sentence(result).partition(":")
     shown = wording.suspects(result)
     in_full = [i in shown or len(result.modes) <= _FEW for i in range(len(result.modes))]
-    leverage = any(view.leverage is not None for m in result.modes for view in m.nodes)
+    warning = headline.edge_warning(result)
+    before, _, after = sentence.partition(warning) if warning else (sentence, "", "")
+    # a stable verdict says it all; what a sentence already says is not said again
+    told = result.verdict == "stable" or result.reason.rstrip(".") in sentence
     return {
         "verdict": result.verdict,
         "sign": SIGNS[result.verdict],
         "word": f"{word}:",
-        "sentence": wording.glued(wording.plain(sentence, 2000)),
-        "reason": wording.plain(result.reason, 2000),
+        "sentence": _one_line(before),
+        "warning": _one_line(warning),
+        "after": _one_line(after),
+        "reason": "" if told else phrases.sentence(result.reason),
         "modes": [_mode(m, full) for m, full in zip(result.modes, in_full, strict=True)],
-        "node_note": wording.LEVERAGE_NOTE if leverage else wording.RESIDUE_NOTE,
+        "node_note": nodes.node_note(result.modes) if result.modes else "",
+        "sharp_note": phrases.SHARP_NOTE if any(map(phrases.is_sharp, result.modes)) else "",
         "cautions": wording.CAUTIONS,
     }
 
 
+def _one_line(text: str) -> str:
+    return phrases.glued(phrases.plain(text, 2000))
+
+
 def _mode(mode: Mode, full: bool) -> dict[str, Any]:
-    strengths = wording.node_strengths(mode)
-    shown = ", ".join(wording.plain(s.brief, 40) for s in strengths[:4])
+    strengths = nodes.node_strengths(mode)
+    shown = ", ".join(phrases.plain(s.brief, 40) for s in strengths[:4])
     rest = len(strengths) - 4
     ratio = mode.damping_ratio
     sharp = ratio.std is not None and ratio.std < 1e-4 * abs(ratio.value)
     interval = (
-        f"{si(ratio.low, '', 4)} to {si(ratio.high, '', 4)}"
+        f"{si(ratio.low, '', 5, keep_zeros=True)} to {si(ratio.high, '', 5, keep_zeros=True)}"
         if ratio.low is not None and ratio.high is not None and not mode.real and not sharp
         else ""
     )
-    frequency = mode.frequency_hz.text("Hz")
+    frequency = phrases.uncrowded(mode.frequency_hz.text("Hz"))
     if mode.real:
-        frequency = f"{si(mode.natural_frequency_hz.value, 'Hz', 5)}, real pole"
+        frequency = f"{phrases.hertz(mode.natural_frequency_hz.value, 5)}, real pole"
     return {
         "verdict": mode.verdict,
         "sign": SIGNS[mode.verdict],
         "word": mode.verdict,
         "in_band": mode.in_band,
         "frequency": frequency,
-        "damping": si(ratio.value) if mode.real else ratio.text(),
+        "damping": si(ratio.value) if mode.real else phrases.uncrowded(ratio.text()),
         "interval": interval,
-        "time": f"{wording.trend(mode)}, {wording.time_constant(mode)}",
-        "probability": wording.probability(mode.probability_unstable),
+        "time": f"{phrases.trend(mode)}, {phrases.time_constant(mode)}",
+        "probability": phrases.probability(mode.probability_unstable),
         "full": full,
         "nodes": shown + (f" and {rest} more" if rest > 0 else ""),
     }
@@ -141,12 +151,12 @@ def _mode(mode: Mode, full: bool) -> dict[str, Any]:
 
 def _view(result: Identification, prefix: str) -> dict[str, Any]:
     """Collect everything the page shows of one result."""
-    names = [wording.plain(s.file, _NAME) for s in result.sources]
+    names = [phrases.plain(s.file, _NAME) for s in result.sources]
     many = len(result.channels) > _MANY
     return {
         **_summary(result),
-        "heading": wording.listed(names, 3, _NAME) if names else f"{result.quantity} from arrays",
-        "next": wording.glued(" ".join(wording.next_points(result))),
+        "heading": phrases.listed(names, 3, _NAME) if names else f"{result.quantity} from arrays",
+        "next": phrases.glued(" ".join(wording.next_points(result))),
         "poles": _svg(plot_poles(result), f"{prefix}p", "Pole map"),
         "loops": [_loop(result, i, prefix) for i in range(len(result.loops))],
         "overview": _svg(plot_overview(result), f"{prefix}o", "All channels") if many else None,
@@ -155,13 +165,13 @@ def _view(result: Identification, prefix: str) -> dict[str, Any]:
         "detection": None
         if result.detection is None
         else _svg(plot_detection(result), f"{prefix}d", "Detection limit"),
-        "basis": [(head, wording.glued(text)) for head, text in wording.basis(result)],
-        "notes": [wording.plain(n, 2000) for n in wording.notes(result)],
+        "basis": [(head, phrases.glued(text)) for head, text in wording.basis(result)],
+        "notes": [phrases.plain(n, 2000) for n in wording.notes(result)],
         "background": [wording.background_row(p) for p in result.background],
         "sources": [
             {
-                "file": wording.plain(r.source.file, 120),
-                "format": wording.plain(r.source.format),
+                "file": phrases.plain(r.source.file, 120),
+                "format": phrases.plain(r.source.format),
                 "points": r.points,
                 "sha256": r.source.sha256,
             }
@@ -169,7 +179,7 @@ def _view(result: Identification, prefix: str) -> dict[str, Any]:
             if r.source is not None
         ],
         "assumptions": [
-            wording.plain(a, 2000)
+            phrases.plain(a, 2000)
             for a in dict.fromkeys(a for s in result.sources for a in s.assumptions)
         ],
     }
@@ -177,17 +187,17 @@ def _view(result: Identification, prefix: str) -> dict[str, Any]:
 
 def _loop(result: Identification, index: int, prefix: str) -> dict[str, Any]:
     loop = result.loops[index]
-    table = wording.loop_table(result, index, _ROWS)
+    table = nodes.loop_table(result, index, _ROWS)
     rest = len(loop.nodes) - (len(table) - 1)
     return {
         "mode": loop.mode + 1,
-        "label": wording.label(result.modes[loop.mode]),
+        "label": phrases.label(result.modes[loop.mode]),
         "figure": _svg(
             plot_nodes(result, index), f"{prefix}n{index}", f"Nodes of mode {loop.mode + 1}"
         ),
         "headings": table[0],
         "rows": table[1:],
-        "more": wording.more_nodes(rest) if rest > 0 else "",
+        "more": nodes.more_nodes(rest) if rest > 0 else "",
     }
 
 
@@ -205,7 +215,7 @@ def _channels(result: Identification, prefix: str) -> list[dict[str, Any]]:
         rms = math.sqrt(float(np.mean((np.abs(trace.model - trace.data)[good] / size[good]) ** 2)))
         views.append(
             {
-                "name": wording.plain(names[k], _NAME),
+                "name": phrases.plain(names[k], _NAME),
                 "note": f"{trace.frequency_hz.size} points, residual {si(rms, '', 2)} (rms)",
                 "open": place < most,
                 "figure": _svg(plot_response(result, k)[0], f"{prefix}c{k}", f"Channel {names[k]}"),
@@ -221,13 +231,13 @@ def _evidence(result: Identification) -> list[dict[str, Any]]:
         {
             "mode": i + 1,
             "suspect": i in doubtful,
-            "label": wording.label(mode),
+            "label": phrases.label(mode),
             "tests": [
                 {
-                    "name": wording.plain(test.name),
+                    "name": phrases.plain(test.name),
                     "outcome": outcome[test.passed],
                     "outcome_word": outcome[test.passed].replace("-", " "),
-                    "detail": wording.plain(test.detail, 2000),
+                    "detail": phrases.tidy(phrases.plain(test.detail, 2000)),
                 }
                 for test in mode.evidence
             ],

@@ -5,16 +5,18 @@ from __future__ import annotations
 import math
 
 import numpy as np
+from matplotlib.artist import Artist
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 from matplotlib.lines import Line2D
+from matplotlib.patches import Patch
 from matplotlib.ticker import FixedLocator, FuncFormatter, NullLocator
 from matplotlib.transforms import Bbox
 from numpy.typing import NDArray
 
 from polefit.estimates import si
 from polefit.modes import Identification, Mode
-from polefit.report import drawing, units, wording
+from polefit.report import drawing, phrases, units, wording
 
 CHI_SQUARE_95 = 5.991  # two degrees of freedom
 _MOST_LABELS = 8
@@ -203,7 +205,7 @@ def _label_modes(ax: Axes, result: Identification) -> None:
     taken = [_marker_box(ax, mode) for mode in modes]
     for i, mode in enumerate(modes):
         named = len(modes) <= _MOST_LABELS or (i in suspects and len(suspects) <= _MOST_LABELS)
-        words = f"{i + 1}: {wording.label(mode)}" if named else f"{i + 1}"
+        words = f"{i + 1}: {_label(mode)}" if named else f"{i + 1}"
         x, y = _place(mode.pole_rad_per_s)
         note = ax.annotate(
             words,
@@ -223,6 +225,14 @@ def _label_modes(ax: Axes, result: Identification) -> None:
             if inside and not any(box.overlaps(other) for other in taken):
                 break
         taken.append(note.get_window_extent())
+
+
+def _label(mode: Mode) -> str:
+    """Frequency of the table; where it is not that of the axis, so that none looks misplaced."""
+    natural, rings = mode.natural_frequency_hz.value, mode.frequency_hz.value
+    if mode.real or natural - rings < wording.SAME * natural:
+        return phrases.label(mode)
+    return f"rings at {phrases.label(mode)}"
 
 
 _OFFSETS = (
@@ -245,7 +255,7 @@ def _marker_box(ax: Axes, mode: Mode) -> Bbox:
 
 
 def _legend(ax: Axes, result: Identification, hidden: int) -> None:
-    handles = [
+    handles: list[Artist] = [
         Line2D(
             [],
             [],
@@ -262,7 +272,7 @@ def _legend(ax: Axes, result: Identification, hidden: int) -> None:
     if any(not m.in_band for m in result.modes):
         handles.append(
             Line2D([], [], linestyle="none", marker="o", markerfacecolor="none",
-                   markeredgecolor=drawing.INK, markersize=7, label="outside the band")
+                   markeredgecolor=drawing.INK, markersize=7, label="band edge or outside")
         )  # fmt: skip
     handles.append(
         Line2D([], [], color=drawing.FAINT, linestyle=(0, (4, 3)), linewidth=1.0, label="band")
@@ -274,8 +284,9 @@ def _legend(ax: Axes, result: Identification, hidden: int) -> None:
             Line2D([], [], linestyle="none", marker=look.marker, color=look.colour,
                    markersize=look.size, label=f"{look.caption}{beyond}")
         )  # fmt: skip
-    handles.append(
-        Line2D([], [], color=drawing.FAINT, linewidth=5, alpha=0.35,
-               label="95 % region")
-    )  # fmt: skip
+    regions = [drawing.LOOKS[m.verdict].colour for m in result.modes if region(m) is not None]
+    if regions:
+        handles.append(
+            Patch(facecolor=(regions[0], 0.25), edgecolor=regions[0], label="95 % region")
+        )
     drawing.legend_below(ax, handles, 7)

@@ -15,7 +15,7 @@ from numpy.typing import NDArray
 
 from polefit.errors import ArgumentError
 from polefit.modes import Identification, RationalModel
-from polefit.report import drawing, units, wording
+from polefit.report import drawing, phrases, units, wording
 from polefit.responses import UNITS, Channel
 
 FloatArray = NDArray[np.float64]
@@ -88,7 +88,7 @@ def _index(result: Identification, channel: int | str | Channel) -> int:
     for i, known in enumerate(channels):
         if channel == known or channel == str(known):
             return i
-    listed = wording.listed((str(c) for c in channels), 8)
+    listed = phrases.listed((str(c) for c in channels), 8)
     raise ArgumentError(f"channel: {channel!r} is not among {listed}")
 
 
@@ -155,7 +155,7 @@ def plot_response(
         grid = figure.subplots(3, 1, sharex=True, height_ratios=(3, 2, 2))
         axes = (grid[0], grid[1], grid[2])
     magnitude, phase, residual = axes
-    drawing.dress(magnitude, wording.plain(str(trace.channel), 60), pad=14)
+    drawing.dress(magnitude, phrases.plain(str(trace.channel), 60), pad=14)
     for ax in (phase, residual):
         drawing.dress(ax)
     _magnitude(magnitude, trace, result.quantity)
@@ -353,7 +353,7 @@ def plot_overview(result: Identification, *, figure: Figure | None = None) -> Fi
         drawing.dress(ax)
         reach += _magnitude(ax, trace, result.quantity, small=True)
         ax.set_title(
-            wording.plain(str(trace.channel), 22),
+            phrases.plain(str(trace.channel), 22),
             loc="left",
             fontsize=drawing.SMALL,
             color=drawing.INK,

@@ -7,7 +7,7 @@ from collections.abc import Iterable, Sequence
 
 from polefit.estimates import si
 from polefit.modes import Identification, Mode
-from polefit.report import wording
+from polefit.report import headline, nodes, phrases, wording
 
 WIDTH = 100
 _HEADINGS = ("", "", "frequency", "damping ratio", "time constant")
@@ -34,7 +34,7 @@ def identification_text(result: Identification) -> str:
         Lines without blanks at their ends; no newline at the end.
     """
     blocks = [
-        _wrapped(wording.verdict_sentence(result)),
+        _wrapped(headline.verdict_sentence(result)),
         _section("Modes, most dangerous first", _modes(result)),
         *(_loop(result, i) for i in range(len(result.loops))),
         _section("What to simulate next", _next(result)),
@@ -51,7 +51,7 @@ def identification_text(result: Identification) -> str:
 
 def _wrapped(text: str, first: str = "", rest: str = "") -> list[str]:
     """Wrap one paragraph, never between a number and its uncertainty or unit."""
-    glued = wording.glued(wording.plain(text, 4000), _HELD)
+    glued = phrases.glued(phrases.plain(text, 4000), _HELD)
     lines = textwrap.wrap(
         glued, WIDTH, initial_indent=first, subsequent_indent=rest, break_on_hyphens=False
     )
@@ -79,32 +79,33 @@ def _modes(result: Identification) -> list[str]:
         if i and (i - 1 in full or len(result.modes) <= _FEW):
             indent = " " * (2 + widths[0] + len(_GAP))
             lines.extend(_wrapped(_second_line(result.modes[i - 1]), indent, indent))
-    leverage = any(view.leverage is not None for mode in result.modes for view in mode.nodes)
-    note = wording.LEVERAGE_NOTE if leverage else wording.RESIDUE_NOTE
-    lines.extend(_wrapped(note, "  ", "  "))
+    lines.extend(_wrapped(nodes.node_note(result.modes), "  ", "  "))
+    if any(phrases.is_sharp(mode) for mode in result.modes):
+        lines.append(f"  {phrases.SHARP_NOTE}")
     if not all(mode.in_band for mode in result.modes):
-        lines.append("  * outside the band: it does not decide the verdict.")
+        lines.append("  * at the edge of the band or outside: it does not decide the verdict.")
     return lines
 
 
 def _row(index: int, mode: Mode) -> tuple[str, ...]:
     word = mode.verdict.upper() if mode.verdict != "stable" else "stable"
     if mode.real:
-        frequency = f"{si(mode.natural_frequency_hz.value, 'Hz', 5)}, real pole"
+        frequency = f"{phrases.hertz(mode.natural_frequency_hz.value, 5)}, real pole"
         ratio = si(mode.damping_ratio.value)
     else:
-        frequency, ratio = mode.frequency_hz.text("Hz"), mode.damping_ratio.text()
-    time = f"{wording.trend(mode)}, {wording.time_constant(mode)}"
+        frequency = phrases.uncrowded(mode.frequency_hz.text("Hz"))
+        ratio = phrases.uncrowded(mode.damping_ratio.text())
+    time = f"{phrases.trend(mode)}, {phrases.time_constant(mode)}"
     return str(index + 1), word if mode.in_band else f"{word}*", frequency, ratio, time
 
 
 def _second_line(mode: Mode) -> str:
-    parts = [f"P(unstable) {wording.probability(mode.probability_unstable)}"]
+    parts = [f"P(unstable) {phrases.probability(mode.probability_unstable)}"]
     if mode.real:
-        parts.append(f"|p|/2π {mode.natural_frequency_hz.text('Hz')}")
-    strengths = wording.node_strengths(mode)
+        parts.append(f"|p|/2π {phrases.natural(mode)}")
+    strengths = nodes.node_strengths(mode)
     if strengths:
-        shown = ", ".join(wording.plain(s.brief, 40) for s in strengths[:_NODES_IN_TABLE])
+        shown = ", ".join(phrases.plain(s.brief, 40) for s in strengths[:_NODES_IN_TABLE])
         rest = len(strengths) - _NODES_IN_TABLE
         parts.append(shown + (f" and {rest} more" if rest > 0 else ""))
     return "; ".join(parts)
@@ -113,8 +114,8 @@ def _second_line(mode: Mode) -> str:
 def _loop(result: Identification, index: int) -> list[str]:
     loop = result.loops[index]
     mode = result.modes[loop.mode]
-    title = f"Suspect loop {index + 1}: mode {loop.mode + 1}, {wording.label(mode)}"
-    rows = wording.loop_table(result, index, _NODES_IN_LOOP)
+    title = f"Suspect loop {index + 1}: mode {loop.mode + 1}, {phrases.label(mode)}"
+    rows = nodes.loop_table(result, index, _NODES_IN_LOOP)
     widths = [max(len(row[c]) for row in rows) for c in range(len(rows[0]))]
     lines = [
         "  " + _GAP.join(cell.ljust(width) for cell, width in zip(row, widths, strict=True))
@@ -122,7 +123,7 @@ def _loop(result: Identification, index: int) -> list[str]:
     ]
     rest = len(loop.nodes) - (len(rows) - 1)
     if rest > 0:
-        lines.append(f"  {wording.more_nodes(rest)}")
+        lines.append(f"  {nodes.more_nodes(rest)}")
     return _section(title, lines)
 
 
@@ -136,7 +137,7 @@ def _evidence(result: Identification) -> list[str]:
     for i, mode in enumerate(result.modes):
         if (mode.verdict == "stable" and i not in suspects) or not mode.evidence:
             continue
-        lines.append(f"  Mode {i + 1}, {wording.label(mode)}")
+        lines.append(f"  Mode {i + 1}, {phrases.label(mode)}")
         for test in mode.evidence:
             sentence = wording.evidence_sentence(test.name, test.passed, test.detail)
             lines.extend(_wrapped(sentence, "    ", "      "))
@@ -144,16 +145,12 @@ def _evidence(result: Identification) -> list[str]:
 
 
 def _basis(result: Identification) -> list[str]:
-    rows = [("Reason", _full_stop(result.reason)), *wording.basis(result)]
+    rows = [("Reason", phrases.sentence(result.reason)), *wording.basis(result)]
     width = max(len(heading) for heading, _ in rows)
     lines: list[str] = []
     for heading, text in rows:
         lines.extend(_wrapped(text, f"  {heading.ljust(width)}  ", " " * (width + 4)))
     return lines
-
-
-def _full_stop(text: str) -> str:
-    return text if text.endswith(".") else f"{text}."
 
 
 def _background(result: Identification) -> list[str]:
@@ -170,7 +167,7 @@ def _background(result: Identification) -> list[str]:
 def _read(result: Identification) -> list[str]:
     lines: list[str] = []
     for source in result.sources[:_FILES]:
-        head = f"{wording.plain(source.file, 70)}: {source.format}, sha256 {source.sha256[:16]}…"
+        head = f"{phrases.plain(source.file, 70)}: {source.format}, sha256 {source.sha256[:16]}…"
         lines.extend(_wrapped(head, "  - ", "    "))
     rest = len(result.sources) - _FILES
     if rest > 0:

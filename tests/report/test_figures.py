@@ -84,6 +84,23 @@ def test_pole_map_shows_every_mode_on_its_side(unstable):
     assert low < -0.0123 < 0 < 1 < high
 
 
+def test_labels_say_when_they_give_another_frequency_than_the_axis(unstable):
+    """The third mode is damped by 0.35: |p|/2π is 7 % above Im(p)/2π."""
+    shown = texts(figure_of(plot_poles(unstable)))
+    assert "3: rings at 38 MHz" in shown
+    assert "2: 812 MHz" in shown
+
+
+def test_the_legend_shows_the_region_in_its_colour(stable):
+    legend = plot_poles(stable).get_legend()
+    names = [t.get_text() for t in legend.get_texts()]
+    swatch = legend.legend_handles[names.index("95 % region")]
+    assert mpl.colors.same_color(swatch.get_edgecolor(), drawing.LOOKS["stable"].colour)
+    unknown = tuple(replace(m, covariance=((math.nan,) * 2,) * 2) for m in stable.modes)
+    bare = plot_poles(replace(stable, modes=unknown)).get_legend()
+    assert "95 % region" not in [t.get_text() for t in bare.get_texts()]
+
+
 def test_95_percent_region_holds_95_percent_of_the_draws(unstable):
     """Seeded draws of the pole against the outline, in the plane that is drawn.
 

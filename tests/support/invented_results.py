@@ -63,6 +63,20 @@ def build_mode(pole, relative_std, residues, channels, verdict, evidence):
     )
 
 
+def with_pole(mode, pole, covariance=((0.0, 0.0), (0.0, 0.0))):
+    """The same mode with another pole."""
+    found = pole_estimates(pole, covariance)
+    return replace(
+        mode,
+        pole_rad_per_s=pole,
+        covariance=covariance,
+        frequency_hz=found.frequency_hz,
+        natural_frequency_hz=found.natural_frequency_hz,
+        damping_ratio=found.damping_ratio,
+        growth_rate_per_s=found.growth_rate_per_s,
+    )
+
+
 def build_model(poles, weights, channels, nodes):
     """Conjugate pairs with residues of rank 1, as at a simple pole of a circuit."""
     outputs = [nodes.index(c.output) for c in channels]
