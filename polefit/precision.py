@@ -88,7 +88,8 @@ class FrequencyPrecision:
             places = self.printed.decimals
             return f"{places} decimal place{'' if places == 1 else 's'}"
         if self.printed.significant is not None:
-            return f"{self.printed.significant} digits"
+            count = self.printed.significant
+            return f"{count} digit{'' if count == 1 else 's'}"
         return "an unknown number of digits"
 
 

@@ -16,6 +16,7 @@ from polefit.channels import Channel as Channel
 from polefit.channels import as_channel as as_channel
 from polefit.channels import port_channels as port_channels
 from polefit.errors import ArgumentError, DataError
+from polefit.estimates import si
 from polefit.precision import FrequencyPrecision, Precision
 
 if TYPE_CHECKING:
@@ -302,13 +303,15 @@ class ResponseSet:
             If the band is reversed or holds no point.
         """
         if not low_hz < high_hz:
-            raise ArgumentError(f"band_hz: {low_hz:g} … {high_hz:g} is empty; give low, then high")
+            raise ArgumentError(
+                f"band_hz: {si(low_hz, 'Hz')} to {si(high_hz, 'Hz')} is empty; give low, then high"
+            )
         keep = (self.frequency_hz >= low_hz) & (self.frequency_hz <= high_hz)
         if not keep.any():
             low, high = self.band_hz
             raise ArgumentError(
-                f"band_hz: no point between {low_hz:g} and {high_hz:g} Hz; "
-                f"the data cover {low:g} to {high:g} Hz"
+                f"{self._place()}band_hz: no point between {si(low_hz, 'Hz')} and "
+                f"{si(high_hz, 'Hz')}; the data cover {si(low, 'Hz')} to {si(high, 'Hz')}"
             )
         return replace(
             self,
@@ -330,7 +333,9 @@ class ResponseSet:
             found = [i for i, c in enumerate(self.channels) if name in (c.output, str(c))]
             if not found:
                 listed = ", ".join(dict.fromkeys(c.output for c in self.channels))
-                raise ArgumentError(f"select: no channel {name!r}; the data hold {listed}")
+                raise ArgumentError(
+                    f"{self._place()}select: no channel {name!r}; the data hold {listed}"
+                )
             columns.extend(i for i in found if i not in columns)
         if not columns:
             raise ArgumentError("select: names no channel; give at least one, or leave it out")
@@ -340,6 +345,10 @@ class ResponseSet:
             channels=tuple(self.channels[i] for i in columns),
             sample_std=None if self.sample_std is None else self.sample_std[:, columns],
         )
+
+    def _place(self) -> str:
+        """Begin a message with the file that the data came from."""
+        return "" if self.source is None else f"{self.source.file}: "
 
     def __repr__(self) -> str:
         low, high = self.band_hz
@@ -416,7 +425,9 @@ def _check_values(values: ComplexArray, points: int, channels: tuple[Channel, ..
         raise DataError(
             f"values: shape {values.shape} does not fit {points} frequencies; give (N,) or (N, K)"
         )
-    if values.shape[1] != len(channels) or not channels:
+    if not values.shape[1]:
+        raise DataError("values: no response; give at least one")
+    if values.shape[1] != len(channels):
         raise DataError(
             f"channels: {len(channels)} given for {values.shape[1]} responses; give one for each"
         )

@@ -127,7 +127,7 @@ def test_scattering_states_its_load():
         ({"values": np.ones((3, 2))}, "1 given for 2 responses"),
         ({"values": np.ones((3, 1, 1))}, "does not fit"),
         ({"values": ["x", "y", "z"]}, "not an array of numbers"),
-        ({"values": np.ones((3, 0)), "channels": []}, "channels: 0 given"),
+        ({"values": np.ones((3, 0)), "channels": []}, "no response; give"),
         ({"values": np.ones((3, 2)), "channels": ["a", "a"]}, "a is given twice"),
         ({"sample_std": [1, 2]}, "sample_std"),
         ({"sample_std": [1, 2, -1]}, "sample_std"),

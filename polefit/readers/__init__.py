@@ -16,7 +16,7 @@ from pathlib import Path
 from typing import Any, Literal, Protocol, cast
 
 from polefit.conversions import convert
-from polefit.errors import ArgumentError, DataError, FileError, FormatError
+from polefit.errors import ArgumentError, DataError, FileError, FormatError, NotSupportedError
 from polefit.readers.large_files import Content, release
 from polefit.readers.reading import Parsed, ReadOptions
 from polefit.readers.recognition import Format, recognise
@@ -65,7 +65,8 @@ def read(
     select : iterable of str, optional
         Outputs to keep, in this order.
     node : str, optional
-        Name of the node of a one-port file; by default the stem of the file name.
+        Name of the node of a one-port file, by default the stem of the file name; or the names
+        of all ports of an n-port file, separated by commas.
     decimal : {".", ","}, optional
         Decimal mark of a text file.
     delimiter : str, optional
@@ -201,6 +202,8 @@ def _read(
         digest = _sha256(content)
     except FileError as error:
         raise error if error.file is not None else error.in_file(name) from None
+    except ArgumentError as error:
+        raise ArgumentError(f"{name}: {error}") from None
     except DataError as error:
         what, _, remedy = str(error).partition("; ")
         raise FormatError(what, remedy or "mend the file", file=name) from error
@@ -244,11 +247,11 @@ def _finished(
     if format_.module not in _SETTLE_THEMSELVES:
         try:
             responses, said = _converted(responses, options)
-        except DataError as error:
-            raise DataError(f"{name}: {error}") from None
+            if options.select is not None:
+                responses = responses.select(options.select)
+        except (ArgumentError, DataError, NotSupportedError) as error:
+            raise type(error)(f"{name}: {error}") from None
         assumptions += said
-        if options.select is not None:
-            responses = responses.select(options.select)
     source = Source(
         file=name,
         sha256=digest,

@@ -128,7 +128,7 @@ def _chosen(
         If none does: the reason against the first.
     """
     possible: list[tuple[Draft, tuple[Heading, ...] | None, bool]] = []
-    refused: list[FormatError] = []
+    refused: list[tuple[bool, FormatError]] = []
     for draft in drafts(head, options):
         simulator = _is_wrdata(head, draft)
         try:
@@ -136,13 +136,14 @@ def _chosen(
             headings = _headings(text, head, draft)
             _layout(draft, headings, options, simulator)
         except FormatError as error:
-            refused.append(error)
+            # Commas that pair numbers are the least likely reading of them.
+            refused.append((draft.dialect.complex_style == "comma", error))
             continue
         except (AmbiguousFileError, ArgumentError):
             headings = _headings(text, head, draft)
         possible.append((draft, headings, simulator))
     if not possible:
-        raise refused[0]
+        raise min(refused, key=lambda reason: reason[0])[1]
     if len(possible) > 1:
         readings = " or ".join(f"({d.dialect})" for d, _, _ in possible[:3])
         differing = "decimal= (--decimal)"
@@ -336,6 +337,8 @@ def _scaling(traces: Sequence[Trace], unit: str) -> str | None:
 def _as_responses(table: Table, how: Responses) -> ComplexArray:
     """Pick the wanted columns, with sign and divisor."""
     values = table.parts
+    if how.driven_by_current is not None:
+        how.refuse_driven_by_voltage(values[:, how.driven_by_current])
     if how.columns != tuple(range(values.shape[1])):
         divisor = None if how.divide_by is None else values[:, how.divide_by].copy()
         values = values[:, list(how.columns)]

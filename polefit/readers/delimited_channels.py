@@ -6,10 +6,10 @@ from collections.abc import Sequence
 from dataclasses import dataclass, replace
 from typing import cast
 
-from polefit.errors import AmbiguousFileError, ArgumentError, FormatError
+from polefit.errors import ArgumentError, FormatError
 from polefit.readers.delimited_headings import Heading
 from polefit.readers.driven import Responses, Vector, responses_of
-from polefit.readers.reading import REFERENCE_UNKNOWN, ReadOptions
+from polefit.readers.reading import REFERENCE_UNKNOWN, OpenQuestionError, ReadOptions, named_ports
 from polefit.responses import QUANTITIES, Channel, Quantity
 
 
@@ -59,7 +59,7 @@ def meaning(labels: Sequence[Heading], options: ReadOptions, stem: str) -> Meani
         raise ArgumentError(
             f"quantity: {options.quantity!r} is not known; use one of {', '.join(QUANTITIES)}"
         )
-    if options.node is not None and len(labels) > 1:
+    if options.node is not None and len(labels) > 1 and not _by_ports(labels):
         raise ArgumentError(f"node: the file holds {len(labels)} responses; use select instead")
     raw = [label.kind in ("voltage", "current") for label in labels]
     if options.driven is not None and len(labels) == 1 and not labels[0].output:
@@ -73,10 +73,11 @@ def meaning(labels: Sequence[Heading], options: ReadOptions, stem: str) -> Meani
         return Meaning(_plain([channel], quantity, columns, tuple(said)))
     if options.driven is not None:
         return Meaning(_driven(labels, options))
-    if all(raw) and len(labels) == 1 and labels[0].kind == "voltage" and options.quantity:
+    settled = options.quantity not in (None, "transfer")
+    if settled and len(labels) == 1 and labels[0].kind == "voltage":
         name = options.node or labels[0].output or stem
         assumed = f"one voltage: taken where the circuit is driven, at {name}"
-        return Meaning(_plain([Channel(name, name)], options.quantity, [0], (assumed,)))
+        return Meaning(_plain([Channel(name, name)], str(options.quantity), [0], (assumed,)))
     if any(raw):
         return Meaning(responses_of(_vectors(labels), options))
     quantity, columns = _quantity(labels, options)
@@ -126,18 +127,23 @@ def _quantity(labels: Sequence[Heading], options: ReadOptions) -> tuple[str, lis
     everything = list(range(len(labels)))
     if not kinds:
         if options.quantity is None:
-            raise AmbiguousFileError(
+            raise OpenQuestionError(
                 "nothing says whether the numbers are impedances, admittances, scattering "
                 "parameters or a transfer ratio",
                 "say quantity= (--quantity)",
+                option="quantity",
+                presume={"quantity": "transfer"},
             )
         return options.quantity, everything
     if len(kinds) == 1 and all(label.kind for label in labels):
         return kinds[0], everything
     if options.quantity is None:
         said = " and ".join(kinds) + ("" if all(x.kind for x in labels) else " and unnamed")
-        raise AmbiguousFileError(
-            f"the columns hold {said} data", "say quantity= (--quantity) to take one of them"
+        raise OpenQuestionError(
+            f"the columns hold {said} data",
+            "say quantity= (--quantity) to take one of them",
+            option="quantity",
+            presume={"quantity": kinds[0]},
         )
     of_it = [i for i, label in enumerate(labels) if label.kind in (options.quantity, "")]
     if not of_it:
@@ -169,7 +175,16 @@ def _channels(
         else Channel(f"{stem}_{i + 1}", stem)
         for i, label in enumerate(labels)
     ]
+    if options.node is not None:
+        count = len({name for c in channels for name in (c.output, c.input)})
+        return list(named_ports(channels, options.node, count)), ()
     return channels, tuple(assumptions)
+
+
+def _by_ports(labels: Sequence[Heading]) -> bool:
+    """Whether the headings count ports, as S21 does, beginning with 1."""
+    names = {name for label in labels for name in (label.output, label.input)}
+    return names == {f"port{i}" for i in range(1, len(names) + 1)}
 
 
 def _one_channel(

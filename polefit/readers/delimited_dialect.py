@@ -42,6 +42,17 @@ _TRAILING_NOTE = re.compile(r"[ \t,;]*(?:[#!]|(?<=[ \t])(?:%|//)).*")
 _COMMENT = re.compile(r"\s*(?:[#!%;*]|//)")
 _LATER_COMMENT = re.compile(r"\n[ \t\f]*[#!%;*/]")
 _ROW_START = re.compile(r"[\s\"(]*[+-]?\.?\d")
+_GROUPED = re.compile(r"[+-]?\d{1,3}(?:,\d{3})+\.\d*|[+-]?\d{1,3}(?:\.\d{3})+,\d*")
+# 10MEG, 1.5k, 0.01 GHz, 3.2mOhm: a number with a prefix, a unit or both.
+_PREFIXED = re.compile(
+    rf"(?<![\w.]){_SIGNED}[ \t]?"
+    r"(?:(?:[fpnuµmkGT]|meg)?(?:Hz|Ohms?|Ω|V|A|S|dB|deg)|[fpnuµmkGT]|meg)(?![\w(])",
+    re.IGNORECASE,
+)
+_A_TABLE = (
+    "a text file needs one row per frequency: frequency, then two numbers per response, "
+    "separated by comma, semicolon, tab or blanks"
+)
 _SAMPLE_LINES = 200
 _PREAMBLE_LINES = 1000
 
@@ -323,16 +334,32 @@ def _no_table(lines: Sequence[str], options: ReadOptions) -> FormatError:
     at = " with " + " and ".join(wanted) if wanted else ""
     if not any(line.strip() for line in lines):
         return FormatError("the file holds only blank lines", "export it again")
-    if any(re.search(r"\d[,.]\d{3}[,.]\d", line) for line in lines):
-        return FormatError(
-            f"no row of numbers found{at}; numbers seem to carry thousands separators",
-            "export without them",
+    begun = [(i, line) for i, line in enumerate(lines, 1) if _ROW_START.match(line)]
+    if not begun:
+        first = next(line for line in lines if line.strip())
+        what = f"no line begins with a number, the first is {_shown(first)}"
+        return FormatError(f"no row of numbers found{at}: {what}", _A_TABLE)
+    number, row = begun[0]
+    what, remedy = _why(row)
+    return FormatError(f"no row of numbers found{at}: {what} {_shown(row)}", remedy, line=number)
+
+
+def _shown(line: str) -> str:
+    return repr(" ".join(line.split())[:60])
+
+
+def _why(row: str) -> tuple[str, str]:
+    """Tell what keeps a line from being a row of numbers, and the remedy."""
+    prefix = _PREFIXED.search(row)
+    if prefix:
+        return (
+            f"{prefix[0].strip()} is no plain number, in",
+            "export numbers without prefixes and units, such as 1.5e9; a unit of the frequency "
+            "belongs in the heading or in frequency_unit= (--frequency-unit)",
         )
-    return FormatError(
-        f"no row of numbers found{at}",
-        "a text file needs one row per frequency: frequency, then two numbers per response, "
-        "separated by comma, semicolon, tab or blanks",
-    )
+    if any(_GROUPED.fullmatch(part.strip('" ')) for part in re.split(r"[;\t ]+", row)):
+        return "numbers seem to carry thousands separators in", "export without them"
+    return "this is none:", _A_TABLE
 
 
 def _refuse_thousands(lines: Sequence[str], draft: Draft, options: ReadOptions) -> None:

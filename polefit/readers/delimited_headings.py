@@ -32,15 +32,15 @@ _NO_UNIT = {"-", "1", "lin", "linear", "ratio", "none", "unitless", "complex", "
 
 REAL, IMAGINARY, MAGNITUDE, DECIBEL, ANGLE = "real", "imaginary", "magnitude", "decibel", "angle"
 _PARTS = {
-    REAL: "re real realpart",
-    IMAGINARY: "im imag imaginary imagpart img",
-    MAGNITUDE: "mag magnitude abs amplitude ampl modulus mod",
+    REAL: "re real realpart realteil",
+    IMAGINARY: "im imag imaginary imagpart img imaginärteil imaginaerteil",
+    MAGNITUDE: "mag magnitude abs amplitude ampl modulus mod betrag",
     DECIBEL: "db db20 dbmag magdb decibel",
     ANGLE: "phase ph phas ang angle arg argument deg rad degrees "
-    "phasedeg phaserad angdeg angrad cangdeg cangrad",
+    "winkel phasenwinkel phasedeg phaserad angdeg angrad cangdeg cangrad",
 }
 _PART_OF = {word: part for part, words in _PARTS.items() for word in words.split()}
-_FREQUENCY = {"freq", "frequency", "f", "frequencies", "fr", "hertz", "freqs", "xfreq"}
+_FREQUENCY = {"freq", "frequency", "f", "frequencies", "fr", "hertz", "freqs", "xfreq", "frequenz"}
 _ANGULAR = {"omega", "ω", "w"}
 _INDEX = {"index", "no", "no.", "nr", "nr.", "#", "n", "point", "idx", "row"}
 _LETTERS = {"R": (REAL, "impedance"), "X": (IMAGINARY, "impedance")}
@@ -57,7 +57,7 @@ _SPICE_PART = {
 }
 
 _OPEN, _CLOSE = r"[\(\[\{]", r"[\)\]\}]"
-_CALL = re.compile(rf"([A-Za-z0-9_]+)\s*{_OPEN}\s*(.*?)\s*{_CLOSE}")
+_CALL = re.compile(rf"(\w+)\s*{_OPEN}\s*(.*?)\s*{_CLOSE}")
 _SPICE = re.compile(rf"([vi])(r|i|m|p|db|f|)\s*{_OPEN}\s*(.+?)\s*{_CLOSE}", re.IGNORECASE)
 _PORTS = re.compile(rf"([SZY])\s*{_OPEN}?[_ ]?\s*(\d+)\s*[,;_:. ]\s*(\d+)\s*{_CLOSE}?", re.I)
 _PORTS_SHORT = re.compile(rf"([SZY])\s*{_OPEN}?[_ ]?(\d)(\d)\s*{_CLOSE}?", re.IGNORECASE)
@@ -65,7 +65,7 @@ _OF_NODE = re.compile(rf"([ZY])\s*{_OPEN}\s*(.+?)\s*{_CLOSE}", re.IGNORECASE)
 _WITH_NODE = re.compile(r"([ZY])[_.: \-]+(.+)", re.IGNORECASE)
 _ANGLE_WORD = re.compile(r"(?<![a-z])(?:c?ang|phase|ph)?_?(deg|rad)(?![a-z])", re.IGNORECASE)
 # Waveform tables head the columns of each trace with its expression and X or Y.
-_OF_WAVEFORM = re.compile(r"(.*\))\s+([XY])")
+_OF_WAVEFORM = re.compile(rf"(.*\))\s+([XY])(\s*{_OPEN}[^()\[\]]*{_CLOSE})?")
 _KIND = {"s": "scattering", "z": "impedance", "y": "admittance", "v": "voltage", "i": "current"}
 
 
@@ -134,8 +134,9 @@ def _of_waveform(heading: Heading) -> Heading:
     if waveform is None:
         return heading
     if waveform[2] == "X":
-        return Heading(heading.text, "frequency")
-    return replace(parse_heading(waveform[1]), text=heading.text)
+        unit = _unit((waveform[3] or "").strip(" ()[]{}"), loose=False) or Heading("")
+        return Heading(heading.text, unit.role or "frequency", scale=unit.scale)
+    return replace(parse_heading(f"{waveform[1]} {waveform[3] or ''}"), text=heading.text)
 
 
 def _as_letter(heading: Heading) -> Heading:
@@ -233,7 +234,7 @@ def _unit(token: str, loose: bool) -> Heading | None:
         return Heading(token, DECIBEL, scale=1.0)
     if lowered in ("dbohm", "dbω"):
         return Heading(token, DECIBEL, kind="impedance", scale=1.0)
-    if lowered in ("deg", "degree", "degrees", "°"):
+    if lowered in ("deg", "degree", "degrees", "grad", "°"):
         return Heading(token, ANGLE, angle_unit="deg")
     if lowered in ("rad", "radian", "radians"):
         return Heading(token, ANGLE, angle_unit="rad")
@@ -270,10 +271,10 @@ def _split_part(text: str) -> tuple[str, str]:
     tail = re.fullmatch(rf"(.*\S)\s*{_OPEN}\s*([A-Za-z]+)\s*{_CLOSE}", text)
     if tail and tail[2].lower() in _PART_OF:
         return _PART_OF[tail[2].lower()], tail[1]
-    last = re.fullmatch(r"(.*?)[\s_.:\-]*(?<![A-Za-z])([A-Za-z]+\d*)", text)
+    last = re.fullmatch(r"(.*?)[\s_.:\-]*(?<![^\W\d_])([^\W\d_]+\d*)", text)
     if last and last[2].lower() in _PART_OF:
         return _PART_OF[last[2].lower()], last[1]
-    first = re.fullmatch(r"([A-Za-z]+\d*)(?![A-Za-z0-9])[\s_.:\-]*(.*)", text)
+    first = re.fullmatch(r"([^\W\d_]+\d*)(?![^\W_])[\s_.:\-]*(.*)", text)
     if first and first[1].lower() in _PART_OF:
         return _PART_OF[first[1].lower()], first[2]
     return "", text

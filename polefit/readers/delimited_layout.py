@@ -7,7 +7,7 @@ from collections.abc import Sequence
 from dataclasses import dataclass, field, replace
 from typing import Literal, TypeAlias
 
-from polefit.errors import AmbiguousFileError, ArgumentError, FormatError
+from polefit.errors import ArgumentError, FormatError
 from polefit.readers.delimited_headings import (
     ANGLE,
     DECIBEL,
@@ -17,7 +17,7 @@ from polefit.readers.delimited_headings import (
     REAL,
     Heading,
 )
-from polefit.readers.reading import ReadOptions
+from polefit.readers.reading import OpenQuestionError, ReadOptions
 
 Form: TypeAlias = Literal["real-imaginary", "magnitude-angle", "decibel-angle"]
 
@@ -295,10 +295,12 @@ def _adjacent_traces(
         )
     form = options.form or ("real-imaginary" if simulator else None)
     if form is None:
-        raise AmbiguousFileError(
+        raise OpenQuestionError(
             f"two numbers per response{which} may be real and imaginary part, or magnitude "
             "(or decibels) and phase",
             _FORM_REMEDY,
+            option="form",
+            presume={"form": "real-imaginary"},
         )
     if options.form is None:
         _say_once(notes.assumptions, "simulator table: real and imaginary part of each vector")
@@ -350,6 +352,10 @@ def _headed_traces(
             lonely.extend(group.values())
         else:
             traces.append((next(iter(group.values())).start, trace))
+    if lonely and options.form is not None:
+        unsaid, lonely = sorted([*lonely, *unsaid], key=lambda c: c.start), []
+        texts = ", ".join(repr(c.heading.text) for c in unsaid[:4])
+        notes.assumptions.append(f"{options.form} as given, whatever the headings {texts} say")
     if unsaid and (options.form is not None or not traces) and not lonely:
         paired = _adjacent_traces(unsaid, options, _repeats(unsaid) and simulator, notes)
         traces.extend((t.first, t) for t in paired)
@@ -401,7 +407,9 @@ def _group_trace(group: dict[str, Column], options: ReadOptions, notes: _Notes) 
     chosen = next((c for c in complete if c[0] == options.form), complete[0])
     form, a, b = chosen
     if options.form not in (None, form):
-        raise ArgumentError(f"form: the headings say {form}; leave the option out")
+        if len(group) > 2:
+            raise ArgumentError(f"form: the headings say {form}; leave the option out")
+        return None  # two columns, to be paired as the option says
     first, second = group[a], group[b]
     unused = [c.heading.text for part, c in group.items() if part not in (a, b)]
     if unused:
@@ -423,7 +431,8 @@ def _no_partner(left: list[Column]) -> FormatError:
     names = ", ".join(repr(c.heading.text) for c in left[:4]) or "none"
     return FormatError(
         f"no complete response: only {names} besides the frequency",
-        "export two numbers per response: real and imaginary part, or magnitude and phase",
+        "export two numbers per response: real and imaginary part, or magnitude and phase"
+        + ("; say form= (--form) if they are these" if left and len(left) % 2 == 0 else ""),
     )
 
 

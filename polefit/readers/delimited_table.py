@@ -13,7 +13,7 @@ from polefit.precision import Precision, Printed
 from polefit.readers.delimited_dialect import BLANKS, PAIR, Dialect
 from polefit.readers.delimited_layout import Layout, Trace
 from polefit.readers.large_files import Growing
-from polefit.readers.reading import printed_form
+from polefit.readers.reading import OpenQuestionError, printed_form
 from polefit.readers.text_blocks import Text, numbered_lines
 from polefit.responses import ComplexArray, FloatArray
 
@@ -350,9 +350,11 @@ def _angle_units(
         return list(traces), ()
     largest = float(np.abs(parts.imag[:, unknown]).max())
     if not 100 < largest <= 360:
-        raise AmbiguousFileError(
+        raise OpenQuestionError(
             f"phases up to {largest:.6g} without a unit may be degrees or radians",
             "say angle_unit= (--angle-unit) deg or rad",
+            option="angle_unit",
+            presume={"angle_unit": "deg"},
         )
     settled = [replace(t, angle_unit="deg") if i in unknown else t for i, t in enumerate(traces)]
     return settled, (f"phases taken in degrees: they reach {largest:.6g}",)

@@ -10,9 +10,11 @@ import re
 from collections.abc import Sequence
 from dataclasses import dataclass
 
+import numpy as np
+
 from polefit.errors import AmbiguousFileError, ArgumentError, FormatError
-from polefit.readers.reading import ReadOptions
-from polefit.responses import Channel, Quantity
+from polefit.readers.reading import OpenQuestionError, ReadOptions, named_ports
+from polefit.responses import Channel, ComplexArray, Quantity
 
 _PARAMETER = re.compile(r"([syz])_(\d+)_(\d+)", re.IGNORECASE)
 _PARAMETERS: dict[str, Quantity] = {"s": "scattering", "y": "admittance", "z": "impedance"}
@@ -52,6 +54,8 @@ class Responses:
         Index of the vector to divide by.
     assumptions : tuple of str
         What this reading rests on.
+    driven_by_current : int or None
+        Index of the vector of the node into which a current is taken to be fed.
     """
 
     columns: tuple[int, ...]
@@ -60,6 +64,28 @@ class Responses:
     sign: float
     divide_by: int | None
     assumptions: tuple[str, ...]
+    driven_by_current: int | None = None
+
+    def refuse_driven_by_voltage(self, voltage: ComplexArray) -> None:
+        """Refuse impedances where the driven voltage shows that a voltage source sets it.
+
+        Parameters
+        ----------
+        voltage : (N,) complex ndarray
+            That of the vector `driven_by_current`.
+
+        Raises
+        ------
+        AmbiguousFileError
+            If it is real and the same at every point.
+        """
+        if voltage.size > 1 and not voltage.imag.any() and np.all(voltage == voltage[0]):
+            raise AmbiguousFileError(
+                f"{self.channels[0].input} is at {voltage[0].real:g} V at every frequency: a "
+                "voltage source drives it, so the voltages are no impedances",
+                'say quantity="transfer" (--quantity), or name the source with driven= (--driven) '
+                "for the admittance",
+            )
 
 
 def responses_of(vectors: Sequence[Vector], options: ReadOptions) -> Responses:
@@ -85,11 +111,10 @@ def responses_of(vectors: Sequence[Vector], options: ReadOptions) -> Responses:
     FormatError
         If the file holds no vector of the kind that is needed.
     """
+    if options.driven is None and options.quantity == "transfer":
+        return _transfers(vectors, None, "source", options)
     if options.driven is None:
-        raise AmbiguousFileError(
-            f"voltages and currents of a simulation ({_listed(vectors)}), but not what was driven",
-            "say driven= (--driven) with the node fed by the 1 A AC source",
-        )
+        raise _not_told(vectors)
     node = _find(vectors, options.driven, current=False)
     source = _find(vectors, options.driven, current=True)
     quantity = options.quantity
@@ -100,10 +125,22 @@ def responses_of(vectors: Sequence[Vector], options: ReadOptions) -> Responses:
     if quantity == "admittance":
         return _admittances(vectors, source, options)
     if quantity == "transfer":
-        return _transfers(vectors, node, source, options)
+        return _transfers(vectors, node, _source_name(vectors, node, source, options), options)
     raise ArgumentError(
         f"quantity: {quantity!r} cannot be had from voltages and currents under one source; "
         "use impedance, admittance or transfer"
+    )
+
+
+def _not_told(vectors: Sequence[Vector]) -> OpenQuestionError:
+    """Ask what was driven; to look at the file alone, any answer will do."""
+    voltages = any(not v.current for v in vectors)
+    return OpenQuestionError(
+        f"voltages and currents of a simulation ({_listed(vectors)}), but not what was driven",
+        "say driven= (--driven) with the node fed by the 1 A AC source, or "
+        'quantity="transfer" (--quantity) if a 1 V AC source drives the circuit',
+        option="driven",
+        presume={"quantity": "transfer"} if voltages else {"driven": f"i({vectors[0].name})"},
     )
 
 
@@ -115,7 +152,8 @@ def port_responses(vectors: Sequence[Vector], options: ReadOptions) -> Responses
     vectors : sequence of Vector
         All vectors of the file.
     options : ReadOptions
-        `quantity` chooses among them, scattering if it is not given; `select` is used.
+        `quantity` chooses among them, scattering if it is not given; `node` names the ports;
+        `select` is used.
 
     Returns
     -------
@@ -137,6 +175,9 @@ def port_responses(vectors: Sequence[Vector], options: ReadOptions) -> Responses
     if not chosen:
         raise ArgumentError(f"quantity: the file holds no {quantity}; it holds {', '.join(others)}")
     channels = [Channel(f"port{out}", f"port{drive}") for _, out, drive, _ in chosen]
+    if options.node is not None:
+        count = max(max(out, drive) for _, out, drive, _ in chosen)
+        channels = list(named_ports(channels, options.node, count))
     kept = list(range(len(chosen)))
     if options.select is not None:
         for name in options.select:
@@ -169,6 +210,7 @@ def _impedances(vectors: Sequence[Vector], node: int | None, options: ReadOption
         1.0,
         None,
         (f"node voltages taken as impedances: a 1 A AC source feeds {drive}",),
+        driven_by_current=node,
     )
 
 
@@ -176,6 +218,11 @@ def _admittances(vectors: Sequence[Vector], source: int | None, options: ReadOpt
     if source is None:
         raise _not_there("driven", str(options.driven), vectors, current=True)
     drive = vectors[source].name
+    if drive[:1] not in "vV":
+        raise ArgumentError(
+            f"driven: i({drive}) is not the current of a voltage source; name the driven node, or "
+            "the voltage source that drives the circuit"
+        )
     columns = _outputs(vectors, options, current=True)
     return Responses(
         columns,
@@ -191,21 +238,36 @@ def _admittances(vectors: Sequence[Vector], source: int | None, options: ReadOpt
 
 
 def _transfers(
-    vectors: Sequence[Vector], node: int | None, source: int | None, options: ReadOptions
+    vectors: Sequence[Vector], node: int | None, drive: str, options: ReadOptions
 ) -> Responses:
-    if node is None and source is None:
-        raise _not_there("driven", str(options.driven), vectors, current=False)
-    drive = vectors[node if node is not None else source or 0].name
+    """Take node voltages over that of `node`, else under a source of 1 V called `drive`."""
     columns = tuple(i for i in _outputs(vectors, options, current=False) if i != node)
     if not columns:
-        raise FormatError(f"no node voltage besides v({drive})", "save the voltage of the output")
+        besides = "" if node is None else f" besides v({drive})"
+        raise FormatError(f"no node voltage{besides}", "save the voltage of the output")
     assumed = (
         f"transfer: node voltages divided by v({drive})"
         if node is not None
         else f"transfer: node voltages under a 1 V AC source {drive}"
+        if options.driven
+        else "transfer: node voltages under a 1 V AC source, which the file does not name"
     )
     channels = tuple(Channel(vectors[i].name, drive) for i in columns)
     return Responses(columns, channels, "transfer", 1.0, node, (assumed,))
+
+
+def _source_name(
+    vectors: Sequence[Vector], node: int | None, source: int | None, options: ReadOptions
+) -> str:
+    """Name what drives a transfer: a node, or a voltage source, saved or not."""
+    at = node if node is not None else source
+    if at is not None:
+        return vectors[at].name
+    name = _bare(str(options.driven), "i")
+    # Voltage sources begin with a v; anything else is more likely a mistaken node.
+    if not name.startswith("v") or name.startswith("v("):
+        raise _not_there("driven", str(options.driven), vectors, current=False)
+    return name
 
 
 def _outputs(vectors: Sequence[Vector], options: ReadOptions, *, current: bool) -> tuple[int, ...]:
@@ -230,15 +292,22 @@ def _outputs(vectors: Sequence[Vector], options: ReadOptions, *, current: bool) 
 
 
 def _find(vectors: Sequence[Vector], name: str, *, current: bool) -> int | None:
-    """Index of the vector called `name`, with or without v( ) or i( ) around it."""
-    wanted = name.strip().lower()
-    letter = "i" if current else "v"
-    if wanted.startswith(f"{letter}(") and wanted.endswith(")"):
-        wanted = wanted[2:-1].strip()
-    for index, vector in enumerate(vectors):
-        if vector.current == current and vector.name.lower() == wanted:
+    """Index of the vector called `name`, with or without v( ), i( ) or a leading slash."""
+    wanted = _bare(name, "i" if current else "v")
+    for same in (str.lower, lambda text: text.lower().removeprefix("/")):
+        fitting = [i for i, v in enumerate(vectors) if v.current == current]
+        index = next((i for i in fitting if same(vectors[i].name) == same(wanted)), None)
+        if index is not None:
             return index
     return None
+
+
+def _bare(name: str, letter: str) -> str:
+    """Strip v( ) or i( ) off a name, in lower case."""
+    plain = name.strip().lower()
+    if plain.startswith(f"{letter}(") and plain.endswith(")"):
+        plain = plain[2:-1].strip()
+    return plain
 
 
 def _not_there(

@@ -3,13 +3,14 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterable, Sequence
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, fields
-from typing import Literal
+from pathlib import Path
+from typing import Any, Literal
 
-from polefit.errors import ArgumentError
+from polefit.errors import AmbiguousFileError, ArgumentError
 from polefit.precision import Printed
-from polefit.responses import QUANTITIES, ResponseSet
+from polefit.responses import QUANTITIES, Channel, ResponseSet
 
 REFERENCE_UNKNOWN = (
     "the reference resistance of the scattering parameters is not stated; "
@@ -48,6 +49,50 @@ class Parsed:
     frequency_unit: str = "Hz"
 
 
+class OpenQuestionError(AmbiguousFileError):
+    """What only the user can settle; `presume` allows a look at the file nonetheless.
+
+    Parameters
+    ----------
+    what, remedy : str
+        As for every error about a file.
+    option : str
+        The option of ``read`` that settles it.
+    presume : mapping
+        Options with which the file can be read, although its numbers may then mean something
+        else: points, columns and format can be told.
+    file : str or pathlib.Path, optional
+        The file.
+    line : int, optional
+        Line number in the file.
+    """
+
+    def __init__(
+        self,
+        what: str,
+        remedy: str,
+        *,
+        option: str = "",
+        presume: Mapping[str, Any] | None = None,
+        file: str | Path | None = None,
+        line: int | None = None,
+    ) -> None:
+        self.option = option
+        self.presume = dict(presume or {})
+        super().__init__(what, remedy, file=file, line=line)
+
+    def in_file(self, file: str | Path) -> OpenQuestionError:
+        """Return the same question naming `file`."""
+        return OpenQuestionError(
+            self.what,
+            self.remedy,
+            option=self.option,
+            presume=self.presume,
+            file=file,
+            line=self.line,
+        )
+
+
 _UNIT_NAMES = {1e3: "kHz", 1e6: "MHz", 1e9: "GHz", 1e12: "THz", 1 / (2 * math.pi): "rad/s"}
 
 
@@ -78,7 +123,8 @@ class ReadOptions:
     select : sequence of str, optional
         Outputs to keep.
     node : str, optional
-        Name of the node of a one-port file; by default the stem of the file name.
+        Name of the node of a one-port file, by default the stem of the file name; or the names
+        of the ports of an n-port file, separated by commas.
     decimal : {".", ","}, optional
         Decimal mark of a text file.
     delimiter : str, optional
@@ -138,6 +184,37 @@ class ReadOptions:
                 raise ArgumentError(
                     f"{option.name}: has no meaning for a {format_name} file; leave it out"
                 )
+
+
+def named_ports(channels: Sequence[Channel], node: str, count: int) -> tuple[Channel, ...]:
+    """Give the ports of an n-port the names that the user says.
+
+    Parameters
+    ----------
+    channels : sequence of Channel
+        Between ports called port1, port2 …
+    node : str
+        The option: one name for each port, separated by commas.
+    count : int
+        Number of ports.
+
+    Returns
+    -------
+    tuple of Channel
+
+    Raises
+    ------
+    ArgumentError
+        If the names are not as many as the ports, or one comes twice.
+    """
+    names = [name.strip() for name in node.split(",")]
+    if len(names) != count or not all(names) or len(set(names)) != count:
+        raise ArgumentError(
+            f"node: {node!r} does not name {count} ports; give {count} different names separated "
+            f"by commas, such as {','.join('abcdefgh'[:count])}"
+        )
+    named = {f"port{i}": name for i, name in enumerate(names, 1)}
+    return tuple(Channel(named[c.output], named[c.input]) for c in channels)
 
 
 def _resistance(value: float) -> float:

@@ -7,7 +7,7 @@ from __future__ import annotations
 
 import re
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -74,7 +74,7 @@ def parse(content: Content, options: ReadOptions, *, stem: str) -> Parsed:
         The whole file.
     options : ReadOptions
         `driven` is needed unless the file holds network parameters; `quantity`, `select` and,
-        for scattering, `reference_ohm` are honoured.
+        for these, `node` and `reference_ohm` are honoured.
     stem : str
         Not used: nodes are named in the file.
 
@@ -91,7 +91,7 @@ def parse(content: Content, options: ReadOptions, *, stem: str) -> Parsed:
     ArgumentError
         If an option does not fit the file.
     """
-    options.refuse_unused(("driven", "reference_ohm"), "SPICE raw")
+    options.refuse_unused(("driven", "node", "reference_ohm"), "SPICE raw")
     _refuse_wide(content)
     numbers, plot, others, warnings = _ac_plot(content, options)
     frequency = numbers.frequency
@@ -118,7 +118,10 @@ def parse(content: Content, options: ReadOptions, *, stem: str) -> Parsed:
 
 def _how(plot: Plot, options: ReadOptions) -> Responses:
     vectors = _vectors(plot)
-    return port_responses(vectors, options) or responses_of(vectors, options)
+    ports = port_responses(vectors, options)
+    if options.node is not None and ports is None:
+        raise ArgumentError("node: the vectors of the file have names; leave it out")
+    return ports or responses_of(vectors, options)
 
 
 def _reference(
@@ -300,11 +303,12 @@ def _wanted_columns(plot: Plot, options: ReadOptions) -> tuple[int, ...]:
     """Find the vectors behind the frequency that are needed; none of a foreign plot."""
     if not plot.over_frequency:
         return ()
-    if options.driven is None and port_responses(_vectors(plot), options) is None:
+    told = options.driven is not None or options.quantity == "transfer"
+    if not told and port_responses(_vectors(plot), options) is None:
         return ()
     how = _how(plot, options)
-    needed = [*how.columns, *([] if how.divide_by is None else [how.divide_by])]
-    return tuple(dict.fromkeys(needed))
+    also = [i for i in (how.divide_by, how.driven_by_current) if i is not None]
+    return tuple(dict.fromkeys([*how.columns, *also]))
 
 
 def _without_silent(
@@ -319,13 +323,10 @@ def _without_silent(
         return how, []
     kept = [k for k, i in enumerate(how.columns) if i not in silent]
     names = [c.output for c, i in zip(how.channels, how.columns, strict=True) if i in silent]
-    less = Responses(
-        tuple(how.columns[k] for k in kept),
-        tuple(how.channels[k] for k in kept),
-        how.quantity,
-        how.sign,
-        how.divide_by,
-        how.assumptions,
+    less = replace(
+        how,
+        columns=tuple(how.columns[k] for k in kept),
+        channels=tuple(how.channels[k] for k in kept),
     )
     return less, [f"left out, zero at every point: {', '.join(names)}"]
 
@@ -336,6 +337,8 @@ def _values(numbers: Numbers, how: Responses) -> ComplexArray:
     wanted = [places[i] for i in how.columns]
     divisor = None if how.divide_by is None else numbers.values[:, places[how.divide_by]].copy()
     values = numbers.values
+    if how.driven_by_current is not None:
+        how.refuse_driven_by_voltage(values[:, places[how.driven_by_current]])
     if wanted != list(range(values.shape[1])):
         values = values[:, wanted]
     if divisor is not None:

@@ -20,7 +20,7 @@ from polefit.estimates import si
 from polefit.precision import FrequencyPrecision, Precision, Printed
 from polefit.readers.large_files import Content
 from polefit.readers.printed_frequency import frequency_precision
-from polefit.readers.reading import Parsed, ReadOptions, printed_form, unit_name
+from polefit.readers.reading import Parsed, ReadOptions, named_ports, printed_form, unit_name
 from polefit.readers.text_blocks import numbered_lines, open_text
 from polefit.readers.touchstone_header import Header, read_header
 from polefit.readers.touchstone_layout import Layout, layout_v1, layout_v2
@@ -296,9 +296,8 @@ def _channels(
         name = options.node or stem
         return (Channel(name, name),), ()
     if options.node is not None:
-        raise ArgumentError(
-            f"node: names the node of a one-port file; this one has {layout.ports} ports"
-        )
+        plain = port_channels([f"port{number}" for number in layout.port_order])
+        return named_ports(plain, options.node, layout.ports), ()
     given = [header.port_names.get(number) for number in layout.port_order]
     names = [name for name in given if name]
     if len(set(names)) == layout.ports:

@@ -136,6 +136,15 @@ def test_waveform_tables_with_x_and_y_of_each_trace():
     check(read(text, driven="/g"), names=["/g"], rtol=1e-14)
 
 
+def test_waveform_tables_with_units_behind_x_and_y():
+    head = 'mag(V("/d1")) X (Hz),mag(V("/d1")) Y (V),phase(V("/d1")) X (Hz),phase(V("/d1")) Y (deg)'
+    text = f"{head}\n" + rows("%r,%.17g,%r,%.17g", F, SIZE, F, DEGREES)
+    for driven in ("/d1", "d1", "V(/d1)"):
+        check(read(text, driven=driven), names=["/d1"], rtol=1e-14)
+    body = rows("%r,%.17g,%r,%.17g", F / 1e9, SIZE, F / 1e9, DEGREES)
+    check(read(head.replace("Hz", "GHz") + "\n" + body, driven="d1"), rtol=1e-14)
+
+
 @pytest.mark.parametrize("degree", [b"\xb0", "°".encode(), b"deg"])
 def test_decibels_and_degrees_in_one_field(degree):
     body = rows("%.6e\t(%.15edB,%.15e*)", F, 20 * np.log10(SIZE), DEGREES).encode()
@@ -248,6 +257,68 @@ def test_the_options_settle_it():
     check(found, quantity="transfer", rtol=1e-14)
 
 
+def test_the_form_given_stands_above_the_headings():
+    text = "freq (Hz),Re(Z(a)),Im(Z(a))\n" + rows("%r,%.17g,%.17g", F, SIZE, DEGREES)
+    found = read(text, form="magnitude-angle", angle_unit="deg")
+    check(found, names=["a"], quantity="impedance", rtol=1e-14)
+    assert any("magnitude-angle as given, whatever the headings" in a for a in found.assumptions)
+    text = "freq (Hz),Modulo Z [Ohm],Fase [deg]\n" + rows("%r,%.17g,%.17g", F, SIZE, DEGREES)
+    check(read(text, form="magnitude-angle", node="a"), names=["a"], rtol=1e-14)
+    with pytest.raises(FormatError, match=r"only 'Modulo Z.*say form= \(--form\)"):
+        read(text)
+    text = "freq,Re(Z),Im(Z),Mag(Z)\n" + rows("%r,%r,%r,%r", F, Z.real, Z.imag, SIZE)
+    with pytest.raises(ArgumentError, match="headings say real-imaginary"):
+        read(text, form="decibel-angle")
+
+
+@pytest.mark.parametrize(
+    ("head", "first", "second"),
+    [
+        ("Frequenz [MHz];Betrag Z [Ohm];Phase [°]", SIZE, DEGREES),
+        ("Frequenz (MHz);Betrag(Z) (Ohm);Winkel(Z) (Grad)", SIZE, DEGREES),
+        ("Frequenz/MHz;Realteil Z/Ohm;Imaginärteil Z/Ohm", Z.real, Z.imag),
+        ("Frequenz [MHz];Realteil(Z);Imaginaerteil(Z)", Z.real, Z.imag),
+    ],
+)
+@pytest.mark.parametrize("encoding", ["utf-8", "latin-1", "utf-16"])
+def test_german_spreadsheets(head, first, second, encoding):
+    body = rows("%.17g;%.17g;%.17g", F / 1e6, first, second, comma=True)
+    found = read(f"{head}\n{body}", encoding=encoding)
+    check(found, names=["node"], quantity="impedance", rtol=1e-14)
+    assert found.decimal_mark == ","
+
+
+def test_transfers_under_a_source_beside_the_columns():
+    text = "freq (Hz),Re(V(g)),Im(V(g)),Re(V(d)),Im(V(d))\n" + rows("%r,%r,%r,%r,%r", *TWO)
+    silent = read(text, quantity="transfer")
+    check(silent, names=["g ← source", "d ← source"], columns=(Z, W), quantity="transfer")
+    check(read(text, quantity="transfer", driven="vs"), names=["g ← vs", "d ← vs"], columns=(Z, W))
+    with pytest.raises(ArgumentError, match="no node voltage called 'drain'; it holds g, d"):
+        read(text, quantity="transfer", driven="drain")  # a mistaken node, not a source
+    one = "freq (Hz),Re(V(d)),Im(V(d))\n" + rows("%r,%r,%r", *RI)
+    check(read(one, quantity="transfer"), names=["d ← source"], quantity="transfer")
+
+
+def test_a_node_at_the_voltage_of_a_source_gives_no_impedances():
+    still = np.ones(4)
+    text = "freq (Hz),Re(V(g)),Im(V(g)),Re(V(d)),Im(V(d))\n" + rows(
+        "%r,%r,%r,%r,%r", F, still, 0 * still, W.real, W.imag
+    )
+    with pytest.raises(AmbiguousFileError, match=r"g is at 1 V at every frequency.*--quantity"):
+        read(text, driven="g")
+    check(read(text, driven="g", quantity="transfer"), names=["d ← g"], columns=(W,))
+
+
+def test_ports_are_named_by_the_node_option():
+    text = "freq,re_Z11,im_Z11,re_Z21,im_Z21\n" + rows("%r,%r,%r,%r,%r", *TWO)
+    check(read(text, node="in,out"), names=["in", "out ← in"], columns=(Z, W))
+    with pytest.raises(ArgumentError, match="does not name 2 ports"):
+        read(text, node="in")
+    named = "freq,re(Z(a)),im(Z(a)),re(Z(b)),im(Z(b))\n" + rows("%r,%r,%r,%r,%r", *TWO)
+    with pytest.raises(ArgumentError, match="node: the file holds 2 responses; use select"):
+        read(named, node="in,out")
+
+
 def test_driven_node_voltages():
     text = "freq (Hz),Re(V(g)),Im(V(g)),Re(V(d)),Im(V(d))\n" + rows("%r,%r,%r,%r,%r", *TWO)
     check(read(text, driven="g"), names=["g", "d ← g"], columns=(Z, W), quantity="impedance")
@@ -266,7 +337,6 @@ def test_one_quantity_of_several():
     [({"decimal": "x"}, "decimal"), ({"delimiter": "pipe"}, "delimiter"),
      ({"frequency_unit": "PHz"}, "frequency_unit"), ({"form": "polar"}, "form"),
      ({"scaling": "absolute"}, "scaling"), ({"select": ["b"]}, "select: no channel 'b'"),
-     ({"form": "magnitude-angle"}, "headings say real-imaginary"),
      ({"reference_ohm": 50.0}, "reference_ohm"), ({"driven": "zz"}, "driven")],
 )  # fmt: skip
 def test_options_that_do_not_fit(options, word):
@@ -337,7 +407,12 @@ HEAD = "freq (Hz),Re(Z),Im(Z)\n"
         ("freq (Hz),Re(Z)\n1e9,1\n2e9,1\n", None, "no complete response: only 'Re(Z)'"),
         ("time (s),Re(Z),Im(Z)\n1,1,1\n2,1,1\n", None, "over time"),
         (HEAD, None, "no row of numbers"),
-        ("a word\n", None, "no row of numbers"),
+        ("a word\n", None, "no line begins with a number, the first is 'a word'"),
+        ("f;Re(Z);Im(Z)\n10MEG;1;2\n20MEG;1;2\n", 2, "10MEG is no plain number, in '10MEG;1;2'"),
+        ("f,Re(Z),Im(Z)\n10MEG,1.123,2\n20MEG,1,2\n", 2, "10MEG is no plain number"),
+        ("f\tRe(Z)\tIm(Z)\n0.01 GHz\t1\t2\n0.02 GHz\t1\t2\n", 2, "0.01 GHz is no plain number"),
+        ("f,Re(Z),Im(Z)\n1,5k,2\n2,5k,2\n", 2, "5k is no plain number"),
+        ("f | Re(Z) | Im(Z)\n1e9 | 1 | 2\n", 2, "this is none: '1e9 | 1 | 2'"),
         ("\n\n \n", None, "only blank lines"),
         ("freq (Hz),Re(Z(a)),Im(Z(a)),Re(Z(a)),Im(Z(a))\n1e9,1,2,3,4\n2e9,1,2,3,4\n", None,
          "two responses are named a"),

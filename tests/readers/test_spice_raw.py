@@ -87,7 +87,35 @@ def test_a_source_current_is_turned(driven):
 
 def test_the_quantity_follows_what_was_driven():
     assert polefit.read(DATA / "one_port.raw", driven="v1").quantity == "admittance"
-    assert polefit.read(DATA / "one_port.raw", driven="in").quantity == "impedance"
+    assert polefit.read(DATA / "two_node_write.raw", driven="gate2").quantity == "impedance"
+
+
+@pytest.mark.parametrize("options", [{}, {"quantity": "impedance"}, {"select": ["out"]}])
+def test_a_node_at_the_voltage_of_a_source_gives_no_impedances(options):
+    """v(in) is 1 V throughout: nothing says how much current the source feeds."""
+    with pytest.raises(AmbiguousFileError, match=r"in is at 1 V at every frequency.*--quantity"):
+        polefit.read(DATA / "one_port.raw", driven="in", **options)
+
+
+def test_transfers_under_a_source_that_is_named_or_not():
+    named = polefit.read(DATA / "one_port.raw", driven="v1", quantity="transfer", select=["out"])
+    silent = read_with_report(DATA / "one_port.raw", quantity="transfer", select=["out"])
+    assert silent.responses.channels == (polefit.Channel("out", "source"),)
+    assert np.array_equal(silent.responses.values, named.values)
+    assert any("1 V AC source, which the file does not name" in a for a in silent.assumptions)
+
+
+def test_ports_of_network_parameters_are_named_by_the_node_option():
+    found = polefit.read(DATA / "ports.raw", node="in,out", select=["out"])
+    assert [str(c) for c in found.channels] == ["out ← in", "out"]
+    with pytest.raises(ArgumentError, match="node: the vectors of the file have names"):
+        polefit.read(DATA / "two_node_write.raw", driven="gate2", node="a,b")
+
+
+def test_the_current_of_an_inductor_drives_nothing():
+    content = ascii_file().replace(b"\tv(d)\tvoltage", b"\ti(l1)\tcurrent")
+    with pytest.raises(ArgumentError, match=r"i\(l1\) is not the current of a voltage source; nam"):
+        read(content, driven="i(l1)")
 
 
 def test_transfer_from_a_node_or_a_source():

@@ -108,9 +108,17 @@ def test_a_one_port_is_named_by_its_file_or_by_the_option(file):
     assert str(polefit.read(path, node="gate2").channels[0]) == "gate2"
 
 
-def test_the_node_option_is_for_one_ports():
-    with pytest.raises(ArgumentError, match="this one has 2 ports"):
-        read("# Hz S RI R 50\n1 1 0 2 0 3 0 4 0\n", ".s2p", node="gate2")
+def test_the_node_option_names_every_port(file):
+    text = "! Port[1] = in\n! Port[2] = out\n# Hz S RI R 50\n1 1 0 2 0 3 0 4 0\n"
+    found = polefit.read(file(text, "a.s2p"), node="gate2, drain1", select=["drain1"])
+    assert [str(c) for c in found.channels] == ["drain1 ← gate2", "drain1"]
+    assert found.values.tolist() == [[2, 4]]  # S21 stands second in a two-port
+
+
+@pytest.mark.parametrize("names", ["gate2", "a,b,c", "a,a", "a,"])
+def test_names_that_do_not_fit_the_ports(names):
+    with pytest.raises(ArgumentError, match=r"does not name 2 ports; give 2 .*such as a,b$"):
+        read("# Hz S RI R 50\n1 1 0 2 0 3 0 4 0\n", ".s2p", node=names)
 
 
 @pytest.mark.parametrize(
