@@ -185,16 +185,9 @@ def _measured(one: ResponseSet, scale: float) -> Measured:
             size = np.abs(values)
             unit = values.conj() / np.where(size > 0, size, 1.0)
             turn = np.where(size > 0, unit, 1.0).astype(np.complex128)
-    shift = one.frequency_rounding_std()
-    if np.any(shift):
-        # A frequency off by δf is a response off by δf·dH/df, of known direction; all channels
-        # share δf, so that together they must tell no more than one.
-        moved = np.gradient(values, one.frequency_hz, axis=1) * shift * math.sqrt(len(values))
-        moved = moved if turn is None else moved * turn
-        known[:, 0] += moved.real**2
-        known[:, 1] += moved.imag**2
     s: ComplexArray = np.asarray(2j * np.pi * one.frequency_hz / scale, dtype=np.complex128)
-    return Measured(s, values, known, turn)
+    shift = 2 * np.pi * one.frequency_rounding_std() / scale
+    return Measured(s, values, known, turn, shift if np.any(shift) else None)
 
 
 def node_names(channels: Sequence[Channel]) -> tuple[str, ...]:

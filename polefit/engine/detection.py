@@ -12,9 +12,9 @@ from collections.abc import Sequence
 import numpy as np
 import scipy.special
 
-from polefit.engine.blocks import Block, FloatArray
+from polefit.engine.blocks import Block, ComplexArray, FloatArray
 from polefit.engine.projection import Solution
-from polefit.engine.significance import Information, scan
+from polefit.engine.significance import NARROW_STEPS, SPARED_SAMPLES, Information, scan
 
 
 def residue_limits(
@@ -55,10 +55,28 @@ def residue_limits(
     smallest = (a + b) / 2 - np.sqrt(((a - b) / 2) ** 2 + c**2)
     scale = np.maximum((a + b) / 2, 1e-300)
     usable = smallest > 1e-9 * scale
+    # the search disregards the most telling samples of a narrow pair
+    counted = 1 - np.concatenate([_concentrated(block, poles) for block in blocks])
+    usable &= counted > 1e-6
+    smallest = np.where(usable, smallest * counted, 1.0)
     needed = noncentrality(threshold, 2, power) * level
-    limits = np.where(usable, np.sqrt(needed / np.where(usable, smallest, 1.0)), np.inf)
+    limits = np.where(usable, np.sqrt(needed / smallest), np.inf)
     result: FloatArray = limits.T
     return result
+
+
+def _concentrated(block: Block, poles: ComplexArray) -> FloatArray:
+    """Share, (K, C), of the evidence for each pole that its most telling samples would carry."""
+    share = np.zeros((block.channels, poles.size))
+    axis = block.s.imag
+    step = np.diff(axis)[np.clip(np.searchsorted(axis, poles.imag) - 1, 0, axis.size - 2)]
+    narrow = np.flatnonzero(2 * np.abs(poles.real) < NARROW_STEPS * step)
+    for c in narrow:
+        curve = 1 / np.abs(block.s - poles[c]) ** 2
+        energy = curve * np.sum(block.weight**2, axis=1)
+        top = np.partition(energy, -SPARED_SAMPLES, axis=1)[:, -SPARED_SAMPLES:]
+        share[:, c] = top.sum(axis=1) / energy.sum(axis=1)
+    return share
 
 
 def noncentrality(threshold: float, freedom: int, power: float) -> float:

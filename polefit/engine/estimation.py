@@ -25,13 +25,13 @@ from polefit.engine.order import (
     trial_grid,
     variance_factor,
 )
-from polefit.engine.projection import Solution, model_values, residual, solve
+from polefit.engine.projection import Projected, Solution, model_values, residual, solve
 from polefit.engine.refinement import refine
 from polefit.engine.sections import from_poles
 from polefit.engine.significance import Information, information, scan, section_scores
 from polefit.engine.whiteness import Whiteness, judge_whiteness
 
-RESHAPED = 1.5
+RESHAPED = 2.0
 """Weights that change by more than this among themselves call for a new search of the order."""
 UNCHANGED = 1.05
 """Weights that change by less leave estimates where they are, within a small part of their
@@ -58,12 +58,15 @@ class Measured(NamedTuple):
         Known noise variance of the two parts of each sample.
     turn : (K, N) complex ndarray or None
         Unit phasors, where the parts lie along and across the sample.
+    shift : (N,) float ndarray or None
+        Standard deviation of Im s, where frequencies are rounded.
     """
 
     s: ComplexArray
     values: ComplexArray
     known: FloatArray
     turn: ComplexArray | None
+    shift: FloatArray | None = None
 
 
 class Estimation(NamedTuple):
@@ -127,7 +130,7 @@ def estimate_model(
     -------
     Estimation
     """
-    laws = tuple(first_guess(np.abs(m.values)) for m in data)
+    laws = tuple(first_guess([m.values for m in data]))
     blocks = _weigh(data, laws, None)
     progress("searching the order")
     found = search(blocks)
@@ -156,8 +159,14 @@ def estimate_model(
         blocks=blocks,
         laws=laws,
         noise=tuple(
-            level * variance(law, _size(values), m.known)
-            for law, m, values in zip(laws, data, _models(data, settled.solution), strict=True)
+            level * variance(law, _size(values), _known(m, settled.solution, part))
+            for law, m, values, part in zip(
+                laws,
+                data,
+                _models(data, settled.solution),
+                settled.solution.parts,
+                strict=True,
+            )
         ),
         solution=settled.solution,
         info=settled.info,
@@ -224,15 +233,34 @@ def _weigh(
     data: Sequence[Measured], laws: Sequence[NoiseLaw], solution: Solution | None
 ) -> tuple[Block, ...]:
     """Weight by the law, at the size of the model once there is one: the data are noisy."""
-    sizes = (
-        [_size(m.values) for m in data]
-        if solution is None
-        else [_size(values) for values in _models(data, solution)]
-    )
+    if solution is None:
+        sizes = [_size(m.values) for m in data]
+        known = [_known(m, None, None) for m in data]
+    else:
+        sizes = [_size(values) for values in _models(data, solution)]
+        known = [_known(m, solution, p) for m, p in zip(data, solution.parts, strict=True)]
     return tuple(
-        make_block(m.s, m.values, 1.0 / np.sqrt(variance(law, size, m.known)), m.turn)
-        for m, law, size in zip(data, laws, sizes, strict=True)
+        make_block(m.s, m.values, 1.0 / np.sqrt(variance(law, size, var)), m.turn)
+        for m, law, size, var in zip(data, laws, sizes, known, strict=True)
     )
+
+
+def _known(m: Measured, solution: Solution | None, part: Projected | None) -> FloatArray:
+    """Return the known variance; a frequency off by δ moves the response by δ·dH/df.
+
+    All channels share δ: together they must tell no more than one.
+    """
+    if m.shift is None:
+        return m.known
+    if solution is None or part is None:
+        moved = np.gradient(m.values, m.s.imag, axis=1) * m.shift
+    else:
+        above, below = m.s + 1j * m.shift, m.s - 1j * m.shift
+        moved = (model_values(above, solution, part) - model_values(below, solution, part)) / 2
+    moved = moved * np.sqrt(len(m.values))
+    moved = moved if m.turn is None else moved * m.turn
+    total: FloatArray = m.known + np.stack((moved.real**2, moved.imag**2), axis=1)
+    return total
 
 
 def _laws(
@@ -241,12 +269,13 @@ def _laws(
     channels = sum(m.values.shape[0] for m in data)
     spent = parameters(blocks, solution) / channels
     laws = []
-    for m, model in zip(data, _models(data, solution), strict=True):
+    models = _models(data, solution)
+    for m, model, part in zip(data, models, solution.parts, strict=True):
         rest = m.values - model
         if m.turn is not None:
             rest = rest * m.turn
         parts = np.stack((rest.real, rest.imag), axis=1)
-        laws.append(estimate(parts, _size(model), m.known, spent))
+        laws.append(estimate(parts, _size(model), _known(m, solution, part), spent))
     return tuple(laws)
 
 

@@ -8,16 +8,19 @@ the data.
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from typing import NamedTuple
 
 import numpy as np
 
-from polefit.engine.blocks import FloatArray
+from polefit.engine.blocks import ComplexArray, FloatArray
 
 RELATIVE_FLOOR = 1e-13
 """Below this share of |H| double precision itself is the noise: no order may chase it."""
 ABSOLUTE_FLOOR = 1e-15
 """The same for samples near zero, as a share of the channel's largest |H|."""
+FIRST_LEVEL = 1e-12
+"""Relative standard deviation at the top of the quietest channel in the first fit."""
 STEPS = 60
 LAW_GAIN = 8.0
 """Likelihood gain 2·Δln L that a second coefficient must bring (χ² with one degree, p = 0.005)."""
@@ -68,14 +71,52 @@ def _floor(size: FloatArray) -> FloatArray:
     return floor
 
 
-def first_guess(size: FloatArray) -> NoiseLaw:
-    """Return the law for a first fit: what is known, else relative noise with a floor.
+def first_guess(values: Sequence[ComplexArray]) -> list[NoiseLaw]:
+    """Return the shape of the law from fourth differences along frequency, before any fit.
 
-    Only the shape matters: the first fit leaves the level free, down to the floor of
-    double precision, which is relative with a hundredth of the top below small samples.
+    Differences leave noise and little of a smooth response. From bins of |H|, the smallest ratio
+    of the median difference to |H| is the relative part, and the smallest bin's the absolute one.
+    Where the response itself rules the differences the shape is rough, and later estimates mend
+    it. The level is brought near double precision, since the first fit leaves it free.
+
+    Parameters
+    ----------
+    values : sequence of (K, N) complex ndarray
+        Responses, one set for each frequency axis.
+
+    Returns
+    -------
+    list of NoiseLaw
     """
-    channels = size.shape[0]
-    return NoiseLaw(np.zeros(channels), np.zeros(channels))
+    laws = [_from_differences(one) for one in values]
+    levels = []
+    for law, one in zip(laws, values, strict=True):
+        top = np.abs(one).max(axis=1)
+        levels.append(np.hypot(law.relative, law.absolute / np.where(top > 0, top, 1.0)))
+    smallest = float(np.min(np.concatenate(levels)))
+    if not smallest > FIRST_LEVEL:
+        return [NoiseLaw(np.zeros(len(one)), np.zeros(len(one))) for one in values]
+    scale = FIRST_LEVEL / smallest
+    return [NoiseLaw(law.relative * scale, law.absolute * scale) for law in laws]
+
+
+def _from_differences(values: ComplexArray) -> NoiseLaw:
+    relative, absolute = np.zeros(len(values)), np.zeros(len(values))
+    points = values.shape[1]
+    bins = min(8, points // 6)
+    if bins < 2:
+        return NoiseLaw(relative, absolute)
+    spread = np.abs(np.diff(values, 4, axis=1)) / np.sqrt(2 * 70)
+    size = np.abs(values[:, 2:-2])
+    for k in range(len(values)):
+        order = np.argsort(size[k])
+        levels = [
+            (float(np.median(spread[k, part])), float(np.median(size[k, part])))
+            for part in np.array_split(order, bins)
+        ]
+        relative[k] = min(level / max(at, 1e-290) for level, at in levels)
+        absolute[k] = levels[0][0]
+    return NoiseLaw(relative, absolute)
 
 
 def estimate(residual: FloatArray, size: FloatArray, known: FloatArray, spent: float) -> NoiseLaw:

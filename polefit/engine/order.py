@@ -22,6 +22,7 @@ from polefit.engine.sections import Sections, from_poles
 from polefit.engine.significance import (
     Information,
     information,
+    joint_score,
     scan,
     section_scores,
     threshold,
@@ -204,7 +205,8 @@ def prune(blocks: Sequence[Block], start: Solution, places: int) -> Solution:
     while current.sections.number:
         limit = np.where(np.arange(current.sections.number) < current.sections.c1.size, pair, real)
         level = variance_factor(blocks, current)
-        scores = section_scores(blocks, current, information(current))
+        info = information(current)
+        scores = section_scores(blocks, current, info)
         score = scores.spared / level / limit
         glitch = scores.full / level > limit
         score[kept] = np.inf
@@ -213,6 +215,11 @@ def prune(blocks: Sequence[Block], start: Solution, places: int) -> Solution:
         if weak.size == 0:
             break
         take = weak[: max(1, min(weak.size, largest_batch))]
+        while take.size > 1:
+            allowed = _allowed(channels, places, take, current.sections.c1.size)
+            if joint_score(current, info, take.tolist()) < allowed * level:
+                break
+            take = take[:-1]
         mask = np.ones(current.sections.number, dtype=bool)
         mask[take] = False
         trial = solve(blocks, current.sections.keep(mask), current.direct)
@@ -283,7 +290,8 @@ def _best_place(
 ) -> tuple[complex, float]:
     gap = np.gradient(frequencies) if frequencies.size > 1 else frequencies
     narrow, wide = (np.minimum(width * gap, 0.5 * frequencies) for width in (1.0, 4.0))
-    poles = -np.concatenate((narrow, wide)) + 1j * np.concatenate((frequencies, frequencies))
+    # a growing pair turns the phase the other way: it must be tried for itself
+    poles = np.concatenate((-narrow, narrow, -wide)) + 1j * np.tile(frequencies, 3)
     gain = scan(blocks, current, info, poles).gain
     at = int(np.argmax(gain))
     return complex(poles[at]), float(gain[at])

@@ -130,7 +130,7 @@ def section_scores(blocks: Sequence[Block], solution: Solution, info: Informatio
 
 
 def _wald(solution: Solution, info: Information, columns: NDArray[np.intp]) -> FloatArray:
-    """Wald χ² of the coefficients in each row of `columns`, (J, 1 or 2), own poles held.
+    """Wald χ² of the coefficients in each row of `columns`, (J, w), own poles held.
 
     With c the coefficients of channel k, V their covariance at given poles and S their slope by
     the other poles: Σ cᵀV⁻¹c less what moving the other poles can explain.
@@ -165,6 +165,12 @@ def _wald(solution: Solution, info: Information, columns: NDArray[np.intp]) -> F
     moved = np.linalg.solve(stiffness + 1e-13 * np.eye(n), right)
     explained = np.sum(right * moved, axis=(1, 2))
     return cast(FloatArray, np.maximum(direct - explained, 0.0))
+
+
+def joint_score(solution: Solution, info: Information, sections: Sequence[int]) -> float:
+    """Return the Wald χ² of the residues of several sections together."""
+    columns = [c for index in sections for c in section_columns(solution.sections, index)]
+    return float(_wald(solution, info, np.array([columns]))[0])
 
 
 def _narrow(blocks: Sequence[Block], sections: Sections, index: int) -> bool:

@@ -262,11 +262,6 @@ def test_undecided_when_the_data_cannot_tell():
     assert "growth rate" in result.reason
 
 
-@pytest.mark.xfail(
-    strict=True,
-    reason="weights by the size of samples below the noise hide the resonance from the first "
-    "fit, and the noise is then taken for a relative one of several times the model",
-)
 def test_a_resonance_that_stands_out_of_absolute_noise_is_found():
     """Peak 13 times the noise, which everything off resonance drowns in; growth at 15 σ."""
     for seed in range(6):
@@ -405,11 +400,6 @@ def share_found(of_limit, draws=40):
     return count / draws
 
 
-@pytest.mark.xfail(
-    strict=True,
-    reason="the limit reckons with all samples, the search spares the three most telling ones "
-    "of a narrow pair and tries further pairs in the left half-plane only: about 65 % are found",
-)
 def test_a_mode_at_the_reported_limit_is_found():
     """95 % promised for the least favourable phase; 40 draws know that to 3.4 % (one σ)."""
     assert share_found(1.0) >= 0.95 - 3 * 0.034
