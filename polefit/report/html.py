@@ -15,7 +15,7 @@ from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
 from polefit import __version__
-from polefit.estimates import si
+from polefit.estimates import si, with_uncertainty
 from polefit.modes import Identification, Mode
 from polefit.report import drawing, headline, nodes, phrases, wording
 from polefit.report.figures import plot_detection, plot_nodes, plot_overview, plot_poles
@@ -126,11 +126,9 @@ def _mode(mode: Mode, full: bool) -> dict[str, Any]:
     rest = len(strengths) - 4
     ratio = mode.damping_ratio
     sharp = ratio.std is not None and ratio.std < 1e-4 * abs(ratio.value)
-    interval = (
-        f"{si(ratio.low, '', 5, keep_zeros=True)} to {si(ratio.high, '', 5, keep_zeros=True)}"
-        if ratio.low is not None and ratio.high is not None and not mode.real and not sharp
-        else ""
-    )
+    interval = ""
+    if ratio.low is not None and ratio.high is not None and not mode.real and not sharp:
+        interval = f"{_limit(ratio.low, ratio.std)} to {_limit(ratio.high, ratio.std)}"
     frequency = phrases.uncrowded(mode.frequency_hz.text("Hz"))
     if mode.real:
         frequency = f"{phrases.hertz(mode.natural_frequency_hz.value, 5)}, real pole"
@@ -147,6 +145,12 @@ def _mode(mode: Mode, full: bool) -> dict[str, Any]:
         "full": full,
         "nodes": shown + (f" and {rest} more" if rest > 0 else ""),
     }
+
+
+def _limit(value: float, std: float | None) -> str:
+    """Write a limit of an interval with as many digits as its estimate has."""
+    text = with_uncertainty(value, std)
+    return si(value, "", 4) if "(" in text else text.partition(" ± ")[0]
 
 
 def _view(result: Identification, prefix: str) -> dict[str, Any]:
@@ -192,9 +196,12 @@ def _loop(result: Identification, index: int, prefix: str) -> dict[str, Any]:
     return {
         "mode": loop.mode + 1,
         "label": phrases.label(result.modes[loop.mode]),
+        # bars compare nodes: one alone says nothing that the table does not
         "figure": _svg(
             plot_nodes(result, index), f"{prefix}n{index}", f"Nodes of mode {loop.mode + 1}"
-        ),
+        )
+        if len(loop.nodes) > 1
+        else None,
         "headings": table[0],
         "rows": table[1:],
         "more": nodes.more_nodes(rest) if rest > 0 else "",

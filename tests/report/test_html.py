@@ -167,3 +167,15 @@ def test_notebook_fragment(unstable):
 def test_the_same_result_gives_the_same_page(build):
     result = build(nodes=("gate2",), points=31)
     assert identification_html(result) == identification_html(result)
+
+
+def test_limits_have_the_digits_of_their_estimate(undecided):
+    """ζ = −0.00004 ± 0.00020: 1.96 standard uncertainties to both sides."""
+    assert "ζ from −0.00043 to 0.00035 at 95 %" in identification_html(undecided)
+
+
+def test_one_node_needs_no_bars(build):
+    page = identification_html(build("stable", nodes=("gate2",), points=31))
+    assert "Suspect loop 1" in page
+    assert "Nodes of mode" not in page
+    assert "Nodes of mode" in identification_html(build("stable", nodes=("a", "b"), points=31))
