@@ -3,18 +3,20 @@
 from __future__ import annotations
 
 import textwrap
-from dataclasses import dataclass
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass, field, replace
 from pathlib import Path
 from typing import Any, Literal, TypeAlias
 
 import numpy as np
 
 from polefit.analysis.data_quality import known_uncertainty, limits
+from polefit.errors import ArgumentError
 from polefit.estimates import si
 from polefit.precision import Printed
 from polefit.readers import read_all_with_report, read_with_report
-from polefit.readers.reading import Parsed
-from polefit.responses import FloatArray, ResponseSet
+from polefit.readers.reading import OpenQuestionError, Parsed
+from polefit.responses import Channel, FloatArray, ResponseSet
 
 Spacing: TypeAlias = Literal["single point", "uniform", "logarithmic", "uneven"]
 
@@ -22,6 +24,7 @@ Spacing: TypeAlias = Literal["single point", "uniform", "logarithmic", "uneven"]
 _STEP_SCATTER = 2e-3
 _MARKS = {".": "point", ",": "comma"}
 _WIDTH = 96
+_UNREAD = "what will limit the verdict can be told once these questions are settled"
 
 
 @dataclass(frozen=True)
@@ -80,6 +83,9 @@ class Inspection:
         Every reading that was not forced by the file.
     warnings : tuple of str
         What deserves a second look or will limit the verdict.
+    questions : mapping of str to str
+        What the file leaves open, by the option that settles it. What depends on the answer, such
+        as the quantity, is then not told.
     """
 
     file: str
@@ -92,6 +98,12 @@ class Inspection:
     step: Step
     assumptions: tuple[str, ...]
     warnings: tuple[str, ...]
+    questions: Mapping[str, str] = field(default_factory=dict)
+
+    @property
+    def settled(self) -> bool:
+        """Whether quantity and termination are known."""
+        return not {"quantity", "driven"} & set(self.questions)
 
     @property
     def frequency_digits(self) -> str | None:
@@ -99,11 +111,14 @@ class Inspection:
         printed = self.responses.frequency_precision
         return None if printed is None else str(printed)
 
+    def _if_settled(self, text: str) -> str:
+        return text if self.settled else "not stated, see below"
+
     def _printed_to(self) -> str:
         printed = self.responses.frequency_precision
         if printed is None:
             return ""
-        return f", printed to {printed}" + (", which hold its grid" if printed.exact else "")
+        return f", printed to {printed}" + (": its grid, exactly" if printed.exact else "")
 
     def to_dict(self) -> dict[str, Any]:
         """Return plain data under the schema name ``polefit.inspection``."""
@@ -118,14 +133,14 @@ class Inspection:
                 "points": data.points,
                 "format": self.format,
             },
-            "quantity": data.quantity,
-            "unit": data.unit,
+            "quantity": data.quantity if self.settled else None,
+            "unit": data.unit if self.settled else None,
             "frequency_unit": self.frequency_unit,
             "frequency_digits": self.frequency_digits,
             "scaling": self.scaling,
             "decimal_mark": self.decimal_mark,
             "digits": self.digits,
-            "channels": [[c.output, c.input] for c in data.channels],
+            "channels": [[c.output, c.input if self.settled else None] for c in data.channels],
             "band_hz": list(data.band_hz),
             "points": data.points,
             "step": {
@@ -136,19 +151,22 @@ class Inspection:
             },
             "reference_ohm": None if data.reference_ohm is None else list(data.reference_ohm),
             "pump_hz": data.pump_hz,
-            "termination": data.termination,
+            "termination": data.termination if self.settled else None,
             "assumptions": list(self.assumptions),
             "warnings": list(self.warnings),
+            "questions": dict(self.questions),
         }
 
     def __str__(self) -> str:
         data = self.responses
         low, high = data.band_hz
-        names = ", ".join(str(c) for c in data.channels)
+        names = ", ".join(str(c) if self.settled else c.output for c in data.channels)
         mark = "" if self.decimal_mark is None else _MARKS.get(self.decimal_mark, "")
         rows = {
             "format": self.format,
-            "quantity": f"{data.quantity} in {data.unit}" if data.unit else data.quantity,
+            "quantity": self._if_settled(
+                f"{data.quantity} in {data.unit}" if data.unit else data.quantity
+            ),
             "frequency": f"in {self.frequency_unit}{self._printed_to()}",
             "scaling": self.scaling,
             "decimal mark": mark or "none: binary numbers",
@@ -157,18 +175,21 @@ class Inspection:
             "band": f"{si(low, 'Hz')} to {si(high, 'Hz')}",
             "points": str(data.points),
             "step": str(self.step),
-            "termination": data.termination,
+            "termination": self._if_settled(data.termination),
         }
         if data.pump_hz is not None:
             rows["pump"] = si(data.pump_hz, "Hz")
         lines = [self.file, *(_row(name, text) for name, text in rows.items())]
+        if self.questions:
+            told = tuple(f"{option}: {text}" for option, text in self.questions.items())
+            lines += ["Not stated:", *_items(told)]
         lines += ["Assumed:", *_items(self.assumptions or ("nothing: the file says it all",))]
         lines += ["Take care:", *_items(self.warnings or ("nothing to warn of",))]
         return "\n".join(lines)
 
 
 def inspect(path: str | Path, **options: Any) -> Inspection:
-    """Read a file and tell what it holds.
+    """Read a file and tell what it holds, and what it leaves open.
 
     Parameters
     ----------
@@ -186,7 +207,8 @@ def inspect(path: str | Path, **options: Any) -> Inspection:
     FileError, ArgumentError
         As :func:`polefit.read` does.
     """
-    return _inspection(path, read_with_report(path, **options))
+    parsed, open_ = _looked_at(lambda given: (read_with_report(path, **given),), options)
+    return _inspection(path, parsed[0], open_)
 
 
 def inspect_all(path: str | Path, **options: Any) -> tuple[Inspection, ...]:
@@ -208,11 +230,37 @@ def inspect_all(path: str | Path, **options: Any) -> tuple[Inspection, ...]:
     FileError, ArgumentError
         As :func:`polefit.read_all` does.
     """
-    return tuple(_inspection(path, parsed) for parsed in read_all_with_report(path, **options))
+    parsed, open_ = _looked_at(lambda given: read_all_with_report(path, **given), options)
+    return tuple(_inspection(path, one, open_) for one in parsed)
 
 
-def _inspection(path: str | Path, parsed: Parsed) -> Inspection:
-    responses = parsed.responses
+def _looked_at(
+    read: Callable[[Mapping[str, Any]], tuple[Parsed, ...]], options: Mapping[str, Any]
+) -> tuple[tuple[Parsed, ...], dict[str, str]]:
+    """Read with whatever answer to the questions that the file leaves open; return them too."""
+    questions: list[OpenQuestionError] = []
+    given = dict(options)
+    while True:
+        try:
+            parsed = read(given)
+        except OpenQuestionError as error:
+            if not error.presume or any(q.option == error.option for q in questions):
+                raise
+            questions.append(error)
+            given.update(error.presume)
+        except ArgumentError:
+            if questions:
+                raise questions[0] from None
+            raise
+        else:
+            return parsed, {q.option: f"{q.what}; {q.remedy}" for q in questions}
+
+
+def _inspection(path: str | Path, parsed: Parsed, questions: Mapping[str, str]) -> Inspection:
+    responses = _undriven(parsed.responses) if "driven" in questions else parsed.responses
+    unread = {"form", "angle_unit"} & set(questions)  # the numbers mean nothing yet
+    # What was presumed about the driven node, only to look at the file, is no assumption.
+    assumptions = (a for a in parsed.assumptions if not (questions and a.startswith("transfer:")))
     return Inspection(
         file=str(path),
         format=parsed.format,
@@ -220,11 +268,18 @@ def _inspection(path: str | Path, parsed: Parsed) -> Inspection:
         frequency_unit=parsed.frequency_unit,
         scaling=parsed.scaling or _scaling(responses),
         decimal_mark=parsed.decimal_mark or _usual_mark(parsed.format),
-        digits=_digits(responses),
+        digits=_digits(responses, named="form" not in questions),
         step=step_of(responses.frequency_hz),
-        assumptions=parsed.assumptions,
-        warnings=(*parsed.warnings, *limits(responses)),
+        assumptions=tuple(assumptions),
+        warnings=(*parsed.warnings, *((_UNREAD,) if unread else limits(responses))),
+        questions=questions,
     )
+
+
+def _undriven(responses: ResponseSet) -> ResponseSet:
+    """Take each response by its node alone, since nothing says what was driven."""
+    nodes = tuple(Channel(c.output, c.output) for c in responses.channels)
+    return replace(responses, channels=nodes) if len(set(nodes)) == len(nodes) else responses
 
 
 def step_of(frequency_hz: FloatArray) -> Step:
@@ -265,7 +320,7 @@ def _usual_mark(format_name: str) -> str | None:
     return "." if format_name.startswith("Touchstone") else None
 
 
-def _digits(responses: ResponseSet) -> str:
+def _digits(responses: ResponseSet, *, named: bool) -> str:
     precision = responses.precision
     if precision is None:
         if responses.sample_std is None:
@@ -277,6 +332,7 @@ def _digits(responses: ResponseSet) -> str:
         "magnitude-angle": ("magnitude", "angle"),
         "decibel-angle": ("decibels", "angle"),
     }[precision.form]
+    names = names if named else ("first number", "second number")
     texts = [_printed(p) for p in (precision.first, precision.second)]
     if texts[0] == texts[1]:
         return f"{texts[0]} ({' and '.join(names)})"

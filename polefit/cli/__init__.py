@@ -19,6 +19,7 @@ from polefit import __version__
 from polefit.cli.demo import demo
 from polefit.cli.identify import identify
 from polefit.cli.inspect import inspect
+from polefit.cli.options import on_command_line
 from polefit.cli.output import say
 from polefit.errors import PolefitError, one_line
 
@@ -76,7 +77,7 @@ def main(argv: Sequence[str] | None = None) -> int:
             say("interrupted")
             return INTERRUPTED
         except PolefitError as error:
-            return _refused(str(error))
+            return _refused(on_command_line(str(error)))
         except MemoryError:
             return _refused("not enough memory; read fewer channels (--select) or a smaller band")
         except OSError as error:

@@ -100,6 +100,42 @@ def names(values: tuple[str, ...]) -> tuple[str, ...]:
     return tuple(name.strip() for name in found if name.strip())
 
 
+_API_NAMES = (
+    "quantity|driven|select|node|decimal|delimiter|frequency_unit|form|angle_unit|scaling"
+    "|reference_ohm|band_hz|confidence"
+)
+_VALUE = r"(?:\"([^\"]*)\"|'([^']*)')?"
+
+
+def on_command_line(text: str) -> str:
+    """Name the options in a message as they are called on the command line.
+
+    Parameters
+    ----------
+    text : str
+        Such as ``a.csv: driven: no node …; say quantity="transfer" (--quantity)``.
+
+    Returns
+    -------
+    str
+        Such as ``a.csv: --driven: no node …; say --quantity transfer``.
+    """
+
+    def option(match: re.Match[str]) -> str:
+        """Write one option, with its value if there is one."""
+        said = [part for part in match.groups()[1:] if part]
+        return " ".join([_option(match[1]), *(part.strip() for part in said[-1:])])
+
+    text = re.sub(rf"\b({_API_NAMES})={_VALUE},? \(--[\w-]+([^()]*)\)", option, text)
+    text = re.sub(rf"\b({_API_NAMES})={_VALUE}, (?=--)", "", text)
+    text = re.sub(rf"\b({_API_NAMES})={_VALUE}(?!\S*=)", option, text)
+    return re.sub(rf"(^|: )({_API_NAMES}): ", lambda m: f"{m[1]}{_option(m[2])}: ", text, count=1)
+
+
+def _option(name: str) -> str:
+    return "--" + name.removesuffix("_hz").replace("_", "-")
+
+
 def _together(*options: Callable[[Command], Command]) -> Callable[[Command], Command]:
     """Apply options so that help lists them in the order given."""
 
@@ -135,8 +171,9 @@ reading_options = _together(
     click.option(
         "--node",
         multiple=True,
-        metavar="NAME",
-        help="Node of a one-port file, instead of its stem; once per FILE.",
+        metavar="NAME,…",
+        help="Node of a one-port file, instead of its stem, or all ports of an n-port file; once "
+        "per FILE.",
     ),
     click.option("--decimal", type=click.Choice((".", ",")), help="Decimal mark of a text file."),
     click.option("--delimiter", metavar="NAME", help="comma, semicolon, tab or blanks."),

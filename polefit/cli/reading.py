@@ -51,7 +51,10 @@ def options_for(given: Mapping[str, Any], index: int, count: int) -> dict[str, A
     options["driven"] = _one(
         tuple(given.get("driven") or ()), "--driven", index, count, shared=True
     )
-    options["node"] = _one(tuple(given.get("node") or ()), "--node", index, count, shared=False)
+    nodes = tuple(given.get("node") or ())
+    if count == 1 and len(nodes) > 1:
+        nodes = (",".join(nodes),)  # the ports of one file, one by one
+    options["node"] = _one(nodes, "--node", index, count, shared=False)
     return {name: value for name, value in options.items() if value is not None}
 
 
@@ -65,7 +68,9 @@ def _one(
     if shared and len(values) == 1:
         return values[0]
     once = "once, or once for each file" if shared else "once for each file"
-    raise ArgumentError(f"{option}: given {len(values)} times for {count} files; give it {once}")
+    times = "once" if len(values) == 1 else f"{len(values)} times"
+    files = "one file" if count == 1 else f"{count} files"
+    raise ArgumentError(f"{option}: given {times} for {files}; give it {once}")
 
 
 def read_files(

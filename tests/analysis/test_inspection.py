@@ -10,6 +10,7 @@ import polefit
 from polefit.analysis.data_quality import known_uncertainty, limits, visible_noise
 from polefit.analysis.inspection import inspect, inspect_all, step_of
 from polefit.cli import main
+from polefit.errors import ArgumentError, FormatError
 from polefit.precision import FrequencyPrecision, Precision, Printed
 
 
@@ -45,7 +46,7 @@ def test_a_file_is_told_as_it_was_read(touchstone):
     assert text.startswith(str(touchstone))
     assert rows["format"] == "Touchstone 1.0"
     assert rows["quantity"] == "impedance in Ω"
-    assert rows["frequency"] == "in MHz, printed to 6 decimal places, which hold its grid"
+    assert rows["frequency"] == "in MHz, printed to 6 decimal places: its grid, exactly"
     assert rows["scaling"] == "printed numbers × 50 = Ω"
     assert rows["decimal mark"] == "point"
     assert rows["digits"] == "9 significant (real part and imaginary part)"
@@ -224,3 +225,72 @@ def test_rounded_frequencies_are_no_visible_noise():
     known = replace(data, frequency_precision=FrequencyPrecision(Printed(significant=6)))
     assert not any(w.startswith("noise shows") for w in limits(known))
     assert any(w.startswith("frequency printed to 6 digits") for w in limits(known))
+
+
+# -- what a file leaves open --------------------------------------------------------------------
+
+
+def rows_of(text):
+    return {line[2:16].strip(): line[16:] for line in text.splitlines() if line[:2] == "  "}
+
+
+@pytest.fixture
+def text_file(tmp_path):
+    def write(head, name="gate2.dat"):
+        path = tmp_path / name
+        body = "".join(f"{f:.6e} {z.real:.9e} {z.imag:.9e}\n" for f, z in
+                       zip(FINE[::10], resonance(FINE[::10]), strict=True))  # fmt: skip
+        path.write_text(head + body)
+        return path
+
+    return write
+
+
+def test_a_file_without_quantity_is_told_all_the_same(text_file, capsys):
+    path = text_file("freq Re(x) Im(x)\n")
+    assert main(["inspect", str(path)]) == 0
+    text = capsys.readouterr().out
+    rows = rows_of(text)
+    assert rows["format"] == "delimited text"
+    assert rows["points"] == "401"
+    assert rows["band"] == "4 MHz to 4 GHz"
+    assert rows["channels"] == "1: x"
+    assert rows["quantity"] == rows["termination"] == "not stated, see below"
+    assert "Not stated:\n  - quantity: nothing says whether" in text
+    assert "say quantity= (--quantity)" in text
+    document = inspect(path).to_dict()
+    assert list(document["questions"]) == ["quantity"]
+    assert document["quantity"] is None
+    assert document["termination"] is None
+    settled = inspect(path, quantity="impedance")
+    assert settled.questions == {}
+    assert "Not stated" not in str(settled)
+
+
+def test_node_voltages_are_told_before_it_is_said_what_was_driven(text_file):
+    found = inspect(text_file("freq Re(V(g)) Im(V(g))\n"))
+    assert list(found.questions) == ["driven"]
+    assert found.to_dict()["channels"] == [["g", None]]
+    assert "source" not in rows_of(str(found))["channels"]
+    assert not any("transfer" in told for told in found.assumptions)
+    assert not any("←" in told for told in found.warnings)
+
+
+def test_numbers_of_unknown_form_are_not_judged(text_file):
+    found = inspect(text_file(""), quantity="impedance", frequency_unit="Hz")
+    assert list(found.questions) == ["form"]
+    assert found.warnings == (
+        "what will limit the verdict can be told once these questions are settled",
+    )
+    assert found.digits == "10 significant (first number and second number)"
+    both = inspect(text_file(""), frequency_unit="Hz")
+    assert list(both.questions) == ["form", "quantity"]
+
+
+def test_other_refusals_stay(tmp_path, text_file):
+    letter = tmp_path / "letter.txt"
+    letter.write_text("Dear colleague,\n")
+    with pytest.raises(FormatError, match="no row of numbers"):
+        inspect(letter)
+    with pytest.raises(ArgumentError, match="no node voltage called 'q'"):
+        inspect(text_file("freq Re(V(g)) Im(V(g))\n"), driven="q")

@@ -13,7 +13,7 @@ import pytest
 
 import polefit
 from polefit.cli import commands, main
-from polefit.cli.options import QUANTITY_NAMES, as_frequency, names
+from polefit.cli.options import QUANTITY_NAMES, as_frequency, names, on_command_line
 from polefit.cli.output import encodable
 from polefit.cli.progress import Progress
 from polefit.errors import ArgumentError, FormatError
@@ -137,7 +137,7 @@ def test_node_and_driven_go_with_the_files(polefit_command):
     ]
     run = polefit_command("identify", "a", "b", "--node", "x")
     assert run.status == 2
-    assert "--node: given 1 times for 2 files" in run.err
+    assert "--node: given once for 2 files" in run.err
 
 
 def test_band_and_confidence_reach_the_engine(polefit_command):
@@ -373,3 +373,50 @@ def test_a_reader_that_goes_away_is_no_error():
     with os.fdopen(writing, "w") as closed:
         run = python("-c", code, capture_output=False, stdout=closed, stderr=subprocess.PIPE)
     assert (run.returncode, run.stderr) == (3, "")
+
+
+# -- options in messages ------------------------------------------------------------------------
+
+
+@pytest.mark.parametrize(
+    ("text", "told"),
+    [
+        ("a.csv: driven: no node; save it", "a.csv: --driven: no node; save it"),
+        ("reference_ohm: needed; say it", "--reference-ohm: needed; say it"),
+        ("band_hz: no point; the data", "--band: no point; the data"),
+        ("a; say quantity= (--quantity)", "a; say --quantity"),
+        ("a; say form= (--form) decibel-angle", "a; say --form decibel-angle"),
+        ("a; say decimal=',' (--decimal ,) for b", "a; say --decimal , for b"),
+        ('a; say quantity="transfer" (--quantity), or', "a; say --quantity transfer, or"),
+        ('a; say quantity="scattering" too', "a; say --quantity scattering too"),
+        ("a (quantity='impedance', --quantity impedance), b", "a (--quantity impedance), b"),
+        ("name the nodes (node=, --node), or", "name the nodes (--node), or"),
+        ("a with delimiter=',' and decimal='.': b", "a with --delimiter , and --decimal .: b"),
+        ("a.csv: line 3: text: 'select: x'; mend", "a.csv: line 3: text: 'select: x'; mend"),
+    ],
+)
+def test_messages_name_the_options_of_the_command_line(text, told):
+    assert on_command_line(text) == told
+
+
+def test_refusals_name_file_and_option(capsys, tmp_path):
+    path = tmp_path / "a.csv"
+    rows = "".join(f"{f}e9,1,{f % 7}\n" for f in range(1, 30))
+    path.write_text("freq (Hz),Re(V(g)),Im(V(g))\n" + rows)
+    for options, told in (
+        (["--driven", "g1"], "--driven: the file holds no node voltage called 'g1'; it holds g"),
+        (["--driven", "g", "--band", "50GHz", "60GHz"],
+         "--band: no point between 50 GHz and 60 GHz; the data cover 1 GHz to 29 GHz"),
+    ):  # fmt: skip
+        status = main(["identify", str(path), *options])
+        assert status == 2
+        assert capsys.readouterr().err.startswith(f"polefit: error: {path}: {told}")
+
+
+def test_ports_of_one_file_are_named_by_a_list_or_one_by_one(capsys, tmp_path):
+    path = tmp_path / "a.s2p"
+    path.write_text("# Hz S RI R 50\n" + "".join(f"{f} 1 0 2 0 3 0 4 {f}\n" for f in range(1, 9)))
+    for options in (["--node", "gate2,drain1"], ["--node", "gate2", "--node", "drain1"]):
+        assert main(["inspect", str(path), *options, "--json", "-"]) == 0
+        channels = json.loads(capsys.readouterr().out)["channels"]
+        assert channels[1] == ["gate2", "drain1"]

@@ -188,6 +188,35 @@ def test_damage_names_file_line_and_remedy(file, content, name, line, word):
     assert any(part in str(error) for part in word.split("|")), str(error)
 
 
+@pytest.mark.parametrize(
+    ("content", "name", "options", "word"),
+    [
+        (RAW, "a.raw", {"driven": "x"}, "driven: the file holds no node voltage called 'x'"),
+        (RAW, "a.raw", {"driven": "a", "node": "b"}, "node: "),
+        (RAW, "a.raw", {"driven": "a", "select": ["x"]}, "select: "),
+        (TEXT, "a.csv", {"select": ["x"]}, "select: no channel 'x'"),
+        (TEXT, "a.csv", {"scaling": "absolute"}, "scaling: has no meaning"),
+        (TOUCHSTONE, "a.s1p", {"driven": "x"}, "driven: has no meaning"),
+        (TOUCHSTONE, "a.s1p", {"select": "x"}, "select: no channel 'x'"),
+        (TOUCHSTONE, "a.s1p", {"quantity": "scattering"}, "reference_ohm: needed"),
+        (TOUCHSTONE, "a.s1p", {"quantity": "transfer"}, "quantity: "),
+    ],
+)
+def test_options_that_do_not_fit_name_the_file(file, content, name, options, word):
+    error = refusal(file(content, name), **options)
+    assert isinstance(error, ArgumentError)
+    assert word in str(error)
+
+
+def test_a_band_without_points_names_the_file_and_reads_well(file):
+    path = file(TOUCHSTONE, "a.s1p")
+    with pytest.raises(ArgumentError) as error:
+        polefit.read(path).in_band(2e10, 3e10)
+    assert str(error.value) == (
+        f"{path}: band_hz: no point between 20 GHz and 30 GHz; the data cover 1 GHz to 3 GHz"
+    )
+
+
 def test_a_directory(tmp_path):
     assert "is a directory" in str(refusal(tmp_path))
 
