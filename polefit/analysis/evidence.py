@@ -18,6 +18,14 @@ STABLE_MODEL_RISE = 10.8
 """Rise of χ² that speaks against every stable model (χ² with one degree, p = 0.001)."""
 COLOURED_MISFIT = 10.0
 """Where the residual is not noise-like a stable model must fit this many times worse."""
+GROWING_SCORE = 2.0
+"""A growing mode is asked for so many times the χ² from which a pole is claimed. One whose growth
+is known to a sixth has three times that much; spare pairs that mend small errors of a model whose
+order is finite stay below."""
+MOSTLY_NOISE = 0.5
+NOISY_MISFIT = 1.1
+"""Where noise exceeds half of the response at most samples, its law is uncertain as well: a stable
+model must fit at least this many times worse."""
 COMPANION_MISFIT = (1.0, 3.0, 10.0)
 """The same for a growing mode that shares its resonance curve with no, one, or more other modes of
 which one is stronger. That is how a fit mends data that no small rational function
@@ -25,6 +33,8 @@ describes: passive resonators, distorted by drive or behind unmodelled lines, we
 with several companions, 4.5 with a coloured residual and 19 with both."""
 COMPANION_WIDTHS = 3.0
 """How many half-widths apart two modes may lie to count as one resonance curve ..."""
+COMPARABLE = 0.3
+"""Within one half-width a mode this much weaker counts like a stronger one: the two may cancel."""
 COMPANION_RATIO = 5.0
 """... and how many times wider the other may be."""
 
@@ -69,12 +79,15 @@ class Comparison:
         For each growing mode in the band, how many modes share its resonance curve.
     distorted : bool
         Whether one of these shows that the data are not those of a small rational function.
+    noisy : bool
+        Whether noise exceeds half of the response at most samples.
     """
 
     stable: StableModel
     alone: dict[int, StableModel]
     companions: dict[int, int]
     distorted: bool
+    noisy: bool
 
 
 def compare(
@@ -102,7 +115,7 @@ def compare(
     distorted = any(
         n > 0 and alone[i].misfit_ratio < COMPANION_MISFIT[min(n, 2)] for i, n in companions.items()
     )
-    return Comparison(stable, alone, companions, distorted)
+    return Comparison(stable, alone, companions, distorted, _noisy(estimation))
 
 
 def evidence_for(
@@ -112,6 +125,7 @@ def evidence_for(
     distance: float,
     factor: float,
     scale: float,
+    limit: float = 0.0,
 ) -> tuple[Evidence, ...]:
     """Collect what was tested on one mode.
 
@@ -121,6 +135,8 @@ def evidence_for(
         Growth rate over its standard uncertainty.
     factor : float
         What is needed of it.
+    limit : float
+        χ² of its residues from which a pole is claimed as a mode.
     """
     items = [
         Evidence(
@@ -129,12 +145,29 @@ def evidence_for(
             f"the growth rate lies {abs(distance):.3g} standard uncertainties from zero; "
             f"{factor:.2f} are needed",
         ),
-        Evidence("residue", True, f"its residues stand out of the noise by χ² = {c.score:.3g}"),
+        _residue(c, limit),
         _persistence(c, estimation, scale),
     ]
     if against is not None and c.index in against.companions:
         items.append(_against_stable(c, against, estimation))
     return tuple(items)
+
+
+def _residue(c: Candidate, limit: float) -> Evidence:
+    """Check the residues; a growing mode must stand out clearly, not just be claimed."""
+    asked = limit * (GROWING_SCORE if c.pole.real > 0 else 1.0)
+    detail = f"its residues stand out of the noise by χ² = {c.score:.3g}"
+    if c.score < asked:
+        detail += f"; {asked:.3g} are asked for of a growing mode"
+    return Evidence("residue", c.score >= asked, detail)
+
+
+def _noisy(estimation: Estimation) -> bool:
+    ratios = [
+        noise.sum(axis=1) / np.maximum(np.abs(block.values) ** 2, 1e-300)
+        for block, noise in zip(estimation.blocks, estimation.noise, strict=True)
+    ]
+    return float(np.median(np.concatenate([r.ravel() for r in ratios]))) > MOSTLY_NOISE**2
 
 
 def _companions(c: Candidate, estimation: Estimation, scale: float) -> int:
@@ -148,7 +181,10 @@ def _companions(c: Candidate, estimation: Estimation, scale: float) -> int:
     width, widths = abs(poles[own].real), np.abs(poles.real)
     near = (distance < COMPANION_WIDTHS * np.maximum(widths, width)) & (poles.imag > 0)
     near &= widths < COMPANION_RATIO * width
-    return int(near.sum()) - 1 if np.any(near & (strength > strength[own])) else 0
+    overlapping = distance < np.maximum(widths, width)
+    rival = strength > np.where(overlapping, COMPARABLE, 1.0) * strength[own]
+    rival[own] = False
+    return int(near.sum()) - 1 if np.any(near & rival) else 0
 
 
 def _persistence(c: Candidate, estimation: Estimation, scale: float) -> Evidence:
@@ -180,6 +216,7 @@ def _against_stable(c: Candidate, against: Comparison, estimation: Estimation) -
     companions = against.companions[c.index]
     asked = COMPANION_MISFIT[2 if against.distorted else min(companions, 2)]
     asked *= 1.0 if whiteness.white else COLOURED_MISFIT
+    asked = max(asked, NOISY_MISFIT if against.noisy else 1.0)
     detail = (
         f"the best model without {'this' if len(against.alone) > 1 else 'a'} right-half-plane pole "
         f"({stable.order} poles) misses the data {stable.misfit_ratio:.4g} times as far"
@@ -189,6 +226,8 @@ def _against_stable(c: Candidate, against: Comparison, estimation: Estimation) -
         doubts.append("the mode lies on the resonance curve of a stronger one")
     elif against.distorted:
         doubts.append("a resonance in the band looks distorted")
+    if against.noisy:
+        doubts.append("most samples are noise")
     if doubts:
         detail += f"; as {' and '.join(doubts)}, {asked:g} times are asked for"
     rise = stable.rise / whiteness.inflation

@@ -158,17 +158,20 @@ def _place(
     return inside, near
 
 
+def claim_limit(pole: complex, estimation: Estimation) -> float:
+    """Return the χ² from which a pole is claimed as a mode, all places counted."""
+    channels = sum(block.channels for block in estimation.blocks)
+    columns = 2 if pole.imag > 0 else 1
+    limit = threshold(channels, estimation.places, CLAIM_CHANCE, columns=columns)
+    return limit * estimation.whiteness.inflation
+
+
 def _claim(
     found: list[Candidate], estimation: Estimation, scale: float
 ) -> tuple[list[Candidate], list[BackgroundPole]]:
-    channels = sum(block.channels for block in estimation.blocks)
-    limits = {
-        True: threshold(channels, estimation.places, CLAIM_CHANCE),
-        False: threshold(channels, estimation.places, CLAIM_CHANCE, columns=1),
-    }
     claimed, background = [], []
     for c in found:
-        limit = limits[c.pole.imag > 0] * estimation.whiteness.inflation
+        limit = claim_limit(c.pole, estimation)
         if not c.near_band:
             reason = "outside the band: it stands for everything beyond the band edge"
         elif c.score < limit:
@@ -194,7 +197,8 @@ def _mode(
     estimates = pole_estimates(c.pole, c.covariance)
     std = math.sqrt(max(c.covariance[0, 0], 0.0))
     distance = c.pole.real / std if std > 0 else math.copysign(math.inf, c.pole.real)
-    evidence = evidence_for(c, estimation, against, distance, factor, scale)
+    limit = claim_limit(c.pole, estimation)
+    evidence = evidence_for(c, estimation, against, distance, factor, scale, limit)
     return Mode(
         pole_rad_per_s=c.pole,
         covariance=(

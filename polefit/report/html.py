@@ -95,8 +95,7 @@ def _svg(drawn: Axes | Figure, prefix: str, caption: str) -> Markup:
 def _summary(result: Identification) -> dict[str, Any]:
     """Collect what the top of the page and the notebook fragment share."""
     word, _, sentence = headline.verdict_sentence(result).partition(":")
-    shown = wording.suspects(result)
-    in_full = [i in shown or len(result.modes) <= _FEW for i in range(len(result.modes))]
+    full = wording.in_full(result, _FEW)
     warning = headline.edge_warning(result)
     before, _, after = sentence.partition(warning) if warning else (sentence, "", "")
     # a stable verdict says it all; what a sentence already says is not said again
@@ -109,8 +108,8 @@ def _summary(result: Identification) -> dict[str, Any]:
         "warning": _one_line(warning),
         "after": _one_line(after),
         "reason": "" if told else phrases.sentence(result.reason),
-        "modes": [_mode(m, full) for m, full in zip(result.modes, in_full, strict=True)],
-        "node_note": nodes.node_note(result.modes) if result.modes else "",
+        "modes": [_mode(m, i in full) for i, m in enumerate(result.modes)],
+        "node_note": nodes.node_note([result.modes[i] for i in full]),
         "sharp_note": phrases.SHARP_NOTE if any(map(phrases.is_sharp, result.modes)) else "",
         "cautions": wording.CAUTIONS,
     }

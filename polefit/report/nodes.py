@@ -113,6 +113,8 @@ def node_note(modes: Sequence[Mode]) -> str:
     """Say what the numbers behind the nodes of these modes mean."""
     views = [s for mode in modes for s in node_strengths(mode)]
     with_leverage = sum(s.damping_per_ms is not None for s in views)
+    if not views:
+        return ""
     if with_leverage == 0:
         return f"{RESIDUE_NOTE}."
     return f"{LEVERAGE_NOTE}." if with_leverage == len(views) else f"{LEVERAGE_NOTE}; {MIXED_NOTE}."

@@ -72,14 +72,14 @@ def _modes(result: Identification) -> list[str]:
     rows = [_HEADINGS, *(_row(i, mode) for i, mode in enumerate(result.modes))]
     widths = [max(len(row[c]) for row in rows) for c in range(len(_HEADINGS))]
     lines = []
-    full = wording.suspects(result)
+    full = wording.in_full(result, _FEW)
     for i, row in enumerate(rows):
         cells = (cell.ljust(width) for cell, width in zip(row, widths, strict=True))
         lines.append("  " + _GAP.join(cells))
-        if i and (i - 1 in full or len(result.modes) <= _FEW):
+        if i and i - 1 in full:
             indent = " " * (2 + widths[0] + len(_GAP))
             lines.extend(_wrapped(_second_line(result.modes[i - 1]), indent, indent))
-    lines.extend(_wrapped(nodes.node_note(result.modes), "  ", "  "))
+    lines.extend(_wrapped(nodes.node_note([result.modes[i] for i in full]), "  ", "  "))
     if any(phrases.is_sharp(mode) for mode in result.modes):
         lines.append(f"  {phrases.SHARP_NOTE}")
     if not all(mode.in_band for mode in result.modes):

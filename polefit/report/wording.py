@@ -135,6 +135,12 @@ def suspects(result: Identification) -> set[int]:
     return doubtful | {loop.mode for loop in result.loops}
 
 
+def in_full(result: Identification, few: int) -> tuple[int, ...]:
+    """Return the indices of the modes shown with their nodes: all if `few`, else the suspects."""
+    count = len(result.modes)
+    return tuple(range(count)) if count <= few else tuple(sorted(suspects(result)))
+
+
 def notes(result: Identification) -> tuple[str, ...]:
     """Return the notes that are not already listed as assumptions of a file."""
     listed_before = {a for source in result.sources for a in source.assumptions}

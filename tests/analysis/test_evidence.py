@@ -34,7 +34,7 @@ class Estimated:
 
 def outcome(ratio, rise=1e3, companions=0, distorted=False, **more):
     stable = StableModel(ratio, rise, 4)
-    against = Comparison(stable, {0: stable}, {0: companions}, distorted)
+    against = Comparison(stable, {0: stable}, {0: companions}, distorted, noisy=False)
     return _against_stable(CANDIDATE, against, Estimated(**more))
 
 

@@ -49,7 +49,7 @@ def estimation(blocks, solution, past=None, whiteness=WHITE, level=1.0):
     info = information(solution)
     return Estimation(
         blocks=blocks,
-        laws=tuple(first_guess(np.abs(b.values)) for b in blocks),
+        laws=tuple(first_guess([b.values for b in blocks])),
         noise=tuple(1 / b.weight**2 for b in blocks),
         solution=solution,
         info=info,

@@ -147,7 +147,7 @@ def test_variance_is_the_sum_of_its_parts():
 
 def test_variance_is_never_zero():
     size = np.array([[1.0, 1e-3, 0.0], [0.0, 0.0, 0.0]])
-    found = variance(first_guess(size), size, np.zeros((2, 2, 3)))
+    found = variance(first_guess([size.astype(complex)])[0], size, np.zeros((2, 2, 3)))
     assert np.all(found > 0)
     expected = (RELATIVE_FLOOR * size[0]) ** 2 + ABSOLUTE_FLOOR**2
     assert np.allclose(found[0], expected, rtol=1e-12)
