@@ -3,11 +3,13 @@
 from dataclasses import replace
 
 import pytest
+from invented_results import with_pole
 
 from polefit.estimates import Estimate
 from polefit.modes import Loop, NodeView
 from polefit.report import nodes
 from polefit.report.figures import plot_nodes
+from polefit.report.html import identification_html
 from polefit.report.text import identification_text
 from polefit.responses import Channel
 
@@ -54,6 +56,16 @@ def test_mixed_nodes_are_explained(mixed, unstable, stable):
     assert "in percent" not in identification_text(stable)
     # r·1e-3/|p| = 4e9·1e-3/(2π·1.504e9)
     assert "in +0.00042, n5 ← in 100 %" in text
+
+
+def test_only_what_is_shown_is_explained(stable):
+    """Real poles have no damping to add to; among many modes their nodes are not shown."""
+    real = with_pole(stable.modes[2], complex(-1e9, 0.0))
+    many = replace(stable, modes=(stable.modes[0], *[real] * 5))
+    assert "in percent" not in identification_text(many)
+    assert "where in percent" not in identification_html(many)
+    few = replace(stable, modes=(stable.modes[0], real))
+    assert "in percent" in identification_text(few)
 
 
 def test_figures_keep_the_leverages_beside_transfers(mixed):
