@@ -176,7 +176,7 @@ def _sample(
 ) -> None:
     """Collect printed numbers of some rows, spread over the block."""
     stride = max(1, len(layout.traces) // _TRACES_SAMPLED)
-    for row in rows[:: max(1, len(rows) // _TOKENS_PER_BLOCK)]:
+    for row in [*rows[:: max(1, len(rows) // _TOKENS_PER_BLOCK)], rows[-1]]:
         tokens = [t for part in dialect.fields(row) for t in part.split(PAIR)]
         axis.append(tokens[layout.frequency])
         for trace in layout.traces[::stride]:

@@ -6,8 +6,8 @@ What tells them apart is the grid: rounding leaves its marks on the steps and on
 
 from __future__ import annotations
 
+import re
 from collections.abc import Sequence
-from dataclasses import replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -47,33 +47,46 @@ def frequency_precision(
     printed = printed_form(plain)
     if printed is None:
         return None
-    if not any(mark in token.lower() for token in plain for mark in ".ed"):
-        printed = Printed(decimals=0)
     scale = scale_hz or 1.0
     numbers = frequency_hz / scale
-    settled = _settled(printed, numbers)
+    if not any(mark in token.lower() for token in plain for mark in ".ed"):
+        printed = Printed(decimals=0)
+    settled = _settled(printed, max(map(_digits, plain)), numbers)
     if settled is None:
         return None
-    return FrequencyPrecision(settled, scale, exact=_is_grid(numbers, settled.quantum(numbers)))
+    quantum = settled.quantum(numbers)
+    if np.any(numbers >= quantum * 10.0**_DOUBLE, where=quantum > 0):
+        return None
+    return FrequencyPrecision(settled, scale, exact=_is_grid(numbers, quantum))
 
 
-def _settled(printed: Printed, numbers: FloatArray) -> Printed | None:
-    """Add the digits that the sample did not show, such as those of 1.15 after 1.0 and 1.1."""
-    while True:
-        quantum = printed.quantum(numbers)
-        known = quantum > 0
-        ratio = numbers[known] / quantum[known]
-        if ratio.size and float(ratio.max()) >= 10.0**_DOUBLE:
-            return None
-        # A number and its division by the quantum may each be off by a few units of the last bit.
-        if np.all(np.abs(ratio - np.round(ratio)) <= 1e-3 + 1e-15 * ratio):
-            return printed
-        if printed.decimals is not None:
-            printed = replace(printed, decimals=printed.decimals + 1)
-        elif printed.significant is not None and printed.significant < _DOUBLE - 1:
-            printed = replace(printed, significant=printed.significant + 1)
-        else:
-            return None
+def _digits(token: str) -> int:
+    """Count the significant digits of a printed number."""
+    mantissa = re.split("[eEdD]", token.strip().lstrip("+-"))[0]
+    return len(mantissa.replace(".", "").lstrip("0"))
+
+
+def _settled(printed: Printed, digits: int, numbers: FloatArray) -> Printed | None:
+    """Take the digits that the sample shows, or more where some number has more.
+
+    A number with more decimals than all of the sample shows that decimals are not what is fixed.
+    """
+    if printed.decimals is not None and _fits(printed, numbers):
+        return printed
+    return next(
+        (Printed(significant=count) for count in range(digits, _DOUBLE)
+         if _fits(Printed(significant=count), numbers)),
+        None,
+    )  # fmt: skip
+
+
+def _fits(printed: Printed, numbers: FloatArray) -> bool:
+    """Whether all numbers are whole in units of their last digit."""
+    quantum = printed.quantum(numbers)
+    known = quantum > 0
+    ratio = numbers[known] / quantum[known]
+    # A number and its division by the quantum may each be off by a few units of the last bit.
+    return bool(np.all(np.abs(ratio - np.round(ratio)) <= 1e-3 + 1e-15 * ratio))
 
 
 def _is_grid(numbers: FloatArray, quantum: FloatArray) -> bool:
@@ -89,7 +102,9 @@ def _is_grid(numbers: FloatArray, quantum: FloatArray) -> bool:
         return False
     inner = steps[within]
     coarse = inner.size >= _FEWEST - 1 and int(np.gcd.reduce(inner)) > 1
-    return coarse or float(np.mean(counts % 10 == 0)) >= _ZEROS
+    # In both halves: of many numbers only the larger ones may have lost a digit.
+    zeros = min(float(np.mean(half % 10 == 0)) for half in np.array_split(counts, 2))
+    return coarse or zeros >= _ZEROS
 
 
 def _whole(numbers: FloatArray, quantum: FloatArray) -> tuple[NDArray[np.int64], FloatArray]:

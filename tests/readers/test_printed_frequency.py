@@ -91,6 +91,16 @@ def test_digits_that_a_sample_does_not_show_are_found():
     assert found.printed == Printed(decimals=4) or found.printed == Printed(significant=5)
 
 
+def test_decimals_that_a_sample_seems_to_fix_are_dropped_where_one_number_has_more():
+    """Seven digits, zeros dropped: the sample shows two decimals throughout, the file three."""
+    frequency = 8705.3412 + 105.12345 * np.arange(200)
+    shown = [f"{f:.7g}" for f in frequency]
+    sample = [t for t in shown if len(t.partition(".")[2]) == 2]
+    assert len({len(t) for t in sample}) > 1
+    found = frequency_precision(sample, np.array([float(t) for t in shown]), 1.0)
+    assert found == FrequencyPrecision(Printed(significant=7))
+
+
 def test_too_few_points_to_tell_a_grid():
     assert not printed("%.2e", np.array([1.01e9, 1.13e9, 1.57e9])).exact
     assert printed("%.2e", np.array([1.01e9])).exact is False
