@@ -8,7 +8,7 @@ import pytest
 
 import polefit
 from polefit.errors import ArgumentError, FileError, FormatError
-from polefit.precision import Precision, Printed
+from polefit.precision import FrequencyPrecision, Precision, Printed
 from polefit.readers import read_with_report
 from polefit.readers.hdf5 import FORMAT, VERSION
 from polefit.responses import Source
@@ -36,6 +36,7 @@ def everything():
             "decibel-angle", Printed(significant=6), Printed(decimals=3), scale=1 / 3, radians=True
         ),
         source=Source("a file;.s1p", "0" * 64, "Touchstone 1.1", ("one thing", "zweitens: ≤ 3")),
+        frequency_precision=FrequencyPrecision(Printed(decimals=3), 1e9 / 3, exact=True),
     )
 
 
@@ -259,6 +260,12 @@ def attribute(name, value):
     return lambda file: file["responses/0"].attrs.__setitem__(name, value)
 
 
+def printed_axis(**attributes):
+    return lambda file: file.create_group("responses/0/frequency_precision").attrs.update(
+        attributes
+    )
+
+
 def linked(link):
     def edit(file):
         del file["responses/0/values"]
@@ -289,6 +296,9 @@ def linked(link):
         (attribute("quantity", "voltage"), "'voltage' is not known"),
         (attribute("pump_hz", -1.0), "pump_hz"),
         (attribute("reference_ohm", 0.0), "reference_ohm"),
+        (printed_axis(scale_hz=0.0, exact=False), "scale_hz = 0"),
+        (printed_axis(scale_hz=1.0, exact=False, significant=-1), "give a count of digits"),
+        (printed_axis(scale_hz=1.0), "attribute 'exact' is not one number"),
         (linked(h5py.SoftLink("/responses/0/frequency_hz")), "link to another place"),
         (linked(h5py.ExternalLink("/etc/hostname", "x")), "link to another place"),
     ],
