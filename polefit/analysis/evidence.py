@@ -201,13 +201,10 @@ def _persistence(c: Candidate, estimation: Estimation, scale: float) -> Evidence
     if shift == 0:
         return Evidence(name, None, "a model of higher order could not be fitted any better")
     passed = shift <= allowed
-    detail = (
-        f"with {order} poles instead of {estimation.solution.sections.order} "
-        f"it moves by {shift * scale:.3g} rad/s, {shift * scale / max(abs(c.pole), 1e-300):.2g} "
-        "of its magnitude"
-        if other is not None
-        else f"with {order} poles it is not found"
-    )
+    share = shift / max(abs(pole.real), 1e-300)
+    moves = f"{share:.2g} half-widths" if share > 1e-6 else "less than a millionth half-width"
+    detail = f"with {order} poles instead of {estimation.solution.sections.order} it "
+    detail += "is not found" if other is None else f"moves by {moves}"
     return Evidence(name, passed, detail)
 
 
@@ -219,7 +216,7 @@ def _against_stable(c: Candidate, against: Comparison, estimation: Estimation) -
     asked = max(asked, NOISY_MISFIT if against.noisy else 1.0)
     detail = (
         f"the best model without {'this' if len(against.alone) > 1 else 'a'} right-half-plane pole "
-        f"({stable.order} poles) misses the data {stable.misfit_ratio:.4g} times as far"
+        f"({stable.order} poles) misses the data {_times(stable.misfit_ratio)} as far"
     )
     doubts = [] if whiteness.white else ["the residual is not noise-like"]
     if companions:
@@ -234,6 +231,10 @@ def _against_stable(c: Candidate, against: Comparison, estimation: Estimation) -
     return Evidence(
         "stable-model misfit", rise > STABLE_MODEL_RISE and stable.misfit_ratio > asked, detail
     )
+
+
+def _times(ratio: float) -> str:
+    return "more than 10000 times" if ratio > 1e4 else f"{ratio:.4g} times"
 
 
 def nearest(pole: complex, poles: ComplexArray) -> complex | None:

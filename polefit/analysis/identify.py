@@ -263,9 +263,10 @@ def _notes(prepared: Prepared, estimation: Estimation, fit: FitQuality) -> tuple
         if one.source is not None:
             notes.extend(one.source.assumptions)
     if not fit.residual_white:
+        raised = estimation.whiteness.inflation
         notes.append(
-            "the residual is not noise-like: no low order describes the data to the noise; "
-            f"variances were raised {estimation.whiteness.inflation:.3g} times"
+            "the residual is not noise-like: no low order describes the data to the noise"
+            + (f"; variances were raised {raised:.3g} times" if raised > 1.005 else "")
         )
     return tuple(dict.fromkeys(notes))
 

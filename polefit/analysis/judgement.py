@@ -266,7 +266,7 @@ def _node_views(
 def _strength(view: NodeView) -> tuple[bool, float]:
     if view.leverage is not None:
         return True, abs(view.leverage.value)
-    return False, view.share
+    return False, abs(view.residue)
 
 
 def residue_std(estimation: Estimation) -> FloatArray:
