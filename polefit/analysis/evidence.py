@@ -18,6 +18,9 @@ STABLE_MODEL_RISE = 10.8
 """Rise of χ² that speaks against every stable model (χ² with one degree, p = 0.001)."""
 COLOURED_MISFIT = 10.0
 """Where the residual is not noise-like a stable model must fit this many times worse."""
+CAPPED = 10
+"""A search that the number of points stopped at this many poles or more has not come to rest: its
+growing modes do not count. Below it, a few points may show a simple circuit."""
 GROWING_SCORE = 2.0
 """A growing mode is asked for so many times the χ² from which a pole is claimed. One whose growth
 is known to a sixth has three times that much; spare pairs that mend small errors of a model whose
@@ -195,7 +198,9 @@ def _persistence(c: Candidate, estimation: Estimation, scale: float) -> Evidence
     name = "persistence over orders"
     order = estimation.past.sections.order
     if order == estimation.solution.sections.order:
-        return Evidence(name, None, "too few points for a model of higher order")
+        reached = estimation.richest.sections.order >= CAPPED
+        too_few = "too few points for a model of higher order"
+        return Evidence(name, False if reached and c.pole.real > 0 else None, too_few)
     other = nearest(pole, estimation.past.sections.poles())
     shift = math.inf if other is None else abs(other - pole)
     if shift == 0:

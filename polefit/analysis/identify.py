@@ -178,6 +178,8 @@ def _relative(estimation: Estimation) -> tuple[FloatArray, FloatArray]:
 
 def _poor(estimation: Estimation) -> bool:
     """Tell whether the model misses the data by far more than their noise."""
+    if any(np.any(law.relative > 1) for law in estimation.laws):
+        return True  # what is called noise of a channel is larger than its model
     errors, noises = (float(np.mean(part)) for part in _relative(estimation))
     return errors > POOR_FIT**2 and noises < errors / 4
 

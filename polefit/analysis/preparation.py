@@ -8,7 +8,7 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from polefit.engine.blocks import ComplexArray
+from polefit.engine.blocks import ComplexArray, FloatArray
 from polefit.engine.estimation import Measured
 from polefit.errors import ArgumentError, DataError, NotSupportedError
 from polefit.responses import Channel, ResponseSet
@@ -16,6 +16,8 @@ from polefit.responses import Channel, ResponseSet
 FEWEST_POINTS = 8
 """Fewer points cannot tell one pair and its residue from noise with any degree of freedom left."""
 LARGEST = 1e100
+LONGEST_RUN = 30.0
+"""Most samples that are taken to share a rounding error."""
 NUMERICAL_ZERO = 1e-14
 """A transfer so much smaller than its driving points is what inverting a matrix leaves."""
 
@@ -179,15 +181,28 @@ def _measured(one: ResponseSet, scale: float) -> Measured:
         known += (one.sample_std.T**2)[:, np.newaxis, :]
     if one.precision is not None:
         first, second, polar = one.precision.rounding_std(one.values)
-        known[:, 0] += first.T**2
-        known[:, 1] += second.T**2
         if polar:
             size = np.abs(values)
             unit = values.conj() / np.where(size > 0, size, 1.0)
             turn = np.where(size > 0, unit, 1.0).astype(np.complex128)
+        change = np.gradient(values, axis=1) * (1.0 if turn is None else turn)
+        known[:, 0] += first.T**2 * _run(first.T, change.real)
+        known[:, 1] += second.T**2 * _run(second.T, change.imag)
     s: ComplexArray = np.asarray(2j * np.pi * one.frequency_hz / scale, dtype=np.complex128)
     shift = 2 * np.pi * one.frequency_rounding_std() / scale
     return Measured(s, values, known, turn, shift if np.any(shift) else None)
+
+
+def _run(rounding_std: FloatArray, change: FloatArray) -> FloatArray:
+    """Return how many neighbouring samples share one rounding error.
+
+    Where a printed number changes by less than its last digit from sample to sample, the errors
+    run together, and so many samples tell no more than one.
+    """
+    quantum = math.sqrt(12.0) * rounding_std
+    step = np.maximum(np.abs(change), 1e-290)
+    run: FloatArray = np.clip(quantum / step, 1.0, LONGEST_RUN)
+    return run
 
 
 def node_names(channels: Sequence[Channel]) -> tuple[str, ...]:

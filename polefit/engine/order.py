@@ -36,6 +36,9 @@ FIRST_ORDER = 12
 LADDER = (20, 32, 48, 72, 96)
 LARGEST_ORDER = 96
 LOOKS_WHITE = 0.01
+SMALL = 1e-3
+"""Share of the weighted data that a residual may have to be taken for noise at a glance: of sweeps
+that miss narrow modes, poor fits look white."""
 RELOCATIONS = 5
 GROWTH_TRIALS = 8
 TRIALS = 64
@@ -165,6 +168,8 @@ def _explained(blocks: Sequence[Block], solution: Solution) -> bool:
     """
     if solution.misfit < samples(blocks) - parameters(blocks, solution):
         return True
+    if solution.misfit > SMALL * sum(float(np.vdot(b.target, b.target)) for b in blocks):
+        return False
     pairs = zip(blocks, solution.parts, strict=True)
     whiteness = judge_whiteness([residual(block, solution, part) for block, part in pairs])
     return whiteness.probability > LOOKS_WHITE or whiteness.tendency < 2.0

@@ -10,7 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from polefit.engine.blocks import Block
-from polefit.engine.order import parameters, samples
+from polefit.engine.order import samples
 from polefit.engine.projection import Solution, solve
 from polefit.engine.refinement import BOUND, refine
 from polefit.engine.sections import Sections
@@ -27,11 +27,11 @@ class StableModel(NamedTuple):
     Attributes
     ----------
     misfit_ratio : float
-        Root of χ² confined over χ² free.
+        Root of χ² confined over χ² free, at the same order; the smallest over all starts.
     rise : float
-        Increase of χ² in units of the noise variance, corrected for the numbers of parameters.
+        Smallest increase of χ² in units of the noise variance.
     order : int
-        Order of the confined model.
+        Order of the confined model with the smallest increase.
     """
 
     misfit_ratio: float
@@ -89,22 +89,25 @@ def compare_with_stable(
     -------
     StableModel
     """
-    best: tuple[float, Solution] | None = None
+    rise, ratio, order = math.inf, math.inf, free.sections.order
     starts = [(reflected, free), (on_axis, free), *((reflected, one) for one in richer)]
     for number, (bring, solution) in enumerate(starts):
-        if best is not None and best[1].misfit > (FAR**3, FAR)[number > 1] * free.misfit:
+        if ratio**2 > (FAR**3, FAR)[number > 1] and number > 0:
             break  # the starts that took part already say how far off a stable model is
         sections = solution.sections.split()
+        base = free if solution is free else _again(blocks, sections, free.direct)
         spared = _spared(sections, exempt)
-        confined = _confine(blocks, bring(sections, spared), spared, free)
-        # each further parameter lowers χ² by one in the mean, whether it is needed or not
-        cost = confined.misfit / level + parameters(blocks, confined)
-        if best is None or cost < best[0]:
-            best = cost, confined
-    assert best is not None
-    rise = best[0] - free.misfit / level - parameters(blocks, free)
-    ratio = math.sqrt(best[1].misfit / max(free.misfit, 1e-300))
-    return StableModel(ratio, rise, best[1].sections.order)
+        confined = _confine(blocks, bring(sections, spared), spared, base)
+        if confined.misfit - base.misfit < rise * level:
+            rise = (confined.misfit - base.misfit) / level
+            order = confined.sections.order
+        ratio = min(ratio, math.sqrt(confined.misfit / max(base.misfit, 1e-300)))
+    return StableModel(ratio, rise, order)
+
+
+def _again(blocks: Sequence[Block], sections: Sections, direct: int) -> Solution:
+    """Return the free model of the same order, refined alike: more poles fit noise better, too."""
+    return refine(blocks, solve(blocks, sections, direct), iterations=20, tolerance=0.1)
 
 
 def _spared(sections: Sections, exempt: Sequence[complex]) -> NDArray[np.bool_]:
