@@ -33,6 +33,8 @@ from polefit.engine.whiteness import Whiteness, judge_whiteness
 
 RESHAPED = 2.0
 """Weights that change by more than this among themselves call for a new search of the order."""
+ALTERED = 1.3
+"""Weights that change by more may show what was not seen before."""
 UNCHANGED = 1.05
 """Weights that change by less leave estimates where they are, within a small part of their
 uncertainty."""
@@ -143,7 +145,7 @@ def estimate_model(
             break
         if change > RESHAPED:
             found = search(blocks, found.richest)
-        found = take_up(blocks, found)
+        found = take_up(blocks, found, complete=turn == 0 or change > ALTERED)
     solution = refine(
         blocks,
         solve(blocks, found.solution.sections, found.solution.direct),

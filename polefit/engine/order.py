@@ -40,6 +40,8 @@ SMALL = 1e-3
 """Share of the weighted data that a residual may have to be taken for noise at a glance: of sweeps
 that miss narrow modes, poor fits look white."""
 RELOCATIONS = 5
+FAR_OFF = 10.0
+"""Rise of χ² over what noise explains at which a trial counts as far from its optimum."""
 GROWTH_TRIALS = 8
 TRIALS = 64
 """Frequencies at which a further pair is tried."""
@@ -94,13 +96,13 @@ def search(blocks: Sequence[Block], start: Solution | None = None) -> Found:
     return Found(final, richest, reason)
 
 
-def take_up(blocks: Sequence[Block], found: Found) -> Found:
-    """Adapt the outcome of a search to new weights, and add what it may have missed."""
+def take_up(blocks: Sequence[Block], found: Found, *, complete: bool = True) -> Found:
+    """Adapt the outcome of a search to new weights and, if asked, add what it may have missed."""
     places = count_places(blocks)
     start = solve(blocks, found.solution.sections, found.solution.direct)
     start = refine(blocks, start, iterations=10, tolerance=0.1)
     pruned = prune(blocks, start, places)
-    grown = grow(blocks, pruned, places)
+    grown = grow(blocks, pruned, places) if complete else pruned
     settled = prune(blocks, grown, places) if grown is not pruned else pruned
     return found._replace(solution=settled)
 
@@ -151,10 +153,9 @@ def _rich_fit(blocks: Sequence[Block]) -> Solution:
             break
         extra = starting_sections(low, high, order - best.sections.order)
         richer = _vector_fit(blocks, best.sections.join(extra))
-        richer = refine(blocks, richer, iterations=5, tolerance=1.0)
         if _criterion(blocks, richer) >= _criterion(blocks, best):
             break
-        best = richer
+        best = refine(blocks, richer, iterations=5, tolerance=1.0)
     if all(few is all_ for few, all_ in zip(blocks, everything, strict=True)):
         return best
     whole = solve(everything, best.sections, best.direct)
@@ -227,10 +228,15 @@ def prune(blocks: Sequence[Block], start: Solution, places: int) -> Solution:
             take = take[:-1]
         mask = np.ones(current.sections.number, dtype=bool)
         mask[take] = False
+        allowed = _allowed(channels, places, take, current.sections.c1.size)
         trial = solve(blocks, current.sections.keep(mask), current.direct)
+        if trial.misfit - current.misfit > FAR_OFF * allowed * level:
+            # poles that must move far to stand in get there sooner by relocation
+            moved = relocate(blocks, trial.sections, trial.direct)
+            relocated = solve(blocks, moved, trial.direct)
+            trial = min(trial, relocated, key=lambda one: one.misfit)
         trial = refine(blocks, trial, iterations=10, tolerance=0.1)
         rise = (trial.misfit - current.misfit) / level
-        allowed = _allowed(channels, places, take, current.sections.c1.size)
         if rise < allowed or (take.size == 1 and glitch[take[0]]):
             current = split(blocks, trial)
             kept = np.zeros(current.sections.number, dtype=bool)
@@ -296,7 +302,8 @@ def _best_place(
     gap = np.gradient(frequencies) if frequencies.size > 1 else frequencies
     narrow, wide = (np.minimum(width * gap, 0.5 * frequencies) for width in (1.0, 4.0))
     # a growing pair turns the phase the other way: it must be tried for itself
-    poles = np.concatenate((-narrow, narrow, -wide)) + 1j * np.tile(frequencies, 3)
+    places = np.concatenate((frequencies, frequencies, frequencies[::2]))
+    poles = np.concatenate((-narrow, narrow, -wide[::2])) + 1j * places
     gain = scan(blocks, current, info, poles).gain
     at = int(np.argmax(gain))
     return complex(poles[at]), float(gain[at])
