@@ -8,6 +8,7 @@ from collections.abc import Callable, Sequence
 import numpy as np
 from threadpoolctl import ThreadpoolController
 
+from polefit.analysis.evidence import MOSTLY_NOISE
 from polefit.analysis.judgement import CLAIM_CHANCE, Judged, judge
 from polefit.analysis.preparation import Prepared, node_names, prepare
 from polefit.engine.blocks import FloatArray
@@ -212,6 +213,8 @@ def _run_verdict(judged: Judged, fit: FitQuality, poor: bool) -> tuple[Verdict, 
     inside = [mode for mode in judged.modes if mode.in_band]
     unstable = [mode for mode in inside if mode.verdict == "unstable"]
     undecided = [mode for mode in inside if mode.verdict == "undecided"]
+    if poor and fit.noise_relative > MOSTLY_NOISE:
+        return "undecided", "the data are mostly noise"
     if poor:
         return "undecided", "the model does not describe the data well enough to carry a verdict"
     if unstable:
@@ -225,7 +228,7 @@ def _run_verdict(judged: Judged, fit: FitQuality, poor: bool) -> tuple[Verdict, 
         failed = [e for e in undecided[0].evidence if e.passed is False]
         why = failed[0].detail if failed else "its growth rate cannot be told from zero"
         return "undecided", f"a mode in the band may grow: {why}"
-    if fit.noise_relative > 0.5:
+    if fit.noise_relative > MOSTLY_NOISE:
         return "undecided", "the data are mostly noise"
     return "stable", "no mode in the band grows"
 

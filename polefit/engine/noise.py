@@ -176,6 +176,6 @@ def _reweighted(squares: FloatArray, shapes: FloatArray, fixed: FloatArray) -> F
         present = np.einsum("kjn,kn->kj", shapes, (1.0 / total).sum(axis=1))
         step = wanted / present
         x = x * step
-        if np.all((np.abs(step - 1) < 1e-3) | (x < 1e-12 * excess)):
+        if np.all((np.abs(step - 1) < 5e-3) | (x < 1e-12 * excess)):
             break
     return x
