@@ -32,8 +32,8 @@ from polefit.engine.whiteness import judge_whiteness
 
 KEEP_CHANCE = 0.01
 """Chance per run that a section fitted to pure noise is kept in the model."""
-FIRST_ORDER = 12
-LADDER = (20, 32, 48, 72, 96)
+FIRST_ORDER = 20
+LADDER = (32, 48, 72, 96)
 LARGEST_ORDER = 96
 LOOKS_WHITE = 0.01
 SMALL = 1e-3
@@ -146,10 +146,10 @@ def _rich_fit(blocks: Sequence[Block]) -> Solution:
     high = max(float(block.s[-1].imag) for block in blocks)
     most = largest_order(blocks)
     start = starting_sections(low, high, min(FIRST_ORDER, most))
-    best = _vector_fit(blocks, start)
+    best = refine(blocks, _vector_fit(blocks, start), iterations=5, tolerance=1.0)
     for richer_order in LADDER:
         order = min(richer_order, most)
-        if order <= best.sections.order or (order > LADDER[0] and _explained(blocks, best)):
+        if order <= best.sections.order or _explained(blocks, best):
             break
         extra = starting_sections(low, high, order - best.sections.order)
         richer = _vector_fit(blocks, best.sections.join(extra))
@@ -163,10 +163,7 @@ def _rich_fit(blocks: Sequence[Block]) -> Solution:
 
 
 def _explained(blocks: Sequence[Block], solution: Solution) -> bool:
-    """Tell whether the residual is at the known noise or looks quite like noise.
-
-    Not asked of the first fit: a poor fit of few points may look like noise, too.
-    """
+    """Tell whether the residual is at the known noise, or small and quite like noise."""
     if solution.misfit < samples(blocks) - parameters(blocks, solution):
         return True
     if solution.misfit > SMALL * sum(float(np.vdot(b.target, b.target)) for b in blocks):
@@ -212,7 +209,7 @@ def prune(blocks: Sequence[Block], start: Solution, places: int) -> Solution:
         limit = np.where(np.arange(current.sections.number) < current.sections.c1.size, pair, real)
         level = variance_factor(blocks, current)
         info = information(current)
-        scores = section_scores(blocks, current, info)
+        scores = section_scores(blocks, current, info, least=level * min(pair, real))
         score = scores.spared / level / limit
         glitch = scores.full / level > limit
         score[kept] = np.inf

@@ -114,8 +114,13 @@ class Scores(NamedTuple):
     spared: FloatArray
 
 
-def section_scores(blocks: Sequence[Block], solution: Solution, info: Information) -> Scores:
-    """Return how much each section stands out of the noise, with and without its best samples."""
+def section_scores(
+    blocks: Sequence[Block], solution: Solution, info: Information, least: float = 0.0
+) -> Scores:
+    """Return how much each section stands out of the noise, with and without its best samples.
+
+    Samples are not looked at where the whole score is below `least` already.
+    """
     sections = solution.sections
     p, n = sections.c1.size, sections.order
     pairs = np.stack((np.arange(p), np.arange(p, 2 * p)), axis=1)
@@ -124,7 +129,7 @@ def section_scores(blocks: Sequence[Block], solution: Solution, info: Informatio
     )
     spared = full.copy()
     for index in range(p):
-        if full[index] > 0 and _narrow(blocks, sections, index):
+        if full[index] > least and _narrow(blocks, sections, index):
             spared[index] *= 1 - _concentration(blocks, solution, info, index)
     return Scores(full, spared)
 
