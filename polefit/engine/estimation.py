@@ -294,7 +294,7 @@ def go_past(blocks: Sequence[Block], solution: Solution, info: Information) -> S
     second = int(np.argmax(np.where(away, gain, -1.0)))
     richer = solution.sections.join(from_poles(poles[[first, second]]))
     return split(
-        blocks, refine(blocks, solve(blocks, richer, solution.direct), iterations=8, tolerance=0.5)
+        blocks, refine(blocks, solve(blocks, richer, solution.direct), iterations=5, tolerance=0.5)
     )
 
 

@@ -232,7 +232,7 @@ def prune(blocks: Sequence[Block], start: Solution, places: int) -> Solution:
             moved = relocate(blocks, trial.sections, trial.direct)
             relocated = solve(blocks, moved, trial.direct)
             trial = min(trial, relocated, key=lambda one: one.misfit)
-        trial = refine(blocks, trial, iterations=10, tolerance=0.1)
+        trial = refine(blocks, trial, iterations=6, tolerance=0.1)
         rise = (trial.misfit - current.misfit) / level
         if rise < allowed or (take.size == 1 and glitch[take[0]]):
             current = split(blocks, trial)
