@@ -22,6 +22,8 @@ ABSOLUTE_FLOOR = 1e-15
 FIRST_LEVEL = 1e-12
 """Relative standard deviation at the top of the quietest channel in the first fit."""
 STEPS = 60
+SMALL_GAIN = 0.01
+"""Twice the gain in log-likelihood below which no further step is taken."""
 LAW_GAIN = 8.0
 """Likelihood gain 2·Δln L that a second coefficient must bring (χ² with one degree, p = 0.005)."""
 
@@ -175,7 +177,9 @@ def _reweighted(squares: FloatArray, shapes: FloatArray, fixed: FloatArray) -> F
         wanted = np.einsum("kjn,kn->kj", shapes, (squares / total**2).sum(axis=1))
         present = np.einsum("kjn,kn->kj", shapes, (1.0 / total).sum(axis=1))
         step = wanted / present
+        # what the step brings in 2·Δln L: a coefficient that fades away need not be followed
+        gain = x * present * (step - 1) ** 2
         x = x * step
-        if np.all((np.abs(step - 1) < 5e-3) | (x < 1e-12 * excess)):
+        if gain.max() < SMALL_GAIN:
             break
     return x
