@@ -209,7 +209,7 @@ def _mode(
         natural_frequency_hz=estimates.natural_frequency_hz,
         damping_ratio=estimates.damping_ratio,
         growth_rate_per_s=estimates.growth_rate_per_s,
-        verdict=_verdict(distance, factor, evidence),
+        verdict=_verdict(distance, factor, evidence, c.in_band),
         probability_unstable=float(scipy.special.ndtr(distance)),
         significance=math.sqrt(c.score),
         in_band=c.in_band,
@@ -218,10 +218,13 @@ def _mode(
     )
 
 
-def _verdict(distance: float, factor: float, evidence: Sequence[Evidence]) -> Verdict:
+def _verdict(
+    distance: float, factor: float, evidence: Sequence[Evidence], in_band: bool
+) -> Verdict:
     if distance < -factor:
         return "stable"
-    if distance > factor and all(item.passed is not False for item in evidence):
+    # outside the band no stable model was held against it
+    if in_band and distance > factor and all(item.passed is not False for item in evidence):
         return "unstable"
     return "undecided"
 

@@ -233,7 +233,10 @@ PASSED, FAILED, UNMADE = (Evidence("test", outcome, "") for outcome in (True, Fa
     ],
 )  # fmt: skip
 def test_verdict_by_distance_and_evidence(distance, evidence, verdict):
-    assert _verdict(distance, 2.0, evidence) == verdict
+    assert _verdict(distance, 2.0, evidence, in_band=True) == verdict
+    # outside the band nothing is called unstable: no stable model was held against it
+    outside = "undecided" if verdict == "unstable" else verdict
+    assert _verdict(distance, 2.0, evidence, in_band=False) == outside
 
 
 def test_the_growing_pair_comes_first(usual):
