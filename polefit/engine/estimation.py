@@ -35,10 +35,6 @@ RESHAPED = 2.0
 """Weights that change by more than this among themselves call for a new search of the order."""
 ALTERED = 1.3
 """Weights that change by more may show what was not seen before."""
-UNCHANGED = 1.05
-"""Weights that change by less leave estimates where they are, within a small part of their
-uncertainty."""
-
 RAISES = 3
 """How often the order is raised by two pairs while the residual is not noise-like."""
 
@@ -141,11 +137,11 @@ def estimate_model(
         laws = _laws(data, blocks, found.solution)
         before, blocks = blocks, _weigh(data, laws, found.solution)
         change = _change(before, blocks)
-        if turn > 0 and change < UNCHANGED:
-            break
+        if turn > 0 and change < ALTERED:
+            break  # the refinement below is all that such a change calls for
         if change > RESHAPED:
             found = search(blocks, found.richest)
-        found = take_up(blocks, found, complete=turn == 0 or change > ALTERED)
+        found = take_up(blocks, found)
     solution = refine(
         blocks,
         solve(blocks, found.solution.sections, found.solution.direct),

@@ -96,13 +96,13 @@ def search(blocks: Sequence[Block], start: Solution | None = None) -> Found:
     return Found(final, richest, reason)
 
 
-def take_up(blocks: Sequence[Block], found: Found, *, complete: bool = True) -> Found:
-    """Adapt the outcome of a search to new weights and, if asked, add what it may have missed."""
+def take_up(blocks: Sequence[Block], found: Found) -> Found:
+    """Adapt the outcome of a search to new weights, and add what it may have missed."""
     places = count_places(blocks)
     start = solve(blocks, found.solution.sections, found.solution.direct)
     start = refine(blocks, start, iterations=10, tolerance=0.1)
     pruned = prune(blocks, start, places)
-    grown = grow(blocks, pruned, places) if complete else pruned
+    grown = grow(blocks, pruned, places)
     settled = prune(blocks, grown, places) if grown is not pruned else pruned
     return found._replace(solution=settled)
 
