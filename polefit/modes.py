@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
 from dataclasses import dataclass, field
 from typing import Any, Literal, TypeAlias
 
@@ -331,8 +330,3 @@ class Identification:
         from polefit.report.html import identification_fragment
 
         return identification_fragment(self)
-
-
-def in_node_order(names: Sequence[str]) -> tuple[str, ...]:
-    """Drop repeated names, keeping the first of each."""
-    return tuple(dict.fromkeys(names))

@@ -135,7 +135,9 @@ class ResponseSet:
         object.__setattr__(self, "frequency_hz", frequency)
         object.__setattr__(self, "values", values)
         object.__setattr__(self, "channels", channels)
-        object.__setattr__(self, "pump_hz", _as_pump(self.pump_hz))
+        if self.pump_hz is not None:
+            pump_hz = as_positive("pump_hz", self.pump_hz, "frequency; give hertz")
+            object.__setattr__(self, "pump_hz", pump_hz)
         object.__setattr__(self, "reference_ohm", _as_references(self.reference_ohm))
         if self.sample_std is not None:
             std = _frozen(self.sample_std, np.float64, "sample_std")
@@ -370,16 +372,15 @@ def _as_references(value: float | Sequence[float] | None) -> tuple[float, ...] |
     return tuple(float(r) for r in listed)
 
 
-def _as_pump(value: float | None) -> float | None:
-    if value is None:
-        return None
+def as_positive(name: str, value: Any, kind: str) -> float:
+    """Return a positive, finite number, or raise ArgumentError naming `name` and the `kind`."""
     try:
-        pump = float(value)
+        number = float(value)
     except (TypeError, ValueError):
-        pump = np.nan
-    if not 0 < pump < np.inf:
-        raise ArgumentError(f"pump_hz: {value!r} is not a positive frequency; give hertz")
-    return pump
+        number = np.nan
+    if not 0 < number < np.inf:
+        raise ArgumentError(f"{name}: {value!r} is not a positive {kind}")
+    return number
 
 
 def _frozen(array: Any, dtype: Any, name: str) -> Any:

@@ -36,10 +36,10 @@ describes: passive resonators, distorted by drive or behind unmodelled lines, we
 with several companions, 4.5 with a coloured residual and 19 with both."""
 COMPANION_WIDTHS = 3.0
 """How many half-widths apart two modes may lie to count as one resonance curve ..."""
-COMPARABLE = 0.3
-"""Within one half-width a mode this much weaker counts like a stronger one: the two may cancel."""
 COMPANION_RATIO = 5.0
 """... and how many times wider the other may be."""
+COMPARABLE = 0.3
+"""Within one half-width a mode this much weaker counts like a stronger one: the two may cancel."""
 
 
 @dataclass(frozen=True)

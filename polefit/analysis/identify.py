@@ -19,6 +19,7 @@ from polefit.engine.projection import model_values
 from polefit.engine.sections import residues
 from polefit.engine.significance import threshold
 from polefit.errors import ArgumentError
+from polefit.estimates import si
 from polefit.modes import (
     Detection,
     FitQuality,
@@ -111,8 +112,9 @@ def _answer(prepared: Prepared, estimation: Estimation, confidence: float) -> Id
         estimation, prepared.scale_rad_per_s, band, channels, sets[0].quantity, confidence
     )
     model = _model(estimation, prepared.scale_rad_per_s, channels)
-    fit = _quality(prepared, estimation, judged, model)
-    verdict, reason = _run_verdict(judged, fit, _poor(estimation))
+    errors, noises = _relative(estimation)
+    fit = _quality(prepared, estimation, judged, errors, noises)
+    verdict, reason = _run_verdict(judged, fit, _poor(estimation, errors, noises))
     return Identification(
         verdict=verdict,
         reason=reason,
@@ -146,9 +148,12 @@ def _model(estimation: Estimation, scale: float, channels: tuple[Channel, ...]) 
 
 
 def _quality(
-    prepared: Prepared, estimation: Estimation, judged: Judged, model: RationalModel
+    prepared: Prepared,
+    estimation: Estimation,
+    judged: Judged,
+    errors: FloatArray,
+    noises: FloatArray,
 ) -> FitQuality:
-    errors, noises = _relative(estimation)
     stable = judged.stable_model
     return FitQuality(
         order=estimation.solution.sections.order,
@@ -177,12 +182,12 @@ def _relative(estimation: Estimation) -> tuple[FloatArray, FloatArray]:
     return np.concatenate(errors), np.concatenate(noises)
 
 
-def _poor(estimation: Estimation) -> bool:
+def _poor(estimation: Estimation, errors: FloatArray, noises: FloatArray) -> bool:
     """Tell whether the model misses the data by far more than their noise."""
     if any(np.any(law.relative > 1) for law in estimation.laws):
         return True  # what is called noise of a channel is larger than its model
-    errors, noises = (float(np.mean(part)) for part in _relative(estimation))
-    return errors > POOR_FIT**2 and noises < errors / 4
+    missed = float(np.mean(errors))
+    return missed > POOR_FIT**2 and float(np.mean(noises)) < missed / 4
 
 
 def _noise_origin(prepared: Prepared, estimation: Estimation) -> str:
@@ -279,15 +284,7 @@ def _notes(prepared: Prepared, estimation: Estimation, fit: FitQuality) -> tuple
 def _edge_notes(beyond: Sequence[complex], band: tuple[float, float]) -> list[str]:
     """Tell of growing modes that the band's edge keeps from deciding the verdict."""
     return [
-        f"a growing mode at {_hertz(pole.imag / (2 * np.pi))} lies at the edge of the band or "
-        f"beyond it ({_hertz(band[0])} to {_hertz(band[1])}) and is not judged: widen the sweep"
+        f"a growing mode at {si(pole.imag / (2 * np.pi), 'Hz')} lies at the edge of the band or "
+        f"beyond it ({si(band[0], 'Hz')} to {si(band[1], 'Hz')}) and is not judged: widen the sweep"
         for pole in beyond
     ]
-
-
-def _hertz(value: float) -> str:
-    """Return a frequency with an SI prefix."""
-    for size, prefix in ((1e12, "T"), (1e9, "G"), (1e6, "M"), (1e3, "k")):
-        if value >= size:
-            return f"{value / size:.4g} {prefix}Hz"
-    return f"{value:.4g} Hz"

@@ -7,6 +7,7 @@ the phasor, as with magnitude and angle printed to a few digits, the sample is f
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from typing import NamedTuple
 
 import numpy as np
@@ -56,6 +57,11 @@ def make_block(
     """Build a block; see :class:`Block` for the shapes."""
     bare = Block(s, values, weight, turn, np.empty((values.shape[0], 0)))
     return bare._replace(target=weighted_parts(bare, values))
+
+
+def samples(blocks: Sequence[Block]) -> int:
+    """Return the number of real samples."""
+    return sum(block.rows for block in blocks)
 
 
 def weighted(block: Block, columns: ComplexArray) -> FloatArray:

@@ -14,7 +14,13 @@ import scipy.special
 
 from polefit.engine.blocks import Block, ComplexArray, FloatArray
 from polefit.engine.projection import Solution
-from polefit.engine.significance import NARROW_STEPS, SPARED_SAMPLES, Information, scan
+from polefit.engine.significance import (
+    NARROW_STEPS,
+    Information,
+    scan,
+    step_at,
+    telling_share,
+)
 
 
 def residue_limits(
@@ -68,14 +74,12 @@ def residue_limits(
 def _concentrated(block: Block, poles: ComplexArray) -> FloatArray:
     """Share, (K, C), of the evidence for each pole that its most telling samples would carry."""
     share = np.zeros((block.channels, poles.size))
-    axis = block.s.imag
-    step = np.diff(axis)[np.clip(np.searchsorted(axis, poles.imag) - 1, 0, axis.size - 2)]
+    step = step_at(block.s.imag, poles.imag)
+    precision = np.sum(block.weight**2, axis=1)
     narrow = np.flatnonzero(2 * np.abs(poles.real) < NARROW_STEPS * step)
     for c in narrow:
         curve = 1 / np.abs(block.s - poles[c]) ** 2
-        energy = curve * np.sum(block.weight**2, axis=1)
-        top = np.partition(energy, -SPARED_SAMPLES, axis=1)[:, -SPARED_SAMPLES:]
-        share[:, c] = top.sum(axis=1) / energy.sum(axis=1)
+        share[:, c] = telling_share(curve * precision)
     return share
 
 

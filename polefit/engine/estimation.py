@@ -11,21 +11,20 @@ from typing import NamedTuple
 
 import numpy as np
 
-from polefit.engine.blocks import Block, ComplexArray, FloatArray, make_block
+from polefit.engine.blocks import Block, ComplexArray, FloatArray, make_block, samples
 from polefit.engine.noise import NoiseLaw, estimate, first_guess, variance
 from polefit.engine.order import (
     TRIALS,
     count_places,
     largest_order,
     parameters,
-    samples,
     search,
     split,
     take_up,
     trial_grid,
     variance_factor,
 )
-from polefit.engine.projection import Projected, Solution, model_values, residual, solve
+from polefit.engine.projection import Solution, model_values, residuals, solve
 from polefit.engine.refinement import refine
 from polefit.engine.sections import from_poles
 from polefit.engine.significance import Information, information, scan, section_scores
@@ -129,13 +128,15 @@ def estimate_model(
     Estimation
     """
     laws = tuple(first_guess([m.values for m in data]))
-    blocks = _weigh(data, laws, None)
+    blocks = _weigh(data, laws, _by_data(data))
     progress("searching the order")
     found = search(blocks)
     for turn in range(4):
         progress("estimating the noise")
-        laws = _laws(data, blocks, found.solution)
-        before, blocks = blocks, _weigh(data, laws, found.solution)
+        seen = _by_model(data, found.solution)
+        spent = parameters(blocks, found.solution) / sum(block.channels for block in blocks)
+        laws = tuple(_law(m, sight, spent) for m, sight in zip(data, seen, strict=True))
+        before, blocks = blocks, _weigh(data, laws, seen)
         change = _change(before, blocks)
         if turn > 0 and change < ALTERED:
             break  # the refinement below is all that such a change calls for
@@ -157,14 +158,8 @@ def estimate_model(
         blocks=blocks,
         laws=laws,
         noise=tuple(
-            level * variance(law, _size(values), _known(m, settled.solution, part))
-            for law, m, values, part in zip(
-                laws,
-                data,
-                _models(data, settled.solution),
-                settled.solution.parts,
-                strict=True,
-            )
+            level * variance(law, sight.size, sight.known)
+            for law, sight in zip(laws, _by_model(data, settled.solution), strict=True)
         ),
         solution=settled.solution,
         info=settled.info,
@@ -208,8 +203,7 @@ def _whiteness(blocks: Sequence[Block], solution: Solution) -> Whiteness:
     """Judge the residual; one well below the known noise needs no judgement."""
     if solution.misfit < BELOW * (samples(blocks) - parameters(blocks, solution)):
         return Whiteness(True, 1.0, 0.0, 1.0)
-    pairs = zip(blocks, solution.parts, strict=True)
-    return judge_whiteness([residual(block, solution, part) for block, part in pairs])
+    return judge_whiteness(residuals(blocks, solution))
 
 
 def _change(before: Sequence[Block], after: Sequence[Block]) -> float:
@@ -218,63 +212,66 @@ def _change(before: Sequence[Block], after: Sequence[Block]) -> float:
     return float(np.exp(np.std(np.concatenate([step.ravel() for step in steps]))))
 
 
-def _models(data: Sequence[Measured], solution: Solution) -> list[ComplexArray]:
-    return [model_values(m.s, solution, p) for m, p in zip(data, solution.parts, strict=True)]
+class _Sight(NamedTuple):
+    """One set of responses as the data or a model show it: values, |H|, known variance."""
+
+    values: ComplexArray
+    size: FloatArray
+    known: FloatArray
 
 
-def _size(values: ComplexArray) -> FloatArray:
-    result: FloatArray = np.abs(values)
-    return result
+def _by_data(data: Sequence[Measured]) -> list[_Sight]:
+    """Look at the responses before there is a model."""
+    seen = []
+    for m in data:
+        moved = None if m.shift is None else np.gradient(m.values, m.s.imag, axis=1) * m.shift
+        seen.append(_Sight(m.values, np.abs(m.values), _known(m, moved)))
+    return seen
 
 
-def _weigh(
-    data: Sequence[Measured], laws: Sequence[NoiseLaw], solution: Solution | None
-) -> tuple[Block, ...]:
-    """Weight by the law, at the size of the model once there is one: the data are noisy."""
-    if solution is None:
-        sizes = [_size(m.values) for m in data]
-        known = [_known(m, None, None) for m in data]
-    else:
-        sizes = [_size(values) for values in _models(data, solution)]
-        known = [_known(m, solution, p) for m, p in zip(data, solution.parts, strict=True)]
-    return tuple(
-        make_block(m.s, m.values, 1.0 / np.sqrt(variance(law, size, var)), m.turn)
-        for m, law, size, var in zip(data, laws, sizes, known, strict=True)
-    )
+def _by_model(data: Sequence[Measured], solution: Solution) -> list[_Sight]:
+    """Look at the responses through the model: the data are noisy."""
+    seen = []
+    for m, part in zip(data, solution.parts, strict=True):
+        values, moved = model_values(m.s, solution, part), None
+        if m.shift is not None:
+            above, below = m.s + 1j * m.shift, m.s - 1j * m.shift
+            moved = model_values(above, solution, part) - model_values(below, solution, part)
+            moved = moved / 2
+        seen.append(_Sight(values, np.abs(values), _known(m, moved)))
+    return seen
 
 
-def _known(m: Measured, solution: Solution | None, part: Projected | None) -> FloatArray:
-    """Return the known variance; a frequency off by δ moves the response by δ·dH/df.
+def _known(m: Measured, moved: ComplexArray | None) -> FloatArray:
+    """Return the known variance; a frequency off by δ has `moved` the response by δ·dH/df.
 
     All channels share δ: together they must tell no more than one.
     """
-    if m.shift is None:
+    if moved is None:
         return m.known
-    if solution is None or part is None:
-        moved = np.gradient(m.values, m.s.imag, axis=1) * m.shift
-    else:
-        above, below = m.s + 1j * m.shift, m.s - 1j * m.shift
-        moved = (model_values(above, solution, part) - model_values(below, solution, part)) / 2
     moved = moved * np.sqrt(len(m.values))
     moved = moved if m.turn is None else moved * m.turn
     total: FloatArray = m.known + np.stack((moved.real**2, moved.imag**2), axis=1)
     return total
 
 
-def _laws(
-    data: Sequence[Measured], blocks: Sequence[Block], solution: Solution
-) -> tuple[NoiseLaw, ...]:
-    channels = sum(m.values.shape[0] for m in data)
-    spent = parameters(blocks, solution) / channels
-    laws = []
-    models = _models(data, solution)
-    for m, model, part in zip(data, models, solution.parts, strict=True):
-        rest = m.values - model
-        if m.turn is not None:
-            rest = rest * m.turn
-        parts = np.stack((rest.real, rest.imag), axis=1)
-        laws.append(estimate(parts, _size(model), _known(m, solution, part), spent))
-    return tuple(laws)
+def _weigh(
+    data: Sequence[Measured], laws: Sequence[NoiseLaw], seen: Sequence[_Sight]
+) -> tuple[Block, ...]:
+    """Weight by the law, at the size that is seen."""
+    return tuple(
+        make_block(m.s, m.values, 1.0 / np.sqrt(variance(law, sight.size, sight.known)), m.turn)
+        for m, law, sight in zip(data, laws, seen, strict=True)
+    )
+
+
+def _law(m: Measured, sight: _Sight, spent: float) -> NoiseLaw:
+    """Estimate the law of one set from what the model leaves; `spent` freedom of each channel."""
+    rest = m.values - sight.values
+    if m.turn is not None:
+        rest = rest * m.turn
+    parts = np.stack((rest.real, rest.imag), axis=1)
+    return estimate(parts, sight.size, sight.known, spent)
 
 
 def go_past(blocks: Sequence[Block], solution: Solution, info: Information) -> Solution:

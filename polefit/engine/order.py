@@ -15,8 +15,8 @@ from typing import NamedTuple
 import numpy as np
 from numpy.typing import NDArray
 
-from polefit.engine.blocks import Block, FloatArray, sketch
-from polefit.engine.projection import Solution, residual, solve
+from polefit.engine.blocks import Block, FloatArray, samples, sketch
+from polefit.engine.projection import Solution, residuals, solve
 from polefit.engine.refinement import refine
 from polefit.engine.sections import Sections, from_poles
 from polefit.engine.significance import (
@@ -88,10 +88,11 @@ def search(blocks: Sequence[Block], start: Solution | None = None) -> Found:
         richest = _rich_fit(blocks)
     else:
         richest = refine(blocks, solve(blocks, start.sections, 2), iterations=10, tolerance=0.1)
-    final = drop_direct(blocks, prune(blocks, richest, count_places(blocks)))
+    places = count_places(blocks)
+    final = drop_direct(blocks, prune(blocks, richest, places))
     reason = (
         f"pruned from {richest.sections.order} poles; removing any further one raises the misfit "
-        f"more than noise explains (chance {KEEP_CHANCE:g} over {count_places(blocks)} places)"
+        f"more than noise explains (chance {KEEP_CHANCE:g} over {places} places)"
     )
     return Found(final, richest, reason)
 
@@ -105,11 +106,6 @@ def take_up(blocks: Sequence[Block], found: Found) -> Found:
     grown = grow(blocks, pruned, places)
     settled = prune(blocks, grown, places) if grown is not pruned else pruned
     return found._replace(solution=settled)
-
-
-def samples(blocks: Sequence[Block]) -> int:
-    """Return the number of real samples."""
-    return sum(block.rows for block in blocks)
 
 
 def parameters(blocks: Sequence[Block], solution: Solution) -> int:
@@ -168,8 +164,7 @@ def _explained(blocks: Sequence[Block], solution: Solution) -> bool:
         return True
     if solution.misfit > SMALL * sum(float(np.vdot(b.target, b.target)) for b in blocks):
         return False
-    pairs = zip(blocks, solution.parts, strict=True)
-    whiteness = judge_whiteness([residual(block, solution, part) for block, part in pairs])
+    whiteness = judge_whiteness(residuals(blocks, solution))
     return whiteness.probability > LOOKS_WHITE or whiteness.tendency < 2.0
 
 
@@ -217,15 +212,13 @@ def prune(blocks: Sequence[Block], start: Solution, places: int) -> Solution:
         weak = weak[score[weak] < 1.0]
         if weak.size == 0:
             break
-        take = weak[: max(1, min(weak.size, largest_batch))]
-        while take.size > 1:
-            allowed = _allowed(channels, places, take, current.sections.c1.size)
-            if joint_score(current, info, take.tolist()) < allowed * level:
-                break
+        take = weak[: max(1, largest_batch)]
+        allowed = _allowed(channels, places, take, current.sections.c1.size)
+        while take.size > 1 and joint_score(current, info, take.tolist()) >= allowed * level:
             take = take[:-1]
+            allowed = _allowed(channels, places, take, current.sections.c1.size)
         mask = np.ones(current.sections.number, dtype=bool)
         mask[take] = False
-        allowed = _allowed(channels, places, take, current.sections.c1.size)
         trial = solve(blocks, current.sections.keep(mask), current.direct)
         if trial.misfit - current.misfit > FAR_OFF * allowed * level:
             # poles that must move far to stand in get there sooner by relocation

@@ -210,6 +210,12 @@ def residual(block: Block, solution: Solution, part: Projected) -> FloatArray:
     return block.target - weighted_parts(block, model_values(block.s, solution, part))
 
 
+def residuals(blocks: Sequence[Block], solution: Solution) -> list[FloatArray]:
+    """Return weighted data minus model of every block."""
+    pairs = zip(blocks, solution.parts, strict=True)
+    return [residual(block, solution, part) for block, part in pairs]
+
+
 def normal_equations(solution: Solution) -> tuple[FloatArray, FloatArray]:
     """Return Fisher information JᵀJ and gradient Jᵀr of the pole parameters."""
     n = solution.sections.order

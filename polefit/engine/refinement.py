@@ -13,7 +13,7 @@ import numpy as np
 import scipy.linalg
 from numpy.typing import NDArray
 
-from polefit.engine.blocks import Block, FloatArray
+from polefit.engine.blocks import Block, FloatArray, samples
 from polefit.engine.projection import Solution, normal_equations, solve
 
 BOUND = 1e-12
@@ -52,7 +52,7 @@ def refine(
     if not np.isfinite(start.misfit):
         return start
     best = start
-    samples = sum(block.rows for block in blocks)
+    count = samples(blocks)
     damping = 1e-3
     information, gradient = normal_equations(best)
     for _ in range(iterations):
@@ -63,7 +63,7 @@ def refine(
         if not free.any():
             break
         step, expected = _damped_step(information, gradient, free, damping)
-        if expected <= tolerance * best.misfit / samples:
+        if expected <= tolerance * best.misfit / count:
             break
         moved = theta + step
         if confined is not None:

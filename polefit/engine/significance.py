@@ -25,7 +25,7 @@ from polefit.engine.blocks import (
     pulled_back,
     weighted_parts,
 )
-from polefit.engine.projection import Projected, Solution, residual
+from polefit.engine.projection import Projected, Solution, normal_equations, residual
 from polefit.engine.sections import (
     Sections,
     chain,
@@ -68,17 +68,13 @@ class Information(NamedTuple):
 
 def information(solution: Solution) -> Information:
     """Collect the Fisher information of a solution."""
-    n = solution.sections.order
-    total = np.zeros((n, n))
     linear = []
     for part in solution.parts:
         slopes, along = chain(solution.sections, part.coefficients)
-        flat = (part.inner @ slopes).reshape(part.coefficients.shape[0] * n, n)
-        total += flat.T @ flat
         identity = np.eye(part.factor.shape[1])[np.newaxis]
         inverse = cast(FloatArray, np.linalg.solve(part.factor, identity))
         linear.append(Linear(inverse, inverse @ (part.coupling @ slopes) + along))
-    return Information(total, tuple(linear))
+    return Information(normal_equations(solution)[0], tuple(linear))
 
 
 def invert(matrix: FloatArray) -> FloatArray:
@@ -183,12 +179,21 @@ def _narrow(blocks: Sequence[Block], sections: Sections, index: int) -> bool:
     if index >= sections.c1.size:
         return False
     omega = math.sqrt(max(sections.c0[index] - sections.c1[index] ** 2 / 4, 0.0))
-    steps = []
-    for block in blocks:
-        axis = block.s.imag
-        at = int(np.clip(np.searchsorted(axis, omega), 1, axis.size - 1))
-        steps.append(axis[at] - axis[at - 1])
-    return abs(float(sections.c1[index])) < NARROW_STEPS * float(min(steps))
+    step = min(float(step_at(block.s.imag, np.array([omega]))[0]) for block in blocks)
+    return abs(float(sections.c1[index])) < NARROW_STEPS * step
+
+
+def step_at(axis: FloatArray, omega: FloatArray) -> FloatArray:
+    """Return the frequency step around each `omega`; the outermost one beyond the axis."""
+    step: FloatArray = np.diff(axis)[np.clip(np.searchsorted(axis, omega) - 1, 0, axis.size - 2)]
+    return step
+
+
+def telling_share(energy: FloatArray) -> FloatArray:
+    """Return the share of the most telling samples in the sum along the last axis."""
+    top = np.partition(energy, -SPARED_SAMPLES, axis=-1)[..., -SPARED_SAMPLES:]
+    share: FloatArray = top.sum(axis=-1) / energy.sum(axis=-1)
+    return share
 
 
 def _concentration(
@@ -211,11 +216,9 @@ def _concentration(
             half = seen.shape[1] // 2
             energies.append(np.sum(seen[:, :half] ** 2 + seen[:, half:] ** 2, axis=0))
     energy = np.concatenate(energies)
-    total = float(energy.sum())
-    if not total > 0 or energy.size <= SPARED_SAMPLES:
+    if not energy.sum() > 0 or energy.size <= SPARED_SAMPLES:
         return 1.0
-    top = np.partition(energy, -SPARED_SAMPLES)[-SPARED_SAMPLES:]
-    return float(top.sum()) / total
+    return float(telling_share(energy))
 
 
 def threshold(channels: int, places: int, chance: float, columns: int = 2) -> float:

@@ -9,8 +9,7 @@ from typing import NamedTuple
 import numpy as np
 from numpy.typing import NDArray
 
-from polefit.engine.blocks import Block
-from polefit.engine.order import samples
+from polefit.engine.blocks import Block, samples
 from polefit.engine.projection import Solution, solve
 from polefit.engine.refinement import BOUND, refine
 from polefit.engine.sections import Sections
@@ -78,8 +77,8 @@ def compare_with_stable(
     free : Solution
         The free model.
     richer : sequence of Solution
-        Models of higher order, whose poles serve as further starts: a stable model may be
-        allowed more poles than the free one if it pays for them.
+        Models of higher order, whose poles serve as further starts; each confined model is
+        compared with the free one from the same start.
     level : float
         Noise variance of the weighted samples.
     exempt : sequence of complex

@@ -10,7 +10,7 @@ from typing import Any, Literal
 
 from polefit.errors import AmbiguousFileError, ArgumentError
 from polefit.precision import Printed
-from polefit.responses import QUANTITIES, Channel, ResponseSet
+from polefit.responses import QUANTITIES, Channel, ResponseSet, as_positive
 
 REFERENCE_UNKNOWN = (
     "the reference resistance of the scattering parameters is not stated; "
@@ -174,7 +174,8 @@ class ReadOptions:
             if value is not None and not (isinstance(value, str) and value.strip()):
                 raise ArgumentError(f"{name}: {value!r} is not a name; give one, or leave it out")
         if self.reference_ohm is not None:
-            object.__setattr__(self, "reference_ohm", _resistance(self.reference_ohm))
+            ohm = as_positive("reference_ohm", self.reference_ohm, "resistance; give ohms")
+            object.__setattr__(self, "reference_ohm", ohm)
 
     def refuse_unused(self, used: Iterable[str], format_name: str) -> None:
         """Raise ArgumentError for an option that has no meaning for this format."""
@@ -215,16 +216,6 @@ def named_ports(channels: Sequence[Channel], node: str, count: int) -> tuple[Cha
         )
     named = {f"port{i}": name for i, name in enumerate(names, 1)}
     return tuple(Channel(named[c.output], named[c.input]) for c in channels)
-
-
-def _resistance(value: float) -> float:
-    try:
-        ohm = float(value)
-    except (TypeError, ValueError):
-        ohm = math.nan
-    if not 0 < ohm < math.inf:
-        raise ArgumentError(f"reference_ohm: {value!r} is not a positive resistance; give ohms")
-    return ohm
 
 
 def printed_form(tokens: Sequence[str]) -> Printed | None:

@@ -34,12 +34,6 @@ CAUTIONS = (
 )
 
 
-def unit_of(quantity: str) -> str:
-    """Return the unit of a residue of this quantity."""
-    unit = UNITS.get(quantity, "")
-    return f"{unit}·rad/s" if unit else "rad/s"
-
-
 def detection_limit(result: Identification) -> str | None:
     """Say which hidden mode would have been found, for the least favourable frequency.
 

@@ -5,8 +5,9 @@ import pytest
 import scipy.signal
 from problems import POLES, RESIDUES, axis, noise, response
 
+from polefit.engine.blocks import samples
 from polefit.engine.estimation import Measured, estimate_model, freedom, go_past
-from polefit.engine.order import largest_order, parameters, samples
+from polefit.engine.order import largest_order, parameters
 from polefit.engine.sections import evaluate
 from polefit.engine.significance import information
 from polefit.precision import Precision, Printed

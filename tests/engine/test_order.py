@@ -7,6 +7,7 @@ from circuits import Circuit
 from problems import POLES, RESIDUES, axis, block, noise, response, true_sections
 
 from polefit.engine import order
+from polefit.engine.blocks import samples
 from polefit.engine.order import (
     count_places,
     drop_direct,
@@ -14,7 +15,6 @@ from polefit.engine.order import (
     largest_order,
     parameters,
     prune,
-    samples,
     search,
     split,
     take_up,
