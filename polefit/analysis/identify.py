@@ -10,6 +10,7 @@ from threadpoolctl import ThreadpoolController
 
 from polefit.analysis.evidence import MOSTLY_NOISE
 from polefit.analysis.judgement import CLAIM_CHANCE, Judged, judge
+from polefit.analysis.noise_origin import StatedNoise, noise_origin
 from polefit.analysis.preparation import Prepared, node_names, prepare
 from polefit.engine.blocks import FloatArray
 from polefit.engine.detection import residue_limits
@@ -44,6 +45,8 @@ def identify(
     *,
     band_hz: tuple[float, float] | None = None,
     confidence: float = 0.95,
+    noise_relative: float | None = None,
+    noise_absolute: float | None = None,
     progress: Callable[[str], None] | None = None,
 ) -> Identification:
     """Identify the natural modes behind frequency responses and judge their stability.
@@ -57,6 +60,10 @@ def identify(
         Use only the points from low to high, in hertz.
     confidence : float
         Confidence of the verdict over all modes in the band, between 0.5 and 1.
+    noise_relative, noise_absolute : float, optional
+        Noise to be taken as given instead of being estimated: standard deviation of a sample,
+        both parts together, over its size, or in the unit of the responses; both may be given.
+        Rounding of printed numbers and stated uncertainties of the samples come on top.
     progress : callable, optional
         Told in a few words what is being done.
 
@@ -92,10 +99,12 @@ def identify(
     """
     if not isinstance(confidence, int | float) or not 0.5 < confidence < 1:
         raise ArgumentError(f"confidence: {confidence!r} is not between 0.5 and 1; give e.g. 0.95")
+    stated = StatedNoise(noise_relative, noise_absolute)
     prepared = prepare(responses, band_hz)
+    laws = stated.laws([m.values.shape[0] for m in prepared.measured])
     with _thread_pools().limit(limits=1), np.errstate(all="ignore"):
-        estimation = estimate_model(prepared.measured, progress or (lambda _: None))
-        return _answer(prepared, estimation, confidence)
+        estimation = estimate_model(prepared.measured, progress or (lambda _: None), laws)
+        return _answer(prepared, estimation, confidence, stated)
 
 
 @functools.cache
@@ -104,7 +113,9 @@ def _thread_pools() -> ThreadpoolController:
     return ThreadpoolController()
 
 
-def _answer(prepared: Prepared, estimation: Estimation, confidence: float) -> Identification:
+def _answer(
+    prepared: Prepared, estimation: Estimation, confidence: float, stated: StatedNoise
+) -> Identification:
     sets = prepared.responses
     channels = tuple(c for one in sets for c in one.channels)
     band = (min(one.band_hz[0] for one in sets), max(one.band_hz[1] for one in sets))
@@ -113,7 +124,7 @@ def _answer(prepared: Prepared, estimation: Estimation, confidence: float) -> Id
     )
     model = _model(estimation, prepared.scale_rad_per_s, channels)
     errors, noises = _relative(estimation)
-    fit = _quality(prepared, estimation, judged, errors, noises)
+    fit = _quality(prepared, estimation, judged, errors, noises, stated)
     verdict, reason = _run_verdict(judged, fit, _poor(estimation, errors, noises))
     return Identification(
         verdict=verdict,
@@ -127,7 +138,11 @@ def _answer(prepared: Prepared, estimation: Estimation, confidence: float) -> Id
         fit=fit,
         model=model,
         detection=_detection(estimation, prepared.scale_rad_per_s),
-        notes=(*_notes(prepared, estimation, fit), *_edge_notes(judged.beyond, band)),
+        notes=(
+            *_notes(prepared, estimation, fit),
+            *_delay_notes(model),
+            *_edge_notes(judged.beyond, band),
+        ),
         noise_std=tuple(np.sqrt(v.sum(axis=1)).T for v in estimation.noise),
     )
 
@@ -138,12 +153,14 @@ def _model(estimation: Estimation, scale: float, channels: tuple[Channel, ...]) 
     coefficients = np.concatenate([part.coefficients for part in solution.parts])
     constant = coefficients[:, order]
     slope = coefficients[:, order + 1] / scale if direct > 1 else np.zeros(len(channels))
+    delays = np.concatenate(estimation.delays) / scale
     return RationalModel(
         poles=solution.sections.poles() * scale,
         residues=residues(solution.sections, coefficients) * scale,
         constant=constant,
         proportional=slope,
         channels=channels,
+        delay_s=delays if delays.any() else None,
     )
 
 
@@ -153,6 +170,7 @@ def _quality(
     judged: Judged,
     errors: FloatArray,
     noises: FloatArray,
+    stated: StatedNoise,
 ) -> FitQuality:
     stable = judged.stable_model
     return FitQuality(
@@ -160,7 +178,7 @@ def _quality(
         order_reason=estimation.reason,
         rms_relative=float(np.sqrt(np.mean(errors))),
         noise_relative=float(np.sqrt(np.median(noises))),
-        noise_origin=_noise_origin(prepared, estimation),
+        noise_origin=noise_origin(prepared, estimation, stated),
         residual_white=estimation.whiteness.white,
         stable_model_misfit=None if stable is None else stable.misfit_ratio,
     )
@@ -188,30 +206,6 @@ def _poor(estimation: Estimation, errors: FloatArray, noises: FloatArray) -> boo
         return True  # what is called noise of a channel is larger than its model
     missed = float(np.mean(errors))
     return missed > POOR_FIT**2 and float(np.mean(noises)) < missed / 4
-
-
-def _noise_origin(prepared: Prepared, estimation: Estimation) -> str:
-    terms = []
-    relative = np.concatenate([law.relative for law in estimation.laws])
-    absolute = np.concatenate([law.absolute for law in estimation.laws])
-    if np.any(relative > 0):
-        terms.append("relative")
-    if np.any(absolute > 0):
-        terms.append("absolute")
-    estimated = f"{' and '.join(terms)} noise estimated from the residual" if terms else ""
-    known = []
-    if any(one.precision is not None and _digits(one) for one in prepared.responses):
-        known.append("rounding of the printed digits")
-    if any(one.sample_std is not None for one in prepared.responses):
-        known.append("the uncertainty given with the data")
-    listed = [*known, *([estimated] if estimated else [])]
-    return "; ".join(listed) if listed else "double precision: no noise above its rounding"
-
-
-def _digits(one: ResponseSet) -> bool:
-    assert one.precision is not None
-    printed = (one.precision.first, one.precision.second)
-    return any(p.significant is not None or p.decimals is not None for p in printed)
 
 
 def _run_verdict(judged: Judged, fit: FitQuality, poor: bool) -> tuple[Verdict, str]:
@@ -279,6 +273,21 @@ def _notes(prepared: Prepared, estimation: Estimation, fit: FitQuality) -> tuple
             + (f"; variances were raised {raised:.3g} times" if raised > 1.005 else "")
         )
     return tuple(dict.fromkeys(notes))
+
+
+def _delay_notes(model: RationalModel) -> list[str]:
+    """Tell of delays that were taken out: no pole hangs on them, residues do."""
+    if model.delay_s is None:
+        return []
+    listed = ", ".join(
+        f"{si(float(delay), 's')} at {channel}"
+        for channel, delay in zip(model.channels, model.delay_s, strict=True)
+        if delay
+    )
+    return [
+        f"a delay in front of the port was estimated and taken out ({listed}); it moves no pole, "
+        "and residues are those behind it"
+    ]
 
 
 def _edge_notes(beyond: Sequence[complex], band: tuple[float, float]) -> list[str]:

@@ -13,11 +13,13 @@ M is the number of poles, K that of all channels in the order of the response se
 ``/identification/noise_std/0`` …     (N, K_i) float: standard deviation of the noise of each
                                       complex sample (optional)
 ``/identification/model``             H_k(s) = Σ residues[m, k] / (s − poles[m]) + constant[k]
-                                      + proportional[k] s, with s = 2πj f in rad/s
+                                      + proportional[k] s, with s = 2πj f in rad/s,
+                                      times exp(−s delay_s[k])
 ``…/model/poles``                     (M,) complex, rad/s; conjugates are both listed
 ``…/model/residues``                  (M, K) complex, unit of the response times rad/s
 ``…/model/constant``                  (K,) float, unit of the response
 ``…/model/proportional``              (K,) float, unit of the response per rad/s
+``…/model/delay_s``                   (K,) float, seconds: delays in front of the ports, if any
 ``…/model/channels``                  (K, 2) text: output, input
 ``/identification/detection``         group (optional): attributes ``damping_ratio``, ``power``
 ``…/detection/frequency_hz``          (L,) float
@@ -97,6 +99,8 @@ def _put_model(group: h5py.Group, model: RationalModel) -> None:
     group.create_dataset("residues", data=model.residues)
     group.create_dataset("constant", data=model.constant)
     group.create_dataset("proportional", data=model.proportional)
+    if model.delay_s is not None:
+        group.create_dataset("delay_s", data=model.delay_s)
     put_texts(group, "channels", [(c.output, c.input) for c in model.channels])
 
 
