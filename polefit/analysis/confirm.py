@@ -177,13 +177,12 @@ def _grows(sure: Sequence[Mode], asked: Range) -> str:
 
 
 def _absent(found: Sequence[Mode], asked: Range) -> tuple[str, ...]:
+    seen = "one that grows would have been found there"
     if not found:
-        what = "no mode was found"
-    else:
-        what = "1 mode was found" if len(found) == 1 else f"{len(found)} modes were found"
-        what += f" {_between(asked)}, and {'it decays' if len(found) == 1 else 'all of them decay'}"
-        return (what, "one that grows would have been found there")
-    return (f"{what} {_between(asked)}", "one that grows would have been found there")
+        return (f"no mode was found {_between(asked)}; {seen}",)
+    what = "1 mode was" if len(found) == 1 else f"{len(found)} modes were"
+    decays = "it decays" if len(found) == 1 else "all of them decay"
+    return (f"{what} found {_between(asked)}, and {decays}; {seen}",)
 
 
 def _lightest(found: Sequence[Mode]) -> list[Mode]:
@@ -272,7 +271,9 @@ def _next_points(
         wanted.append((max(asked.low_hz, low), min(asked.high_hz, high)))
     damping = DETECTION_DAMPING if view is None else view.damping_ratio
     points = {at for stretch in wanted for at in sweep(*stretch, damping)}
-    return tuple(sorted(points.union(result.next_points_hz)))
+    # what the run asks for may be about a mode elsewhere: beside a sweep of the range, too much
+    run = [at for at in result.next_points_hz if not points or start <= at <= end]
+    return tuple(sorted(points.union(run)))
 
 
 def _growing_background(result: Identification) -> list[tuple[float, str]]:

@@ -76,7 +76,7 @@ def elsewhere_warning(answer: Confirmation) -> str:
     told = [f"{lead}{part}" for part in parts if part]
     inside = [answer.identification.modes[i] for i in answer.in_range]
     edge = headline.edge_warning(answer.identification)
-    if edge and all(mode.in_band for mode in inside):
+    if edge and all(m.in_band or m.verdict == "stable" for m in inside):
         told.append(edge)
     return "; ".join(told)
 
@@ -97,10 +97,10 @@ def limit(answer: Confirmation) -> str:
         return ""
     best = view.limits[0]
     return (
-        f"a mode with damping ratio {si(view.damping_ratio, '', 2)} there would have been found "
-        f"with {phrases.percent(view.power)} probability from a peak of "
-        f"{wording.peak_text(answer.identification, best.peak)} at "
-        f"{phrases.plain(str(best.channel), 30)}"
+        f"a mode with damping ratio {si(view.damping_ratio, '', 2)} there that raises a peak above "
+        f"{wording.peak_text(answer.identification, best.peak)} at node "
+        f" {phrases.plain(str(best.channel), 30)} would have been found with "
+        f"{phrases.percent(view.power)} probability"
     )
 
 
@@ -108,8 +108,7 @@ def rows(answer: Confirmation) -> list[tuple[str, str]]:
     """Return what was asked and why the answer is as it is, as headings and sentences."""
     heading = "Open because" if answer.verdict == "undecided" else "Because"
     found = [("Prediction", f"a mode grows {prediction(answer)}: {phrases.band(answer.range_hz)}")]
-    for i, reason in enumerate(answer.reasons):
-        found.append((heading if i == 0 else "", reason))
+    found += [(heading if i == 0 else "and", one) for i, one in enumerate(answer.reasons)]
     view = answer.view
     if view is None:
         found.append(("Samples", "what the data could have shown in the range is not known"))

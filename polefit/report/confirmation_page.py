@@ -3,16 +3,21 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import replace
 from typing import Any
 
+import numpy as np
 from matplotlib.axes import Axes
 
 from polefit.confirmation import Confirmation
+from polefit.modes import Identification
 from polefit.report import confirmation, drawing, html, nodes, phrases, wording
 from polefit.report.response_plot import plot_response
 from polefit.responses import Channel
 
 _COLOURED_AS = {"confirmed": "unstable", "refuted": "stable", "undecided": "undecided"}
+_MARGIN = 1.5  # widths of the range that are drawn on both sides of it
+_FEW_POINTS = 10  # a narrower band with fewer is not worth a drawing
 
 
 def confirmation_html(answer: Confirmation) -> str:
@@ -91,7 +96,7 @@ def _channel(answer: Confirmation) -> Channel:
 
 
 def plot_range(answer: Confirmation, channel: int | str | Channel) -> tuple[Axes, Axes, Axes]:
-    """Draw one channel with the range of the prediction shaded.
+    """Draw one channel around the range of the prediction, which is shaded.
 
     Parameters
     ----------
@@ -110,9 +115,21 @@ def plot_range(answer: Confirmation, channel: int | str | Channel) -> tuple[Axes
     ArgumentError
         If there is no such channel.
     """
-    axes = plot_response(answer.identification, channel)
+    low, high = answer.range_hz
+    margin = _MARGIN * (high - low)
+    axes = plot_response(_cut(answer.identification, low - margin, high + margin), channel)
     for ax in axes:
         limits = ax.get_xlim()
-        ax.axvspan(*answer.range_hz, color=drawing.SKY, alpha=0.22, linewidth=0, zorder=0)
+        ax.axvspan(low, high, color=drawing.SKY, alpha=0.22, linewidth=0, zorder=0)
         ax.set_xlim(*limits)
     return axes
+
+
+def _cut(result: Identification, low_hz: float, high_hz: float) -> Identification:
+    """Return the result with the data of a narrower band; the whole where few would be left."""
+    keep = [(r.frequency_hz >= low_hz) & (r.frequency_hz <= high_hz) for r in result.responses]
+    if min(np.count_nonzero(kept) for kept in keep) < _FEW_POINTS:
+        return result
+    sets = tuple(r.in_band(low_hz, high_hz) for r in result.responses)
+    noise = tuple(std[kept] for std, kept in zip(result.noise_std, keep, strict=False))
+    return replace(result, responses=sets, noise_std=noise)
