@@ -39,12 +39,8 @@ def confirm(
         The predicted frequency, in hertz.
     within : float
         Half of the range relative to it: 0.1 stands for ± 10 %.
-    band_hz : (float, float), optional
-        Use only the points from low to high, in hertz.
-    confidence : float
-        Confidence of the verdict over all modes in the band, between 0.5 and 1.
-    progress : callable, optional
-        Told in a few words what is being done.
+    band_hz, confidence, progress : optional
+        As :func:`polefit.identify` takes them.
 
     Returns
     -------
@@ -54,10 +50,8 @@ def confirm(
     ------
     ArgumentError
         If the frequency or the range makes no sense, or as :func:`polefit.identify` does.
-    DataError
-        If the data cannot carry a verdict.
-    NotSupportedError
-        For return differences, loop gains and pumped circuits.
+    DataError, NotSupportedError
+        As :func:`polefit.identify` does.
 
     Notes
     -----
@@ -69,10 +63,10 @@ def confirm(
     Examples
     --------
     >>> import numpy as np, polefit
-    >>> f = np.linspace(1e6, 40e6, 201)
+    >>> f = np.linspace(1e6, 40e6, 201)  # a parallel tank of 100 pF that rings up at 15.9 MHz
     >>> s = 2j * np.pi * f
-    >>> z = s * 1e10 / (s**2 - 1e7 * s + 1e16)
-    >>> z = z * (1 + 1e-6 * np.random.default_rng(1).normal(size=201))
+    >>> noise = 1e-6 * np.random.default_rng(1).normal(size=201)
+    >>> z = s * 1e10 / (s**2 - 1e7 * s + 1e16) * (1 + noise)
     >>> data = polefit.ResponseSet.from_arrays(f, z, channels=["tank"], quantity="impedance")
     >>> polefit.confirm(data, near_hz=16e6).verdict
     'confirmed'

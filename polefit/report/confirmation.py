@@ -26,7 +26,7 @@ def short_form(answer: Confirmation) -> str:
 
 def prediction(answer: Confirmation) -> str:
     """Write the range as it was asked for."""
-    return f"near {si(answer.near_hz, 'Hz', 6)} ± {phrases.percent(answer.within)}"
+    return f"near {si(answer.near_hz, 'Hz', 6)} ± {si(100 * answer.within, '', 3)} %"
 
 
 def _confirmed(answer: Confirmation) -> str:

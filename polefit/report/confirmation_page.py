@@ -103,17 +103,12 @@ def plot_range(answer: Confirmation, channel: int | str | Channel) -> tuple[Axes
     answer : Confirmation
         The answer.
     channel : int or str or Channel
-        Index into the channels of the identification, printed name, or the channel itself.
+        Which, as :func:`polefit.report.figures.plot_response` takes it.
 
     Returns
     -------
     three matplotlib.axes.Axes
-        Magnitude, phase, residual.
-
-    Raises
-    ------
-    ArgumentError
-        If there is no such channel.
+        Magnitude, phase and residual, in a new figure.
     """
     low, high = answer.range_hz
     margin = _MARGIN * (high - low)

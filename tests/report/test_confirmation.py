@@ -95,6 +95,8 @@ def test_several_that_decay():
 
 
 def test_short_form():
+    fine = hold_against(example("stable"), checked_range(1.5e9, 0.0125))
+    assert repr(fine) == "<Confirmation: refuted; 1 mode near 1.5 GHz ± 1.25 %>"
     assert repr(answer_to("refuted")) == "<Confirmation: refuted; 1 mode near 1.5 GHz ± 10 %>"
 
 
