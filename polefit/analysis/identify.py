@@ -38,6 +38,8 @@ SUSPECT_DAMPING = 0.05
 """Modes damped less than this are listed as suspect loops (common practice)."""
 POOR_FIT = 0.2
 """A model that misses the data by this much relative to them carries no verdict."""
+POOR_REASON = "the model does not describe the data well enough to carry a verdict"
+MOSTLY_NOISE_REASON = "the data are mostly noise"
 
 
 def identify(
@@ -213,9 +215,9 @@ def _run_verdict(judged: Judged, fit: FitQuality, poor: bool) -> tuple[Verdict, 
     unstable = [mode for mode in inside if mode.verdict == "unstable"]
     undecided = [mode for mode in inside if mode.verdict == "undecided"]
     if poor and fit.noise_relative > MOSTLY_NOISE:
-        return "undecided", "the data are mostly noise"
+        return "undecided", MOSTLY_NOISE_REASON
     if poor:
-        return "undecided", "the model does not describe the data well enough to carry a verdict"
+        return "undecided", POOR_REASON
     if unstable:
         grow = (
             "1 mode in the band grows"
@@ -228,7 +230,7 @@ def _run_verdict(judged: Judged, fit: FitQuality, poor: bool) -> tuple[Verdict, 
         why = failed[0].detail if failed else "its growth rate cannot be told from zero"
         return "undecided", f"a mode in the band may grow: {why}"
     if fit.noise_relative > MOSTLY_NOISE:
-        return "undecided", "the data are mostly noise"
+        return "undecided", MOSTLY_NOISE_REASON
     return "stable", "no mode in the band grows"
 
 

@@ -26,6 +26,10 @@ M is the number of poles, K that of all channels in the order of the response se
 ``…/detection/residue``               (L, K) float: smallest residue that would have been found
 ====================================  =============================================================
 
+A confirmation is written as the identification that it rests on, with ``/confirmation`` beside it:
+attributes ``schema`` = "polefit.confirmation", ``version`` = 1, ``verdict``; and ``json``, scalar
+text, the whole answer.
+
 Complex numbers are compounds {r, i}, as h5py stores them. For example::
 
     with h5py.File("result.h5") as file:
@@ -39,8 +43,12 @@ from pathlib import Path
 from typing import TYPE_CHECKING
 
 from polefit.atomic import whole_file
+from polefit.confirmation import Confirmation
 from polefit.modes import Detection, Identification, RationalModel
 from polefit.readers.hdf5 import put_responses, put_text, put_texts
+from polefit.report.confirmation_json import SCHEMA as CONFIRMATION_SCHEMA
+from polefit.report.confirmation_json import VERSION as CONFIRMATION_VERSION
+from polefit.report.confirmation_json import confirmation_json
 from polefit.report.json import SCHEMA, identification_json
 
 if TYPE_CHECKING:
@@ -64,11 +72,39 @@ def write_identification(path: str | Path, result: Identification) -> None:
     FileError
         If the file cannot be written there.
     """
+    _write(path, result, None)
+
+
+def write_confirmation(path: str | Path, answer: Confirmation) -> None:
+    """Write a confirmation with the identification and the data behind it, whole or not at all.
+
+    Parameters
+    ----------
+    path : str or pathlib.Path
+        The file to appear.
+    answer : Confirmation
+        The answer.
+
+    Raises
+    ------
+    FileError
+        If the file cannot be written there.
+    """
+    _write(path, answer.identification, answer)
+
+
+def _write(path: str | Path, result: Identification, answer: Confirmation | None) -> None:
     import h5py
 
     with whole_file(path) as temporary, h5py.File(temporary, "w") as file:
         put_responses(file, result.responses)
         _put_identification(file.create_group("identification"), result)
+        if answer is not None:
+            group = file.create_group("confirmation")
+            put_text(group, "schema", CONFIRMATION_SCHEMA)
+            group.attrs["version"] = CONFIRMATION_VERSION
+            put_text(group, "verdict", answer.verdict)
+            group.create_dataset("json", data=confirmation_json(answer), dtype=h5py.string_dtype())
 
 
 def _put_identification(group: h5py.Group, result: Identification) -> None:

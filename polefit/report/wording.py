@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Sequence
 
 import numpy as np
 
@@ -51,14 +52,15 @@ def detection_limit(result: Identification) -> str | None:
     if seen.size == 0:
         return f"{ratio} would have gone unnoticed: the data are blind to it"
     blind = peak.size - seen.size
+    highest = peak_text(result, float(seen.max()))
     text = (
-        f"{ratio} that raises a peak above {_peak(result, float(seen.max()))} at one of the nodes "
+        f"{ratio} that raises a peak above {highest} at one of the nodes "
         f"would have been found with {percent(detection.power)} probability"
     )
     return text if not blind else f"{text}, except where every node is blind (see detection)"
 
 
-def _peak(result: Identification, limit: float) -> str:
+def peak_text(result: Identification, limit: float) -> str:
     """Write a detection limit; one far below the response, of exact data, only as such."""
     typical = float(np.median([np.median(np.abs(r.values)) for r in result.responses]))
     if limit < NOISELESS * typical:
@@ -158,9 +160,8 @@ def both_frequencies(pole: complex) -> str:
     return f"{hertz(rings)}, |p|/2π {hertz(natural)}"
 
 
-def next_points(result: Identification, most: int = 12) -> tuple[str, ...]:
+def next_points(points: Sequence[float], most: int = 12) -> tuple[str, ...]:
     """Say what to simulate next; nothing where nothing is asked for."""
-    points = result.next_points_hz
     if not points:
         return ()
     count = "1 point" if len(points) == 1 else f"{len(points)} points"
