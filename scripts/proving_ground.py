@@ -32,16 +32,17 @@ QUICK = 8
 WORST = 10
 FEWEST_POLES = 2
 HEADS = (
-    ("family", 9), ("cases", 6), ("unst", 5), ("stab", 5), ("open", 5),
+    ("family", 12), ("cases", 6), ("unst", 5), ("stab", 5), ("open", 5),
     ("F-unst", 7), ("F-stab", 7), ("undec", 6), ("error", 6), ("edge", 5), ("spare", 6),
-    ("grow", 5), ("blend", 6), ("missed", 7), ("found", 6), ("cov σ", 6), ("cov f", 6), ("rms", 7),
+    ("grow", 5), ("blend", 6), ("alarm", 6), ("missed", 7), ("found", 6), ("cov σ", 6), ("cov f", 6), ("rms", 7),
     ("robust", 7), ("ms", 6), ("ratio", 6), ("worst", 6),
 )  # fmt: skip
 LEGEND = """\
 unst/stab/open: cases whose answer can be expected (a detectable mode grows; nothing grows and all
 modes are detectable or buried) or not. F-unst, F-stab: wrong verdicts. undec: undecided though the
 answer is not open. edge: unstable where a mode grows just outside the band. spare: claims without
-a mode, grow: those with σ > 0; blend: claims amid poles that cannot be resolved. missed, found:
+a mode, grow: those with σ > 0; blend: claims amid poles that cannot be resolved; alarm:
+growing claims outside the band though nothing grows. missed, found:
 detectable modes (|σ| at least 6 bounds). cov: coverage of the 95 % intervals. rms, robust: error of
 σ over its Cramér-Rao bound, and the same from the median. ms: median time. ratio, worst: time over
 one scikit-rf fit of one channel at the same order, geometric mean and largest."""
@@ -89,7 +90,7 @@ def row(name: str, found: list[Score]) -> str:
         summary.count("false_unstable"), summary.count("false_stable"), summary.count("undecided"),
         sum(s.answer.verdict == "error" for s in found), summary.count("edge"),
         summary.count("spare"), sum(c.pole.real > 0 for s in found for c in s.spare),
-        summary.count("blended"), summary.count("missed"), summary.count("hits"),
+        summary.count("blended"), summary.count("alarms"), summary.count("missed"), summary.count("hits"),
         *(_short(summary.coverage(f"{part}_covered"), 3) for part in ("growth", "angular")),
         _short(summary.rms, 2), _short(summary.robust, 2),
         f"{1e3 * times[len(times) // 2]:.0f}", _short(mean, 2), _short(worst, 1),
@@ -157,7 +158,7 @@ def as_dict(one: Score) -> dict[str, object]:
         "noise": one.case.noise, "wrong": one.wrong(), "badness": one.badness,
         "growth_errors": [h.growth_error for h in one.hits],
         "growth_covered": [h.growth_covered for h in one.hits],
-        "spare": len(one.spare), "blended": len(one.blended), "missed": len(one.missed),
+        "spare": len(one.spare), "alarms": len(one.alarms), "blended": len(one.blended), "missed": len(one.missed),
         "true_modes": [
             {"real": m.pole.real, "imag": m.pole.imag, "place": m.place,
              "detectability": m.detectability if math.isfinite(m.detectability) else None}
@@ -201,7 +202,10 @@ def main() -> None:
     if listed:
         print("\nWorst cases of polefit (--family, --seed)")
     for s in listed:
-        print(f"{s.case.family:9} {s.case.seed:6d}  {s.wrong()}")
+        print(f"{s.case.family:12} {s.case.seed:6d}  {s.wrong()}")
+    print("\nVerdicts of polefit by |σ| over its bound of what grows in the band")
+    for name, counts in Summary(tuple(everything["polefit"])).by_detectability().items():
+        print(f"{name:>14}  " + "  ".join(f"{v} {n:4d}" for v, n in counts.items()))
     if options.show:
         for s in everything["polefit"]:
             show(s)

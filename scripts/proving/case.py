@@ -20,6 +20,9 @@ BEYOND = 1.25
 DETECTABLE = 6.0
 """|σ| over its Cramér-Rao bound from which a mode can be expected to be found and judged."""
 
+SMOOTH_TERMS = 4
+"""Direct terms 1, s, s², s³ that stand for all far poles where there is no finite order."""
+
 
 @dataclass(frozen=True)
 class TrueMode:
@@ -261,7 +264,7 @@ def finished(
         family=family,
         seed=seed,
         responses=responses,
-        modes=true_modes(known, spread),
+        modes=true_modes(known, spread, SMOOTH_TERMS if exact.infinite else 2),
         noise=noise,
         circuit=exact.circuit,
         noise_relative=float(np.median(ratio)),

@@ -12,8 +12,9 @@ from pathlib import Path
 import numpy as np
 
 import polefit
-from proving.case import Case, Exact, Noise, finished, noisy_case
+from proving.case import DETECTABLE, Case, Exact, Noise, finished, noisy_case
 from proving.cramer_rao import FloatArray, Known, Spread, bounds
+from proving.distributed import distributed
 from proving.lumped import (
     Generator,
     Netlist,
@@ -190,6 +191,12 @@ def weak(seed: int) -> Case:
     """Growing or decaying tanks beside a stable host, |σ| over its bound from 0.1 to 1000."""
     g = _generator("weak", seed)
     noise, wanted = Noise(uniform_log(g, 1e-5, 1e-2)), uniform_log(g, 0.1, 1000)
+    if seed % 2 == 1 or wanted < DETECTABLE:
+        return _weak(seed, g, noise, wanted)
+    return _preferring_answers(lambda g: _weak(seed, g, noise, wanted), g)
+
+
+def _weak(seed: int, g: Generator, noise: Noise, wanted: float) -> Case:
     while True:
         netlist, drive, band = driven_amplifier(g, False)
         hz = uniform_log(g, band[0] * 1.5, band[1] * 0.8)
@@ -292,6 +299,11 @@ def _cable(seed: int, g: Generator) -> Case:
         return noisy_case("cable", seed, replace(exact, known=delayed, circuit=text), law, g)
 
 
+def lines(seed: int) -> Case:
+    """Lossy lines and transit delays; see :mod:`proving.distributed`."""
+    return _preferring_answers(lambda g: distributed(seed, g), _generator("lines", seed))
+
+
 def printed(seed: int) -> Case:
     """Numbers printed with 4, 6 or 8 digits, re/im or dB/deg, read again; little other noise."""
     return _preferring_answers(lambda g: _printed(seed, g), _generator("printed", seed))
@@ -366,6 +378,7 @@ FAMILIES: dict[str, Callable[[int], Case]] = {
     "coarse": coarse,
     "weak": weak,
     "wide": wide,
+    "distributed": lines,
     "laws": laws,
     "cable": cable,
 }

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass, field
+from itertools import pairwise
 
 import numpy as np
 from scipy.optimize import linear_sum_assignment
@@ -55,6 +56,8 @@ class Answer:
         Its words.
     claims : tuple of Claim
         Modes in the band.
+    outside : tuple of Claim
+        Modes that it mentions outside the band or at its edge; they decide nothing.
     order : int
         Of its model.
     seconds : float
@@ -64,6 +67,7 @@ class Answer:
     verdict: str
     reason: str = ""
     claims: tuple[Claim, ...] = ()
+    outside: tuple[Claim, ...] = ()
     order: int = 0
     seconds: float = 0.0
 
@@ -103,8 +107,10 @@ class Score:
         Claims where there is no true mode.
     blended : tuple of Claim
         Claims amid true poles that cannot be resolved.
+    alarms : tuple of Claim
+        Growing claims outside the band, though nothing grows there.
     missed : tuple of TrueMode
-        Detectable modes in the band that no claim meets.
+        Detectable modes in the band that no claim meets, inside or at the edge.
     hits : tuple of Hit
         The others.
     ratio : float
@@ -119,6 +125,7 @@ class Score:
     edge: bool = False
     spare: tuple[Claim, ...] = ()
     blended: tuple[Claim, ...] = ()
+    alarms: tuple[Claim, ...] = ()
     missed: tuple[TrueMode, ...] = ()
     hits: tuple[Hit, ...] = field(default=())
     ratio: float = float("nan")
@@ -135,6 +142,7 @@ class Score:
             + 1e3 * self.undecided
             + 300 * growing
             + 100 * len(self.spare)
+            + 60 * len(self.alarms)
             + 50 * len(self.missed)
             + min(worst, 99.0) * (worst > 4)
         )
@@ -151,6 +159,7 @@ class Score:
         if self.undecided:
             said.append(f"undecided (is {self.case.answer}): {self.answer.reason[:110]}")
         said += [f"spare {_claim(c)}" for c in self.spare]
+        said += [f"alarm outside the band {_claim(c)}" for c in self.alarms]
         said += [f"missed {_mode(m)}" for m in self.missed]
         worst = max((abs(h.growth_error) for h in self.hits), default=0.0)
         if worst > 4:
@@ -186,14 +195,17 @@ def score(case: Case, answer: Answer, ratio: float = float("nan")) -> Score:
     -----
     Claims and true poles are paired by optimal assignment of the distance over its allowance:
     the largest of `FAR` standard deviations, claimed or Cramér-Rao, and `SHARE`·|σ|, but
-    never above `LARGEST`·|p|. A claim left over is *blended* when a true pole that is buried or has
-    a detectability below `RESOLVED` lies within the larger of the two |σ|, or where, without a
-    finite order, it decays with a damping ratio above `SMOOTH`; else it is *spare*.
+    never above `LARGEST`·|p|. A claim left over is *blended* when a true pole lies within the larger
+    of the two |σ| that is buried, has a detectability below `RESOLVED` or a neighbour within
+    as many bounds; or where, without a finite order, the claim decays with a damping ratio above
+    `SMOOTH`. Else it is *spare*. Claims at the edge may meet modes, but are not counted as spare.
     """
-    pairs = _paired(answer.claims, case.modes)
+    claims = (*answer.claims, *answer.outside)
+    pairs = _paired(claims, case.modes)
     left = [c for i, c in enumerate(answer.claims) if i not in pairs]
+    far = [c for i, c in enumerate(claims) if i not in pairs and i >= len(answer.claims)]
     blended = tuple(c for c in left if _is_blend(c, case))
-    met = {j: answer.claims[i] for i, j in pairs.items()}
+    met = {j: claims[i] for i, j in pairs.items()}
     wanted = [
         (j, m) for j, m in enumerate(case.modes)
         if m.place == "inside" and m.detectability >= DETECTABLE
@@ -209,6 +221,7 @@ def score(case: Case, answer: Answer, ratio: float = float("nan")) -> Score:
         edge=said == "unstable" and not grows and case.growing_edge,
         spare=tuple(c for c in left if c not in blended),
         blended=blended,
+        alarms=tuple(c for c in far if c.pole.real > 0),
         missed=tuple(m for j, m in wanted if j not in met),
         hits=tuple(_hit(met[j], m) for j, m in wanted if j in met),
         ratio=ratio,
@@ -240,9 +253,20 @@ def _is_blend(claim: Claim, case: Case) -> bool:
     if case.infinite and damping > SMOOTH:
         return True
     return any(
-        m.detectability < RESOLVED
+        _unresolved(m, case.modes)
         and abs(claim.pole - m.pole) <= max(abs(m.pole.real), abs(claim.pole.real))
         for m in case.modes
+    )
+
+
+def _unresolved(mode: TrueMode, modes: Sequence[TrueMode]) -> bool:
+    """Tell whether the data leave open where a mode is, or which of two it is."""
+    if mode.detectability < RESOLVED:
+        return True
+    return any(
+        abs(mode.pole - other.pole) < RESOLVED * np.hypot(mode.growth_std, other.growth_std)
+        for other in modes
+        if other is not mode and np.isfinite(other.growth_std)
     )
 
 
@@ -257,6 +281,12 @@ def _hit(claim: Claim, mode: TrueMode) -> Hit:
         if angular is None or real
         else angular[0] <= mode.pole.imag <= angular[1],
     )
+
+
+def _growing(case: Case) -> float:
+    """Return the detectability of what grows in the band; −1 if nothing does."""
+    found = [m.detectability for m in case.modes if m.growing and m.place == "inside"]
+    return max(found, default=-1.0)
 
 
 @dataclass(frozen=True)
@@ -279,6 +309,16 @@ class Summary:
     def answers(self, kind: str) -> int:
         """Count cases by what can be expected of a verdict."""
         return sum(s.case.answer == kind for s in self.scores)
+
+    def by_detectability(self) -> dict[str, dict[str, int]]:
+        """Count verdicts by the detectability of the most detectable growing mode in the band."""
+        table: dict[str, dict[str, int]] = {}
+        for low, high in pairwise((0.0, 1.0, 3.0, 6.0, 12.0, 100.0, np.inf)):
+            inside = [s for s in self.scores if low <= _growing(s.case) < high]
+            name = f"{low:g} to {high:g}" if np.isfinite(high) else f"{low:g} and more"
+            verdicts = ("unstable", "undecided", "stable")
+            table[name] = {v: sum(s.answer.verdict == v for s in inside) for v in verdicts}
+        return table
 
     @property
     def hits(self) -> list[Hit]:

@@ -33,7 +33,8 @@ def ask_polefit(case: Case) -> Answer:
         return Answer("error", str(error), seconds=time.perf_counter() - start)
     seconds = time.perf_counter() - start
     claims = tuple(_claimed(mode) for mode in result.modes if mode.in_band)
-    return Answer(result.verdict, result.reason, claims, result.fit.order, seconds)
+    outside = tuple(_claimed(mode) for mode in result.modes if not mode.in_band)
+    return Answer(result.verdict, result.reason, claims, outside, result.fit.order, seconds)
 
 
 def _claimed(mode: Mode) -> Claim:
@@ -72,7 +73,8 @@ def ask_aaa(case: Case) -> Answer:
             )
             poles, residues = fit.poles(), fit.residues()
         claims += _face_value(poles * scale, residues * scale, case, float(np.abs(values).max()))
-    return Answer(_naive_verdict(claims), "", tuple(claims), 0, time.perf_counter() - start)
+    seconds = time.perf_counter() - start
+    return Answer(_naive_verdict(claims), claims=tuple(claims), seconds=seconds)
 
 
 def ask_fixed_order(case: Case) -> Answer:
@@ -93,7 +95,8 @@ def ask_fixed_order(case: Case) -> Answer:
     largest = np.abs(values).max(axis=1)
     size = (np.abs(residues) / largest).max(axis=1)
     claims = _face_value(poles * scale, size * scale, case, 1.0)
-    return Answer(_naive_verdict(claims), "", tuple(claims), 16, time.perf_counter() - start)
+    seconds = time.perf_counter() - start
+    return Answer(_naive_verdict(claims), claims=tuple(claims), order=FIXED_ORDER, seconds=seconds)
 
 
 def _face_value(
