@@ -21,7 +21,8 @@ from pathlib import Path
 from benchmark import skrf_fit
 from proving.case import Case
 from proving.families import FAMILIES, cases
-from proving.scoring import Score, Summary, score
+from proving.scoring import Score, score
+from proving.summary import Summary
 from proving.tools import TOOLS
 from threadpoolctl import threadpool_limits
 
@@ -34,8 +35,8 @@ FEWEST_POLES = 2
 HEADS = (
     ("family", 12), ("cases", 6), ("unst", 5), ("stab", 5), ("open", 5),
     ("F-unst", 7), ("F-stab", 7), ("undec", 6), ("error", 6), ("edge", 5), ("spare", 6),
-    ("grow", 5), ("blend", 6), ("alarm", 6), ("missed", 7), ("found", 6), ("cov σ", 6), ("cov f", 6), ("rms", 7),
-    ("robust", 7), ("ms", 6), ("ratio", 6), ("worst", 6),
+    ("grow", 5), ("blend", 6), ("alarm", 6), ("missed", 7), ("found", 6), ("cov σ", 6),
+    ("cov f", 6), ("rms", 8), ("robust", 7), ("ms", 6), ("ratio", 6), ("worst", 6),
 )  # fmt: skip
 LEGEND = """\
 unst/stab/open: cases whose answer can be expected (a detectable mode grows; nothing grows and all
@@ -84,15 +85,16 @@ def row(name: str, found: list[Score]) -> str:
     """Return one line of the table."""
     summary = Summary(tuple(found))
     mean, worst = summary.ratios
+    accuracy = summary.accuracy
     times = sorted(s.answer.seconds for s in found)
     cells = [
         name, len(found), *(summary.answers(k) for k in ("unstable", "stable", "open")),
         summary.count("false_unstable"), summary.count("false_stable"), summary.count("undecided"),
         sum(s.answer.verdict == "error" for s in found), summary.count("edge"),
         summary.count("spare"), sum(c.pole.real > 0 for s in found for c in s.spare),
-        summary.count("blended"), summary.count("alarms"), summary.count("missed"), summary.count("hits"),
-        *(_short(summary.coverage(f"{part}_covered"), 3) for part in ("growth", "angular")),
-        _short(summary.rms, 2), _short(summary.robust, 2),
+        *(summary.count(name) for name in ("blended", "alarms", "missed", "hits")),
+        *(_short(accuracy.coverage(f"{part}_covered"), 3) for part in ("growth", "angular")),
+        _short(accuracy.rms, 2), _short(accuracy.robust, 2),
         f"{1e3 * times[len(times) // 2]:.0f}", _short(mean, 2), _short(worst, 1),
     ]  # fmt: skip
     return "".join(
@@ -124,6 +126,20 @@ def table(options: argparse.Namespace, tool: str, families: list[str]) -> list[S
     if len(families) > 1:
         print(row("all", everything))
     return everything
+
+
+def details(summary: Summary) -> None:
+    """Print verdicts by detectability, and intervals and errors by damping."""
+    print("\nVerdicts of polefit by |σ| over its bound of what grows in the band")
+    for name, counts in summary.by_detectability().items():
+        print(f"{name:>16}  " + "  ".join(f"{v} {n:4d}" for v, n in counts.items()))
+    print("\nDetectable modes: coverage of σ and f, error of σ over its bound, claimed over bound")
+    print(f"{'':16}{'modes':>7}{'cov σ':>8}{'cov f':>8}{'rms':>8}{'robust':>8}{'claimed':>9}")
+    for name, accuracy in summary.by_damping().items():
+        parts = [accuracy.coverage(f"{part}_covered") for part in ("growth", "angular")]
+        cells = [*parts, accuracy.rms, accuracy.robust]
+        numbers = "".join(f"{_short(c, 2):>8}" for c in cells)
+        print(f"{name:>16}{len(accuracy.hits):7d}{numbers}{_short(accuracy.claimed, 2):>9}")
 
 
 def show(one: Score) -> None:
@@ -158,7 +174,8 @@ def as_dict(one: Score) -> dict[str, object]:
         "noise": one.case.noise, "wrong": one.wrong(), "badness": one.badness,
         "growth_errors": [h.growth_error for h in one.hits],
         "growth_covered": [h.growth_covered for h in one.hits],
-        "spare": len(one.spare), "alarms": len(one.alarms), "blended": len(one.blended), "missed": len(one.missed),
+        "spare": len(one.spare), "alarms": len(one.alarms),
+        "blended": len(one.blended), "missed": len(one.missed),
         "true_modes": [
             {"real": m.pole.real, "imag": m.pole.imag, "place": m.place,
              "detectability": m.detectability if math.isfinite(m.detectability) else None}
@@ -203,9 +220,7 @@ def main() -> None:
         print("\nWorst cases of polefit (--family, --seed)")
     for s in listed:
         print(f"{s.case.family:12} {s.case.seed:6d}  {s.wrong()}")
-    print("\nVerdicts of polefit by |σ| over its bound of what grows in the band")
-    for name, counts in Summary(tuple(everything["polefit"])).by_detectability().items():
-        print(f"{name:>14}  " + "  ".join(f"{v} {n:4d}" for v, n in counts.items()))
+    details(Summary(tuple(everything["polefit"])))
     if options.show:
         for s in everything["polefit"]:
             show(s)

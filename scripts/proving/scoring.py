@@ -4,7 +4,6 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass, field
-from itertools import pairwise
 
 import numpy as np
 from scipy.optimize import linear_sum_assignment
@@ -82,12 +81,18 @@ class Hit:
         Error over the Cramér-Rao bound; the latter NaN for real poles.
     growth_covered, angular_covered : bool or None
         Whether the 95 % interval holds the truth; None where there is none.
+    claimed : float
+        Claimed standard uncertainty of σ over its bound.
+    damping : float
+        True damping ratio.
     """
 
     growth_error: float
     angular_error: float
     growth_covered: bool | None
     angular_covered: bool | None
+    claimed: float
+    damping: float
 
 
 @dataclass(frozen=True)
@@ -195,8 +200,8 @@ def score(case: Case, answer: Answer, ratio: float = float("nan")) -> Score:
     -----
     Claims and true poles are paired by optimal assignment of the distance over its allowance:
     the largest of `FAR` standard deviations, claimed or Cramér-Rao, and `SHARE`·|σ|, but
-    never above `LARGEST`·|p|. A claim left over is *blended* when a true pole lies within the larger
-    of the two |σ| that is buried, has a detectability below `RESOLVED` or a neighbour within
+    never above `LARGEST`·|p|. A claim left over is *blended* when a true pole lies within the
+    larger of the two |σ| that is buried, has a detectability below `RESOLVED` or a neighbour within
     as many bounds; or where, without a finite order, the claim decays with a damping ratio above
     `SMOOTH`. Else it is *spare*. Claims at the edge may meet modes, but are not counted as spare.
     """
@@ -280,72 +285,6 @@ def _hit(claim: Claim, mode: TrueMode) -> Hit:
         angular_covered=None
         if angular is None or real
         else angular[0] <= mode.pole.imag <= angular[1],
+        claimed=claim.growth_std / mode.growth_std,
+        damping=mode.damping,
     )
-
-
-def _growing(case: Case) -> float:
-    """Return the detectability of what grows in the band; −1 if nothing does."""
-    found = [m.detectability for m in case.modes if m.growing and m.place == "inside"]
-    return max(found, default=-1.0)
-
-
-@dataclass(frozen=True)
-class Summary:
-    """Counts and rates over scores of one family.
-
-    Parameters
-    ----------
-    scores : tuple of Score
-        What is summed up.
-    """
-
-    scores: tuple[Score, ...]
-
-    def count(self, name: str) -> int:
-        """Add up an attribute: a truth value, or how many it holds."""
-        values = [getattr(s, name) for s in self.scores]
-        return sum(v if isinstance(v, bool) else len(v) for v in values)
-
-    def answers(self, kind: str) -> int:
-        """Count cases by what can be expected of a verdict."""
-        return sum(s.case.answer == kind for s in self.scores)
-
-    def by_detectability(self) -> dict[str, dict[str, int]]:
-        """Count verdicts by the detectability of the most detectable growing mode in the band."""
-        table: dict[str, dict[str, int]] = {}
-        for low, high in pairwise((0.0, 1.0, 3.0, 6.0, 12.0, 100.0, np.inf)):
-            inside = [s for s in self.scores if low <= _growing(s.case) < high]
-            name = f"{low:g} to {high:g}" if np.isfinite(high) else f"{low:g} and more"
-            verdicts = ("unstable", "undecided", "stable")
-            table[name] = {v: sum(s.answer.verdict == v for s in inside) for v in verdicts}
-        return table
-
-    @property
-    def hits(self) -> list[Hit]:
-        """All detectable modes that were met."""
-        return [h for s in self.scores for h in s.hits]
-
-    def coverage(self, name: str) -> float:
-        """Share of the 95 % intervals that hold the truth; NaN without any."""
-        covered = [c for h in self.hits if (c := getattr(h, name)) is not None]
-        return float(np.mean(covered)) if covered else float("nan")
-
-    @property
-    def rms(self) -> float:
-        """Root mean square error of σ over its bound."""
-        errors = [h.growth_error for h in self.hits]
-        return float(np.sqrt(np.mean(np.square(errors)))) if errors else float("nan")
-
-    @property
-    def robust(self) -> float:
-        """The same from the median: median |error| / 0.6745."""
-        errors = [abs(h.growth_error) for h in self.hits]
-        return float(np.median(errors) / 0.6745) if errors else float("nan")
-
-    @property
-    def ratios(self) -> tuple[float, float]:
-        """Geometric mean and largest of the time ratios."""
-        ratios = [s.ratio for s in self.scores if np.isfinite(s.ratio) and s.ratio > 0]
-        if not ratios:
-            return float("nan"), float("nan")
-        return float(np.exp(np.mean(np.log(ratios)))), float(max(ratios))
