@@ -270,10 +270,12 @@ def _agree(
     return bool(np.all(np.abs(left).max(axis=0) < MISMATCH * np.abs(values).max(axis=0)))
 
 
-def growing_in(netlist: Netlist, drive: float, band_hz: tuple[float, float]) -> tuple[int, int]:
+def growing_in(
+    netlist: Netlist, drive: float, band_hz: tuple[float, float], *, polish: bool = True
+) -> tuple[int, int]:
     """Count the growing modes of a circuit: those well inside a band, and all others."""
-    circuit = netlist.circuit(drive)
-    poles = np.array([p for p in circuit.poles() if p.imag >= 0 and p.real > 0])
+    found = netlist.circuit(drive).poles(polish=polish)
+    poles = np.array([p for p in found if p.imag >= 0 and p.real > 0])
     at = np.where(poles.imag > 0, poles.imag, np.abs(poles)) / (2 * np.pi) if poles.size else poles
     inside = (at.real > band_hz[0] * 1.2) & (at.real + 0.5 * np.abs(poles.real) / 6.3
                                             < band_hz[1] * 0.9)  # fmt: skip
@@ -287,8 +289,13 @@ def drive_for(
 
     Half of the drives found lie within a few percent of where a mode crosses.
     """
+
+    def fits(drive: float) -> bool:
+        inside, other = growing_in(netlist, drive, band_hz)
+        return other == 0 and (inside > 0) == unstable
+
     drives = np.geomspace(0.1, 8, 9)
-    counts = [growing_in(netlist, d, band_hz) for d in drives]
+    counts = [growing_in(netlist, d, band_hz, polish=False) for d in drives]
     wanted = [
         i for i, (inside, other) in enumerate(counts)
         if other == 0 and (inside > 0) == unstable
@@ -296,17 +303,15 @@ def drive_for(
     if not wanted:
         return None
     i = int(generator.choice(wanted))
+    if not fits(float(drives[i])):
+        return None
     near = [j for j in (i - 1, i + 1) if 0 <= j < len(drives) and j not in wanted]
     if not near or generator.random() < 0.5:
         return float(drives[i])
 
-    def fits(drive: float) -> bool:
-        inside, other = growing_in(netlist, drive, band_hz)
-        return other == 0 and (inside > 0) == unstable
-
     good, bad = _bisected(fits, float(drives[i]), float(drives[near[0]]))
     away = good * (good / bad) ** generator.uniform(0, 1)
-    away *= (good / away) ** 0 * (1 + np.sign(good - bad) * uniform_log(generator, 3e-3, 0.1))
+    away *= 1 + np.sign(good - bad) * uniform_log(generator, 3e-3, 0.1)
     return away if fits(away) else good
 
 
