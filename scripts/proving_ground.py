@@ -27,6 +27,7 @@ from proving.tools import TOOLS
 from threadpoolctl import threadpool_limits
 
 import polefit
+from polefit.atomic import write_text
 
 CASES = 40
 QUICK = 8
@@ -226,7 +227,7 @@ def main() -> None:
             show(s)
     if options.json:
         text = json.dumps({t: [as_dict(s) for s in f] for t, f in everything.items()}, indent=1)
-        options.json.write_text(text + "\n", encoding="utf-8")
+        write_text(options.json, text + "\n")
 
 
 if __name__ == "__main__":

@@ -30,6 +30,7 @@ from proving.lumped import (
 ATTEMPTS = 400
 PATIENCE, REDRAWS = 0.8, 12
 """Share of the seeds that are drawn again until the verdict is not open, and how often."""
+PUMPED = "proving.pumped"
 POINTS = (101, 201, 301, 401, 701)
 
 
@@ -364,10 +365,13 @@ def _read(text: str, exact: Exact, suffix: str) -> polefit.ResponseSet:
 
 
 def pumped(seed: int) -> Case:
-    """Periodically driven circuits: made by ``periodic.case(seed)`` where that module exists."""
-    if find_spec("periodic") is None:
-        raise LookupError("no generator of periodically driven circuits beside this one")
-    made: Case = import_module("periodic").case(seed)
+    """Periodically driven circuits, where ``proving/pumped.py`` offers ``case(seed)``.
+
+    It returns a `Case` whose responses carry ``pump_hz`` and whose modes are folded to
+    Im p between 0 and half the pump, each with its place as seen after folding;
+    ``Known(complex_coefficients=True)`` gives the bounds.
+    """
+    made: Case = import_module(PUMPED).case(seed)
     return made
 
 
@@ -382,5 +386,5 @@ FAMILIES: dict[str, Callable[[int], Case]] = {
     "laws": laws,
     "cable": cable,
 }
-if find_spec("periodic") is not None:
+if find_spec(PUMPED) is not None:
     FAMILIES["pumped"] = pumped
