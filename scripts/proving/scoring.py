@@ -94,6 +94,11 @@ class Hit:
     claimed: float
     damping: float
 
+    @property
+    def surprise(self) -> float:
+        """Error of σ over its bound or the claimed uncertainty, whichever is larger."""
+        return abs(self.growth_error) / max(self.claimed, 1.0)
+
 
 @dataclass(frozen=True)
 class Score:
@@ -138,7 +143,7 @@ class Score:
     @property
     def badness(self) -> float:
         """How bad it is: wrong verdicts first, then claims, then errors."""
-        worst = max((abs(h.growth_error) for h in self.hits), default=0.0)
+        worst = max((h.surprise for h in self.hits), default=0.0)
         growing = sum(c.pole.real > 0 for c in self.spare)
         return (
             1e6 * self.false_unstable
@@ -166,9 +171,9 @@ class Score:
         said += [f"spare {_claim(c)}" for c in self.spare]
         said += [f"alarm outside the band {_claim(c)}" for c in self.alarms]
         said += [f"missed {_mode(m)}" for m in self.missed]
-        worst = max((abs(h.growth_error) for h in self.hits), default=0.0)
+        worst = max((h.surprise for h in self.hits), default=0.0)
         if worst > 4:
-            said.append(f"σ off by {worst:.3g} bounds")
+            said.append(f"σ off by {worst:.3g} times its bound and its claimed std")
         return "; ".join(said)
 
 
