@@ -47,8 +47,8 @@ a mode, grow: those with σ > 0; blend: claims amid poles that cannot be resolve
 growing claims outside the band though nothing grows. missed, found:
 detectable modes (|σ| at least 6 bounds). cov: coverage of the 95 % intervals. rms, robust: error of
 σ over its Cramér-Rao bound, and the same from the median. ms: median time. ratio, worst: time over
-one scikit-rf fit of one channel at the same order, geometric mean and largest. Lines and delays have
-more modes than the bound can hold unknown: there it is too small for heavily damped ones."""
+one scikit-rf fit of one channel at the same order, geometric mean and largest. Lines and delays
+have more modes than the bound can hold unknown: there it is too small for heavily damped ones."""
 
 
 def judged(task: tuple[str, int, str, bool]) -> Score:
