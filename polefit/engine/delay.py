@@ -16,24 +16,34 @@ import numpy as np
 import scipy.optimize
 from numpy.typing import NDArray
 
-from polefit.engine.blocks import Block, FloatArray, make_block, samples
+from polefit.engine.blocks import Block, FloatArray, make_block, samples, sketch
 from polefit.engine.order import Found, criterion, first_model, largest_order, search
 from polefit.engine.pole_set import PoleSet
-from polefit.engine.projection import Solution, solve
+from polefit.engine.projection import Solution, residuals, solve
 from polefit.engine.refinement import refine
 from polefit.engine.sections import NONE
 from polefit.engine.weighting import Measured
+from polefit.engine.whiteness import judge_whiteness
 
 SUSPECT_TURN = 1.5 * np.pi
 """Net phase over the band, rad, from which a delay is tried: less costs a pair or two only."""
+LONG_TURN = 8 * np.pi
+"""Net phase from which the delay is sought first: without it the search would be long."""
+STAND_INS = 3
+"""Poles beyond the band or broad that a delay worth taking out would need at least."""
 UNREADABLE_STEP = 2.0
 """Typical phase step, rad, from which the turns of the phase can no longer be counted."""
 EARLIER, LATER, STEP = 21.0, 6.0, 1.5
 """Delays tried, as phase over the band in rad around the mean one: resonances delay as well."""
 REACH = 2.0
 """How far the delay is refined at the order found, in the same measure."""
-LOOK_ORDERS = (6, 12, 20)
-LOOK_POINTS = 120
+LOOK_ORDERS = (6, 10, 14, 20)
+"""Orders of the models that are tried while a delay is sought, if nothing is known ..."""
+BESIDE_CORE = (1, 3, 6)
+"""... or beside the poles that resonate in the band."""
+LOOK_POINTS = 100
+SEPARATE = 4
+"""Channels up to which each may have a delay of its own."""
 WORTH = 10.0
 """How much lower the criterion must be with the delays than without."""
 MORE_POLES, NO_MATCH = 4, 1.5
@@ -109,24 +119,45 @@ def take_out(
     """
     none = tuple(np.zeros(block.channels) for block in blocks)
     looks = [mean_delay(block) for block in blocks]
-    if not any(suspected for _, suspected in looks):
+    turn = max(look.turn for look in looks)
+    if turn < SUSPECT_TURN:
         return Delayed(data, blocks, search(blocks, kind=kind), none)
+    plain = Delayed(data, blocks, search(blocks, kind=kind), none) if turn < LONG_TURN else None
+    orders: Sequence[int] = LOOK_ORDERS
+    if plain is not None:
+        core, stand_ins = _stand_in_order(plain.found.solution.sections)
+        whiteness = judge_whiteness(residuals(blocks, plain.found.solution))
+        if stand_ins < STAND_INS and whiteness.white:
+            return plain
+        orders = tuple(core + more for more in BESIDE_CORE)
     delays = tuple(
-        find_delay(block, mean, kind) if suspected else np.zeros(block.channels)
-        for block, (mean, suspected) in zip(blocks, looks, strict=True)
+        find_delay(block, look.mean, orders, kind)
+        if look.turn > SUSPECT_TURN
+        else np.zeros(block.channels)
+        for block, look in zip(blocks, looks, strict=True)
     )
     number = sum(np.unique(delay[delay != 0]).size for delay in delays)
     moved = [turned_back(m, delay) for m, delay in zip(data, delays, strict=True)]
     with_delay = weigh(moved)
     found = search(with_delay, kind=kind)
-    order = found.solution.sections.order + MORE_POLES
-    plain = refine(blocks, first_model(blocks, order, kind=kind), iterations=5, tolerance=1.0)
-    if plain.misfit < NO_MATCH * found.solution.misfit:
-        without = search(blocks, kind=kind)
-        asked = criterion(with_delay, found.solution) + number * math.log(samples(blocks))
-        if criterion(blocks, without.solution) < asked + WORTH:
-            return Delayed(data, blocks, without, none)
+    if plain is None:
+        order = found.solution.sections.order + MORE_POLES
+        quick = refine(blocks, first_model(blocks, order, kind=kind), iterations=5, tolerance=1.0)
+        if quick.misfit > NO_MATCH * found.solution.misfit:
+            return Delayed(moved, with_delay, found, delays)
+        plain = Delayed(data, blocks, search(blocks, kind=kind), none)
+    asked = criterion(with_delay, found.solution) + number * math.log(samples(blocks))
+    if criterion(blocks, plain.found.solution) < asked + WORTH:
+        return plain
     return Delayed(moved, with_delay, found, delays)
+
+
+def _stand_in_order(sections: PoleSet) -> tuple[int, int]:
+    """Count the poles that resonate in the band, and those that could stand in for a delay."""
+    beyond, broad = _stand_ins(sections)
+    sizes = np.where(np.arange(sections.number) < sections.twofold, 2, 1)
+    stand_ins = int(np.sum(sizes[beyond | broad]))
+    return sections.order - stand_ins, stand_ins
 
 
 def polish(before: Delayed) -> Delayed:
@@ -158,17 +189,32 @@ def _polished(before: Delayed, sections: PoleSet) -> Delayed:
     return Delayed(data, tuple(blocks), before.found._replace(solution=solution), tuple(delays))
 
 
-def mean_delay(block: Block) -> tuple[FloatArray, bool]:
-    """Return the mean delay, (K,), of every channel, and whether one of them calls for a trial."""
+class Look(NamedTuple):
+    """What the phase says at a glance.
+
+    Attributes
+    ----------
+    mean : (K,) float ndarray
+        Mean delay of every channel.
+    turn : float
+        Largest net phase over the band, rad.
+    """
+
+    mean: FloatArray
+    turn: float
+
+
+def mean_delay(block: Block) -> Look:
+    """Look at the phase of every channel, as far as its turns can be counted."""
     angle = np.unwrap(np.angle(block.values), axis=1)
-    step = np.median(np.abs(np.diff(angle, axis=1)), axis=1)
-    turn = angle[:, -1] - angle[:, 0]
-    readable = step < UNREADABLE_STEP
-    suspected = bool(np.any(readable & (np.abs(turn) > SUSPECT_TURN)))
-    return np.where(readable, -turn / _width(block), 0.0), suspected
+    readable = np.median(np.abs(np.diff(angle, axis=1)), axis=1) < UNREADABLE_STEP
+    turn = np.where(readable, angle[:, -1] - angle[:, 0], 0.0)
+    return Look(-turn / _width(block), float(np.abs(turn).max()))
 
 
-def find_delay(block: Block, mean: FloatArray, kind: PoleSet = NONE) -> FloatArray:
+def find_delay(
+    block: Block, mean: FloatArray, orders: Sequence[int] = LOOK_ORDERS, kind: PoleSet = NONE
+) -> FloatArray:
     """Look for the delays with which models of low order miss the data least.
 
     Parameters
@@ -177,24 +223,33 @@ def find_delay(block: Block, mean: FloatArray, kind: PoleSet = NONE) -> FloatArr
         Data.
     mean : (K,) float ndarray
         From :func:`mean_delay`.
+    orders : sequence of int
+        Of the models that are tried.
     kind : PoleSet
         The kind of poles.
 
     Returns
     -------
     (K,) float ndarray
-        Of each channel alone or, if that serves all of them better, the same for all.
+        Of each channel alone or, if that serves all of them better, the same for all; always
+        the same where channels are many.
     """
-    thin = _thinned(block)
-    width, channels = _width(block), block.channels
-    score = functools.partial(_score, thin, kind)
-    alone = [functools.partial(_score, _only(thin, k), kind) for k in range(channels)]
+    thin, width = _thinned(block), _width(block)
+
+    def score(some: Block, delay: FloatArray) -> float:
+        return _score(some, orders, kind, np.broadcast_to(delay, some.channels))
+
+    if block.channels > SEPARATE:
+        thin = sketch(thin)
+        common = _scanned(functools.partial(score, thin), mean, width)
+        return np.full(block.channels, common)
+    alone = [functools.partial(score, _only(thin, k)) for k in range(block.channels)]
     own = np.array([_scanned(one, mean[k : k + 1], width) for k, one in enumerate(alone)])
-    if channels == 1:
+    if block.channels == 1:
         return own
-    ones = np.ones(channels)
-    common = ones * _scanned(lambda one: score(one * ones), np.append(mean, own), width)
-    return min((own, common), key=score)
+    together = functools.partial(score, thin)
+    common = _scanned(together, np.append(mean, own), width)
+    return min((own, np.full(block.channels, common)), key=together)
 
 
 def _scanned(score: Callable[[FloatArray], float], means: FloatArray, width: float) -> float:
@@ -248,12 +303,12 @@ def _only(block: Block, k: int) -> Block:
     return make_block(block.s, block.values[k : k + 1], block.weight[k : k + 1])
 
 
-def _score(block: Block, kind: PoleSet, delay: FloatArray) -> float:
+def _score(block: Block, orders: Sequence[int], kind: PoleSet, delay: FloatArray) -> float:
     """Sum the logarithms of the misfit over several orders: the right delay needs the fewest."""
     forth = np.exp(block.s * delay[:, np.newaxis])
     moved = make_block(block.s, block.values * forth, block.weight)
     total = 0.0
-    for order in LOOK_ORDERS:
+    for order in orders:
         if order > largest_order([block]):
             break
         total += math.log(max(first_model([moved], order, 2, kind).misfit, 1e-300))

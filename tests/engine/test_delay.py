@@ -4,7 +4,7 @@ import numpy as np
 import pytest
 from problems import POLES, RESIDUES, axis, block, noise, response
 
-from polefit.engine.delay import find_delay, mean_delay, turned_back, turned_block
+from polefit.engine.delay import SUSPECT_TURN, find_delay, mean_delay, turned_back, turned_block
 from polefit.engine.estimation import estimate_model
 from polefit.engine.weighting import Measured
 
@@ -28,15 +28,15 @@ def pole_errors(found):
     return [np.abs(poles - true).min() for true in POLES[:3]]  # the pairs
 
 
-@pytest.mark.parametrize(("delays", "spare"), [((9.0, 9.0), 0), ((6.0, 21.0), 2)])
+@pytest.mark.parametrize(("delays", "spare"), [((9.0, 9.0), 0), ((6.0, 21.0), 4)])
 def test_delays_are_found_and_no_pole_moves(delays, spare):
-    """Nine radians over the band, the same or not: the model needs its own poles, or two more."""
+    """Nine radians over the band, the same or not: the model needs its own poles, or four more."""
     found = estimate_model([measured(behind(delays))])
     plain = estimate_model([measured(behind((0.0, 0.0)))])
     assert plain.solution.sections.order == 7
     assert found.solution.sections.order <= 7 + spare
-    # what is left, two poles far beyond the band may stand for: a radian at most
-    assert found.delays[0] == pytest.approx(delays, abs=1.0 if spare else 0.1)
+    # what is left, poles far beyond the band may stand for: two and a half at most
+    assert found.delays[0] == pytest.approx(delays, abs=2.5 if spare else 0.1)
     # errors as without a delay: of the same size, from other noise; five times at most
     assert max(pole_errors(found)) < 5 * max(*pole_errors(plain), 1e-5)
 
@@ -51,7 +51,7 @@ def test_phase_that_poles_explain_is_no_delay():
     chain = np.prod([1 / (S**2 + 0.02 * S + w**2) for w in (0.2, 0.4, 0.6, 0.8)], axis=0)
     values = chain[np.newaxis] * (1 + noise(np.random.default_rng(6), (1, S.size), NOISE))
     one = block(S, values)
-    assert mean_delay(one)[1]
+    assert mean_delay(one).turn > SUSPECT_TURN
     found = estimate_model([measured(values)])
     assert not found.delays[0].any()
     assert found.solution.sections.order == 8
@@ -74,7 +74,7 @@ def test_a_common_delay_is_shared():
     """Three channels behind one line of nine radians are read together."""
     residues = np.concatenate((RESIDUES, RESIDUES[:, :1] * 1j), axis=1)
     one = block(S, behind((9.0,) * 3, residues=residues))
-    found = find_delay(one, mean_delay(one)[0])
+    found = find_delay(one, mean_delay(one).mean)
     assert np.ptp(found) == 0
     assert found[0] == pytest.approx(9.0, abs=0.3)
 
