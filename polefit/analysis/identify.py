@@ -8,20 +8,23 @@ from collections.abc import Callable, Sequence
 import numpy as np
 from threadpoolctl import ThreadpoolController
 
+from polefit.analysis.detection import (
+    DAMPING,
+    blind_notes,
+    checked_damping,
+    detect,
+    in_view_of,
+)
 from polefit.analysis.evidence import MOSTLY_NOISE
-from polefit.analysis.judgement import CLAIM_CHANCE, Judged, judge
+from polefit.analysis.judgement import Judged, judge
 from polefit.analysis.preparation import Prepared, node_names, prepare
 from polefit.engine.blocks import FloatArray
-from polefit.engine.detection import residue_limits
 from polefit.engine.estimation import Estimation, estimate_model
-from polefit.engine.order import trial_grid
 from polefit.engine.projection import model_values
 from polefit.engine.sections import residues
-from polefit.engine.significance import threshold
 from polefit.errors import ArgumentError
 from polefit.estimates import si
 from polefit.modes import (
-    Detection,
     FitQuality,
     Identification,
     Loop,
@@ -31,8 +34,6 @@ from polefit.modes import (
 )
 from polefit.responses import Channel, ResponseSet
 
-DETECTION_DAMPING = -0.01
-DETECTION_POWER = 0.95
 SUSPECT_DAMPING = 0.05
 """Modes damped less than this are listed as suspect loops (common practice)."""
 POOR_FIT = 0.2
@@ -44,6 +45,7 @@ def identify(
     *,
     band_hz: tuple[float, float] | None = None,
     confidence: float = 0.95,
+    detection_damping: float = DAMPING,
     progress: Callable[[str], None] | None = None,
 ) -> Identification:
     """Identify the natural modes behind frequency responses and judge their stability.
@@ -57,6 +59,9 @@ def identify(
         Use only the points from low to high, in hertz.
     confidence : float
         Confidence of the verdict over all modes in the band, between 0.5 and 1.
+    detection_damping : float
+        Damping ratio of the hidden mode for which it is told what would have gone unnoticed;
+        negative grows.
     progress : callable, optional
         Told in a few words what is being done.
 
@@ -92,10 +97,11 @@ def identify(
     """
     if not isinstance(confidence, int | float) or not 0.5 < confidence < 1:
         raise ArgumentError(f"confidence: {confidence!r} is not between 0.5 and 1; give e.g. 0.95")
+    damping = checked_damping(detection_damping)
     prepared = prepare(responses, band_hz)
     with _thread_pools().limit(limits=1), np.errstate(all="ignore"):
         estimation = estimate_model(prepared.measured, progress or (lambda _: None))
-        return _answer(prepared, estimation, confidence)
+        return _answer(prepared, estimation, confidence, damping)
 
 
 @functools.cache
@@ -104,7 +110,9 @@ def _thread_pools() -> ThreadpoolController:
     return ThreadpoolController()
 
 
-def _answer(prepared: Prepared, estimation: Estimation, confidence: float) -> Identification:
+def _answer(
+    prepared: Prepared, estimation: Estimation, confidence: float, damping: float
+) -> Identification:
     sets = prepared.responses
     channels = tuple(c for one in sets for c in one.channels)
     band = (min(one.band_hz[0] for one in sets), max(one.band_hz[1] for one in sets))
@@ -114,7 +122,10 @@ def _answer(prepared: Prepared, estimation: Estimation, confidence: float) -> Id
     model = _model(estimation, prepared.scale_rad_per_s, channels)
     errors, noises = _relative(estimation)
     fit = _quality(prepared, estimation, judged, errors, noises)
-    verdict, reason = _run_verdict(judged, fit, _poor(estimation, errors, noises))
+    detection = detect(estimation, prepared.scale_rad_per_s, channels, sets[0].quantity, damping)
+    verdict, reason = in_view_of(
+        *_run_verdict(judged, fit, _poor(estimation, errors, noises)), detection
+    )
     return Identification(
         verdict=verdict,
         reason=reason,
@@ -126,8 +137,12 @@ def _answer(prepared: Prepared, estimation: Estimation, confidence: float) -> Id
         loops=_loops(judged.modes),
         fit=fit,
         model=model,
-        detection=_detection(estimation, prepared.scale_rad_per_s),
-        notes=(*_notes(prepared, estimation, fit), *_edge_notes(judged.beyond, band)),
+        detection=detection,
+        notes=(
+            *_notes(prepared, estimation, fit),
+            *_edge_notes(judged.beyond, band),
+            *blind_notes(detection, channels),
+        ),
         noise_std=tuple(np.sqrt(v.sum(axis=1)).T for v in estimation.noise),
     )
 
@@ -245,26 +260,6 @@ def _loops(modes: Sequence[Mode]) -> tuple[Loop, ...]:
         if mode.in_band and lively:
             loops.append(Loop(index, node_names([view.channel for view in mode.nodes])))
     return tuple(loops)
-
-
-def _detection(estimation: Estimation, scale: float) -> Detection:
-    frequencies = trial_grid(estimation.blocks, 60)
-    limits = residue_limits(
-        estimation.blocks,
-        estimation.solution,
-        estimation.info,
-        frequencies,
-        damping_ratio=DETECTION_DAMPING,
-        power=DETECTION_POWER,
-        threshold=threshold(1, estimation.places, CLAIM_CHANCE),
-        level=estimation.level * estimation.whiteness.inflation,
-    )
-    return Detection(
-        frequency_hz=frequencies * scale / (2 * np.pi),
-        damping_ratio=DETECTION_DAMPING,
-        power=DETECTION_POWER,
-        residue=limits * scale,
-    )
 
 
 def _notes(prepared: Prepared, estimation: Estimation, fit: FitQuality) -> tuple[str, ...]:

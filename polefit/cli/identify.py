@@ -26,6 +26,14 @@ from polefit.errors import ArgumentError
     show_default=True,
     help="Confidence of the verdicts.",
 )
+@click.option(
+    "--detection-damping",
+    type=options.Number(-1, 1, min_open=True, max_open=True),
+    default=-0.01,
+    metavar="ZETA",
+    show_default=True,
+    help="Damping ratio of the hidden mode for which it is told what would have gone unnoticed.",
+)
 @click.option("--separately", is_flag=True, help="Each FILE is a circuit of its own.")
 @options.json_option
 @options.html_option
@@ -41,6 +49,7 @@ def identify(
     files: tuple[str, ...],
     band: tuple[float, float] | None,
     confidence: float,
+    detection_damping: float,
     separately: bool,
     json: str | None,
     html: str | None,
@@ -69,7 +78,13 @@ def identify(
         if not separately:
             groups = [[*chain.from_iterable(groups)]]
         results = [
-            identify_responses(group, band_hz=band_hz, confidence=confidence, progress=progress)
+            identify_responses(
+                group,
+                band_hz=band_hz,
+                confidence=confidence,
+                detection_damping=detection_damping,
+                progress=progress,
+            )
             for group in groups
         ]
         progress("writing the report")

@@ -102,7 +102,7 @@ def names(values: tuple[str, ...]) -> tuple[str, ...]:
 
 _API_NAMES = (
     "quantity|driven|select|node|decimal|delimiter|frequency_unit|form|angle_unit|scaling"
-    "|reference_ohm|band_hz|confidence"
+    "|reference_ohm|band_hz|confidence|detection_damping"
 )
 _VALUE = r"(?:\"([^\"]*)\"|'([^']*)')?"
 

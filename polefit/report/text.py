@@ -7,7 +7,7 @@ from collections.abc import Iterable, Sequence
 
 from polefit.estimates import si
 from polefit.modes import Identification, Mode
-from polefit.report import headline, nodes, phrases, wording
+from polefit.report import glossary, headline, nodes, phrases, wording
 
 WIDTH = 100
 _HEADINGS = ("", "", "frequency", "damping ratio", "time constant")
@@ -128,12 +128,25 @@ def _loop(result: Identification, index: int) -> list[str]:
 
 
 def _next(result: Identification) -> list[str]:
-    return [line for text in wording.next_points(result) for line in _wrapped(text, "  ", "  ")]
+    if not result.next_points_hz:
+        return []
+    lines = _wrapped(wording.next_points(result), "  ", "  ")
+    lines += textwrap.wrap(
+        wording.pasteable(result),
+        WIDTH,
+        initial_indent="    ",
+        subsequent_indent="    ",
+        break_on_hyphens=False,
+        break_long_words=False,
+    )
+    sweep = wording.as_sweep(result)
+    return [*lines, f"  evenly spaced: {sweep}"] if sweep else lines
 
 
 def _evidence(result: Identification) -> list[str]:
     suspects = {loop.mode for loop in result.loops}
     lines: list[str] = []
+    shown: list[Mode] = []
     for i, mode in enumerate(result.modes):
         if (mode.verdict == "stable" and i not in suspects) or not mode.evidence:
             continue
@@ -141,6 +154,12 @@ def _evidence(result: Identification) -> list[str]:
         for test in mode.evidence:
             sentence = wording.evidence_sentence(test.name, test.passed, test.detail)
             lines.extend(_wrapped(sentence, "    ", "      "))
+        shown.append(mode)
+    meaning = glossary.explained(shown)
+    if meaning:
+        lines.append("  What they ask")
+    for name, asks in meaning:
+        lines.extend(_wrapped(f"{name}: {asks}", "    ", "      "))
     return lines
 
 
