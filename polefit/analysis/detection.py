@@ -163,9 +163,13 @@ def stretches(edges: FloatArray, chosen: NDArray[Any]) -> tuple[Stretch, ...]:
     """
     change = np.diff(np.concatenate(([False], chosen, [False])).astype(int))
     begin, end = np.flatnonzero(change == 1), np.flatnonzero(change == -1)
-    return tuple(
-        (float(edges[i, 0]), float(edges[j - 1, 1])) for i, j in zip(begin, end, strict=True)
-    )
+    ends = zip(edges[begin, 0], edges[end - 1, 1], strict=True)
+    return tuple((_tidy(low), _tidy(high)) for low, high in ends)
+
+
+def _tidy(frequency: float) -> float:
+    """Undo the rounding that the change of units left."""
+    return float(f"{frequency:.13g}")
 
 
 def in_view_of(verdict: Verdict, reason: str, detection: Detection | None) -> tuple[Verdict, str]:

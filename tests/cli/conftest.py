@@ -20,7 +20,7 @@ class Session:
 
     def __init__(self, capsys):
         self.verdict = "stable"
-        self.read, self.identified, self.saved = [], [], []
+        self.read, self.identified, self.saved, self.damping = [], [], [], []
         self.capsys = capsys
         self.error = None
 
@@ -48,10 +48,13 @@ def polefit_command(monkeypatch, capsys):
         session.read.append((str(file), options))
         return (f"responses of {file}",)
 
-    def identify(responses, *, band_hz=None, confidence=0.95, progress=None):
+    def identify(
+        responses, *, band_hz=None, confidence=0.95, detection_damping=-0.01, progress=None
+    ):
         if session.error is not None:
             raise session.error
         session.identified.append((responses, band_hz, confidence))
+        session.damping.append(detection_damping)
         progress("fitting")
         return session.answer()
 

@@ -147,6 +147,12 @@ def test_band_and_confidence_reach_the_engine(polefit_command):
     assert polefit_command.identified[-1][1:] == (None, 0.95)
 
 
+def test_detection_damping_reaches_the_engine(polefit_command):
+    polefit_command("identify", "a", "--detection-damping", "-0.002")
+    polefit_command("identify", "a")
+    assert polefit_command.damping == [-0.002, -0.01]
+
+
 @pytest.mark.parametrize(
     ("text", "hertz"),
     [
@@ -197,6 +203,7 @@ def test_name_lists():
         (["identify", "a", "--band", "1Gz", "2GHz"], "is not a frequency"),
         (["identify", "a", "--confidence", "1.5"], "--confidence"),
         (["identify", "a", "--confidence", "0.5"], "not in the range 0.5<x<1"),
+        (["identify", "a", "--detection-damping", "-1"], "not in the range -1<x<1"),
         (["identify", "a", "--quantity", "loop-gain"], "'loop-gain' is not one of 'impedance'"),
         (["identify", "a", "--figure-format", "svg"], "give --figures DIR, too"),
         (["identify", "a", "--json", "--html", "x.html"], "'--html' would be its path"),

@@ -106,7 +106,7 @@ def needed_of(share, limit=LIMIT, power=POWER):
     return _needed(plain, 2, np.array([[share]]), np.array([2.0 * S.size - 9]))[0, 0]
 
 
-@pytest.mark.parametrize("share", [1.0, 0.5, 0.2])
+@pytest.mark.parametrize("share", [1.0, 0.5, 0.3])
 def test_needed_evidence_passes_against_the_noise_that_it_raises(share):
     """λ raises the level by 1 + λ/n, and what is left of the score must still pass."""
     plain, own = noncentrality(LIMIT, 2, POWER), 290.0
