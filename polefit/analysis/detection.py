@@ -36,6 +36,8 @@ BLIND = 1.0
 one would be among the largest things to be seen there, and still be missed."""
 AROUND = 1.1
 """Up to this factor in frequency the response belongs to the surroundings of a mode."""
+LOOKED_AT = 15
+"""Samples of the surroundings that are looked at."""
 MOST_BLIND = 0.5
 """Share of blind samples above which nothing can be said of the band as a whole."""
 FEW = 4
@@ -139,11 +141,12 @@ def _surroundings(estimation: Estimation, omega: FloatArray) -> FloatArray:
         size = np.abs(model_values(block.s, estimation.solution, part))
         at = np.abs(model_values(s, estimation.solution, part))
         low = np.searchsorted(axis, omega / AROUND)
-        high = np.searchsorted(axis, omega * AROUND)
+        high = np.searchsorted(axis, omega * AROUND) - 1
         middle = np.clip(np.searchsorted(axis, omega), 1, axis.size - 1)
-        low, high = np.minimum(low, middle - 1), np.maximum(high, middle + 1)
-        near = [np.median(size[:, i:j], axis=1) for i, j in zip(low, high, strict=True)]
-        columns.append(np.maximum(at.T, np.array(near)))
+        low, high = np.minimum(low, middle - 1), np.maximum(high, middle)
+        picked = np.linspace(low, high, LOOKED_AT).round().astype(int)
+        near = np.median(size[:, picked], axis=1)
+        columns.append(np.maximum(at, near).T)
     return np.concatenate(columns, axis=1)
 
 

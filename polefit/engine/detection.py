@@ -28,6 +28,8 @@ from polefit.engine.significance import (
 MASKED = 3.0
 """Factor by which a narrow pair may raise the noise level against which it is judged. The first
 fit takes its weights from differences: they do not see it, but were seen to be off by 2.5."""
+AT_ONCE = 100_000
+"""Samples of all curves that are worked on together."""
 LEAST_CAUGHT = 0.03
 """What a scan shows even of a pair between samples, which takes hold of one of them at least."""
 ALIKE = 2.0
@@ -182,9 +184,11 @@ def _concentrated(block: Block, poles: ComplexArray) -> FloatArray:
     step = step_at(block.s.imag, poles.imag)
     precision = np.sum(block.weight**2, axis=1)
     narrow = np.flatnonzero(2 * np.abs(poles.real) < NARROW_STEPS * step)
-    for c in narrow:
-        curve = 1 / np.abs(block.s - poles[c]) ** 2
-        share[:, c] = telling_share(curve * precision)
+    several = max(1, AT_ONCE // precision.size)
+    for start in range(0, narrow.size, several):
+        some = narrow[start : start + several]
+        curve = 1 / np.abs(block.s - poles[some, np.newaxis]) ** 2
+        share[:, some] = telling_share(curve * precision[:, np.newaxis])
     return share
 
 
