@@ -13,6 +13,7 @@ __version__ = "0.1.0"
 _HOME = {
     "ArgumentError": "polefit.errors",
     "Channel": "polefit.responses",
+    "Confirmation": "polefit.confirmation",
     "DataError": "polefit.errors",
     "Estimate": "polefit.estimates",
     "FileError": "polefit.errors",
@@ -20,6 +21,7 @@ _HOME = {
     "NotSupportedError": "polefit.errors",
     "PolefitError": "polefit.errors",
     "ResponseSet": "polefit.responses",
+    "confirm": "polefit.analysis.confirm",
     "identify": "polefit.analysis.identify",
     "read": "polefit.readers",
     "read_all": "polefit.readers",
@@ -28,6 +30,7 @@ _HOME = {
 __all__ = [
     "ArgumentError",
     "Channel",
+    "Confirmation",
     "DataError",
     "Estimate",
     "FileError",
@@ -36,6 +39,7 @@ __all__ = [
     "PolefitError",
     "ResponseSet",
     "__version__",
+    "confirm",
     "identify",
     "read",
     "read_all",
@@ -43,7 +47,9 @@ __all__ = [
 ]
 
 if TYPE_CHECKING:
+    from polefit.analysis.confirm import confirm
     from polefit.analysis.identify import identify
+    from polefit.confirmation import Confirmation
     from polefit.errors import (
         ArgumentError,
         DataError,

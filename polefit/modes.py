@@ -173,7 +173,7 @@ class FitQuality:
 
 @dataclass(frozen=True, eq=False)
 class RationalModel:
-    """H_k(s) = Σ_i residues[i, k] / (s − poles[i]) + constant[k] + proportional[k] · s.
+    """H_k(s) = (Σ_i residues[i, k] / (s − poles[i]) + constant[k] + proportional[k]·s)·delay_k(s).
 
     Parameters
     ----------
@@ -185,6 +185,8 @@ class RationalModel:
         Direct terms.
     channels : tuple of Channel
         The K channels.
+    delay_s : (K,) float ndarray, optional
+        Delays in front of the ports, delay_k(s) = exp(−s·delay_s[k]); none by default.
     """
 
     poles: NDArray[np.complex128]
@@ -192,6 +194,7 @@ class RationalModel:
     constant: NDArray[np.float64]
     proportional: NDArray[np.float64]
     channels: tuple[Channel, ...]
+    delay_s: NDArray[np.float64] | None = None
 
     def response(self, frequency_hz: NDArray[np.float64]) -> NDArray[np.complex128]:
         """Evaluate the model.
@@ -208,6 +211,8 @@ class RationalModel:
         s = 2j * np.pi * np.asarray(frequency_hz, dtype=np.float64)
         total: NDArray[np.complex128] = (1.0 / (s[:, np.newaxis] - self.poles)) @ self.residues
         total += self.constant + s[:, np.newaxis] * self.proportional
+        if self.delay_s is not None:
+            total *= np.exp(-s[:, np.newaxis] * self.delay_s)
         return total
 
 

@@ -119,8 +119,13 @@ class Circuit:
         """Driving-point impedances at `nodes`, (N, K), in ohm."""
         return self.impedances(frequency_hz, [(n, n) for n in nodes])
 
-    def poles(self) -> ComplexArray:
+    def poles(self, *, polish: bool = True) -> ComplexArray:
         """Natural frequencies in rad/s: finite s with det(G + s C) = 0, slowest first.
+
+        Parameters
+        ----------
+        polish : bool
+            Whether to refine each; several times quicker without.
 
         Notes
         -----
@@ -139,7 +144,8 @@ class Circuit:
             found = scale * alpha[finite] / beta[finite]
             if np.any(found != 0):
                 scale = float(np.exp(np.mean(np.log(np.abs(found[found != 0])))))
-        polished = np.array([self._polish(p) for p in found if p.imag >= 0])
+        upper = [p for p in found if p.imag >= 0]
+        polished = np.array([self._polish(p) for p in upper] if polish else upper)
         paired = np.concatenate([polished, polished[polished.imag > 0].conj()])
         return paired[np.lexsort((paired.imag, np.abs(paired)))]
 

@@ -22,7 +22,17 @@ TOP_LEVEL = {"README.md", "DEVELOPERS.md", "LICENSE", "pyproject.toml", "polefit
 
 # Layers from the bottom up; a module may import its own layer and those below.
 LAYERS = (
-    {"errors", "atomic", "channels", "estimates", "precision", "responses", "conversions", "modes"},
+    {
+        "errors",
+        "atomic",
+        "channels",
+        "estimates",
+        "precision",
+        "responses",
+        "conversions",
+        "modes",
+        "confirmation",
+    },
     {"engine", "readers", "datasets"},
     {"analysis"},
     {"report"},
@@ -32,7 +42,7 @@ LAYERS = (
 # The engine knows no file, no screen and no user; of the layer below it takes plain data types.
 ENGINE_MAY_IMPORT = {"engine", "channels", "errors", "estimates", "precision", "responses"}
 # Result types delegate their printing; report is then imported inside the method.
-LAZY_EXCEPTIONS = {"modes"}
+LAZY_EXCEPTIONS = {"modes", "confirmation"}
 
 
 def layer(part):

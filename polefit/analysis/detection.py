@@ -15,6 +15,7 @@ from numpy.typing import NDArray
 
 from polefit.analysis.judgement import claim_limit
 from polefit.engine.blocks import FloatArray
+from polefit.engine.dependence import set_apart
 from polefit.engine.detection import Trials, residue_limits, trial_cells
 from polefit.engine.estimation import Estimation
 from polefit.engine.projection import model_values
@@ -118,10 +119,11 @@ def _limits(estimation: Estimation, trials: Trials, damping_ratio: float) -> Flo
     """Limits in each cell, (M, K), for the worse of a sample and the middle of a step."""
     narrow = 2 * abs(damping_ratio) * trials.between < NARROW * trials.step
     count = trials.between.size
+    solution, info = set_apart(estimation.blocks, estimation.solution)
     limits = residue_limits(
         estimation.blocks,
-        estimation.solution,
-        estimation.info,
+        solution,
+        info,
         np.concatenate((trials.between, trials.sample[narrow])),
         damping_ratio=damping_ratio,
         power=POWER,
@@ -175,6 +177,11 @@ def _tidy(frequency: float) -> float:
     return float(f"{frequency:.13g}")
 
 
+def mostly_blind(detection: Detection | None) -> bool:
+    """Tell whether too little of the band was judged to say anything of it as a whole."""
+    return detection is None or detection.blind_share > MOST_BLIND
+
+
 def in_view_of(verdict: Verdict, reason: str, detection: Detection | None) -> tuple[Verdict, str]:
     """Return what may be said in view of what would have gone unnoticed.
 
@@ -190,10 +197,10 @@ def in_view_of(verdict: Verdict, reason: str, detection: Detection | None) -> tu
         return "undecided", "too few points to say which mode would have been found"
     if not detection.blind_everywhere_hz:
         return verdict, reason
-    where = _named(detection.blind_everywhere_hz)
-    if detection.blind_share > MOST_BLIND:
+    where = named(detection.blind_everywhere_hz)
+    if mostly_blind(detection):
         return "undecided", (
-            f"every node is blind to a mode with {_ratio(detection)} at "
+            f"every node is blind to a mode with {named_ratio(detection)} at "
             f"{100 * detection.blind_share:.0f} % of the samples ({where})"
         )
     return verdict, f"{reason}, except in the blind stretches, which are not judged: {where}"
@@ -204,15 +211,15 @@ def blind_notes(detection: Detection | None, channels: Sequence[Channel]) -> lis
     if detection is None:
         return []
     notes, everywhere = [], detection.blind_everywhere_hz
-    ratio = _ratio(detection)
+    ratio = named_ratio(detection)
     if everywhere:
         notes.append(
-            f"every node is blind to a mode with {ratio} from {_named(everywhere)}: one as high "
+            f"every node is blind to a mode with {ratio} from {named(everywhere)}: one as high "
             "as the response itself could go unnoticed there; closer points, more digits or less "
             "noise would show it"
         )
     single = [
-        f"{channel} from {_named(own)}"
+        f"{channel} from {named(own)}"
         for channel, own in zip(channels, detection.blind_hz, strict=True)
         if own and own != everywhere
     ]
@@ -222,10 +229,12 @@ def blind_notes(detection: Detection | None, channels: Sequence[Channel]) -> lis
     return notes
 
 
-def _named(blind: Sequence[Stretch]) -> str:
+def named(blind: Sequence[Stretch]) -> str:
+    """Write stretches of frequency, the first of them."""
     shown = ", ".join(f"{si(low, 'Hz')} to {si(high, 'Hz')}" for low, high in blind[:FEW])
     return shown + (f" and {len(blind) - FEW} more" if len(blind) > FEW else "")
 
 
-def _ratio(detection: Detection) -> str:
+def named_ratio(detection: Detection) -> str:
+    """Write the damping ratio of the mode that was supposed."""
     return f"damping ratio {si(detection.damping_ratio, '', 2)}"

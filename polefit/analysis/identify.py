@@ -17,6 +17,7 @@ from polefit.analysis.detection import (
 )
 from polefit.analysis.evidence import MOSTLY_NOISE
 from polefit.analysis.judgement import Judged, judge
+from polefit.analysis.noise_origin import StatedNoise, noise_origin
 from polefit.analysis.preparation import Prepared, node_names, prepare
 from polefit.engine.blocks import FloatArray
 from polefit.engine.estimation import Estimation, estimate_model
@@ -38,6 +39,8 @@ SUSPECT_DAMPING = 0.05
 """Modes damped less than this are listed as suspect loops (common practice)."""
 POOR_FIT = 0.2
 """A model that misses the data by this much relative to them carries no verdict."""
+POOR_REASON = "the model does not describe the data well enough to carry a verdict"
+MOSTLY_NOISE_REASON = "the data are mostly noise"
 
 
 def identify(
@@ -45,6 +48,8 @@ def identify(
     *,
     band_hz: tuple[float, float] | None = None,
     confidence: float = 0.95,
+    noise_relative: float | None = None,
+    noise_absolute: float | None = None,
     detection_damping: float = DAMPING,
     progress: Callable[[str], None] | None = None,
 ) -> Identification:
@@ -59,6 +64,10 @@ def identify(
         Use only the points from low to high, in hertz.
     confidence : float
         Confidence of the verdict over all modes in the band, between 0.5 and 1.
+    noise_relative, noise_absolute : float, optional
+        Noise to be taken as given instead of being estimated: standard deviation of a sample,
+        both parts together, over its size, or in the unit of the responses; both may be given.
+        Rounding of printed numbers and stated uncertainties of the samples come on top.
     detection_damping : float
         Damping ratio of the hidden mode for which it is told what would have gone unnoticed;
         negative grows.
@@ -97,11 +106,13 @@ def identify(
     """
     if not isinstance(confidence, int | float) or not 0.5 < confidence < 1:
         raise ArgumentError(f"confidence: {confidence!r} is not between 0.5 and 1; give e.g. 0.95")
+    stated = StatedNoise(noise_relative, noise_absolute)
     damping = checked_damping(detection_damping)
     prepared = prepare(responses, band_hz)
+    laws = stated.laws([m.values.shape[0] for m in prepared.measured])
     with _thread_pools().limit(limits=1), np.errstate(all="ignore"):
-        estimation = estimate_model(prepared.measured, progress or (lambda _: None))
-        return _answer(prepared, estimation, confidence, damping)
+        estimation = estimate_model(prepared.measured, progress or (lambda _: None), laws)
+        return _answer(prepared, estimation, confidence, stated, damping)
 
 
 @functools.cache
@@ -111,7 +122,11 @@ def _thread_pools() -> ThreadpoolController:
 
 
 def _answer(
-    prepared: Prepared, estimation: Estimation, confidence: float, damping: float
+    prepared: Prepared,
+    estimation: Estimation,
+    confidence: float,
+    stated: StatedNoise,
+    damping: float,
 ) -> Identification:
     sets = prepared.responses
     channels = tuple(c for one in sets for c in one.channels)
@@ -121,7 +136,7 @@ def _answer(
     )
     model = _model(estimation, prepared.scale_rad_per_s, channels)
     errors, noises = _relative(estimation)
-    fit = _quality(prepared, estimation, judged, errors, noises)
+    fit = _quality(prepared, estimation, judged, errors, noises, stated)
     detection = detect(estimation, prepared.scale_rad_per_s, channels, sets[0].quantity, damping)
     verdict, reason = in_view_of(
         *_run_verdict(judged, fit, _poor(estimation, errors, noises)), detection
@@ -140,6 +155,7 @@ def _answer(
         detection=detection,
         notes=(
             *_notes(prepared, estimation, fit),
+            *_delay_notes(model),
             *_edge_notes(judged.beyond, band),
             *blind_notes(detection, channels),
         ),
@@ -153,12 +169,14 @@ def _model(estimation: Estimation, scale: float, channels: tuple[Channel, ...]) 
     coefficients = np.concatenate([part.coefficients for part in solution.parts])
     constant = coefficients[:, order]
     slope = coefficients[:, order + 1] / scale if direct > 1 else np.zeros(len(channels))
+    delays = np.concatenate(estimation.delays) / scale
     return RationalModel(
         poles=solution.sections.poles() * scale,
         residues=residues(solution.sections, coefficients) * scale,
         constant=constant,
         proportional=slope,
         channels=channels,
+        delay_s=delays if delays.any() else None,
     )
 
 
@@ -168,6 +186,7 @@ def _quality(
     judged: Judged,
     errors: FloatArray,
     noises: FloatArray,
+    stated: StatedNoise,
 ) -> FitQuality:
     stable = judged.stable_model
     return FitQuality(
@@ -175,7 +194,7 @@ def _quality(
         order_reason=estimation.reason,
         rms_relative=float(np.sqrt(np.mean(errors))),
         noise_relative=float(np.sqrt(np.median(noises))),
-        noise_origin=_noise_origin(prepared, estimation),
+        noise_origin=noise_origin(prepared, estimation, stated),
         residual_white=estimation.whiteness.white,
         stable_model_misfit=None if stable is None else stable.misfit_ratio,
     )
@@ -205,38 +224,14 @@ def _poor(estimation: Estimation, errors: FloatArray, noises: FloatArray) -> boo
     return missed > POOR_FIT**2 and float(np.mean(noises)) < missed / 4
 
 
-def _noise_origin(prepared: Prepared, estimation: Estimation) -> str:
-    terms = []
-    relative = np.concatenate([law.relative for law in estimation.laws])
-    absolute = np.concatenate([law.absolute for law in estimation.laws])
-    if np.any(relative > 0):
-        terms.append("relative")
-    if np.any(absolute > 0):
-        terms.append("absolute")
-    estimated = f"{' and '.join(terms)} noise estimated from the residual" if terms else ""
-    known = []
-    if any(one.precision is not None and _digits(one) for one in prepared.responses):
-        known.append("rounding of the printed digits")
-    if any(one.sample_std is not None for one in prepared.responses):
-        known.append("the uncertainty given with the data")
-    listed = [*known, *([estimated] if estimated else [])]
-    return "; ".join(listed) if listed else "double precision: no noise above its rounding"
-
-
-def _digits(one: ResponseSet) -> bool:
-    assert one.precision is not None
-    printed = (one.precision.first, one.precision.second)
-    return any(p.significant is not None or p.decimals is not None for p in printed)
-
-
 def _run_verdict(judged: Judged, fit: FitQuality, poor: bool) -> tuple[Verdict, str]:
     inside = [mode for mode in judged.modes if mode.in_band]
     unstable = [mode for mode in inside if mode.verdict == "unstable"]
     undecided = [mode for mode in inside if mode.verdict == "undecided"]
     if poor and fit.noise_relative > MOSTLY_NOISE:
-        return "undecided", "the data are mostly noise"
+        return "undecided", MOSTLY_NOISE_REASON
     if poor:
-        return "undecided", "the model does not describe the data well enough to carry a verdict"
+        return "undecided", POOR_REASON
     if unstable:
         grow = (
             "1 mode in the band grows"
@@ -249,7 +244,7 @@ def _run_verdict(judged: Judged, fit: FitQuality, poor: bool) -> tuple[Verdict, 
         why = failed[0].detail if failed else "its growth rate cannot be told from zero"
         return "undecided", f"a mode in the band may grow: {why}"
     if fit.noise_relative > MOSTLY_NOISE:
-        return "undecided", "the data are mostly noise"
+        return "undecided", MOSTLY_NOISE_REASON
     return "stable", "no mode in the band grows"
 
 
@@ -274,6 +269,21 @@ def _notes(prepared: Prepared, estimation: Estimation, fit: FitQuality) -> tuple
             + (f"; variances were raised {raised:.3g} times" if raised > 1.005 else "")
         )
     return tuple(dict.fromkeys(notes))
+
+
+def _delay_notes(model: RationalModel) -> list[str]:
+    """Tell of delays that were taken out: no pole hangs on them, residues do."""
+    if model.delay_s is None:
+        return []
+    listed = ", ".join(
+        f"{si(float(delay), 's')} at {channel}"
+        for channel, delay in zip(model.channels, model.delay_s, strict=True)
+        if delay
+    )
+    return [
+        f"a delay in front of the port was estimated and taken out ({listed}); it moves no pole, "
+        "and residues are those behind it"
+    ]
 
 
 def _edge_notes(beyond: Sequence[complex], band: tuple[float, float]) -> list[str]:

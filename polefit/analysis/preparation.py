@@ -9,7 +9,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from polefit.engine.blocks import ComplexArray, FloatArray
-from polefit.engine.estimation import Measured
+from polefit.engine.weighting import Measured
 from polefit.errors import ArgumentError, DataError, NotSupportedError
 from polefit.responses import Channel, ResponseSet
 

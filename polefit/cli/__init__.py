@@ -16,6 +16,7 @@ from typing import NoReturn
 import click
 
 from polefit import __version__
+from polefit.cli.confirm import confirm
 from polefit.cli.demo import demo
 from polefit.cli.identify import identify
 from polefit.cli.inspect import inspect
@@ -42,7 +43,7 @@ def commands() -> None:
     """
 
 
-for _command in (inspect, identify, demo):
+for _command in (inspect, identify, confirm, demo):
     commands.add_command(_command)
 
 

@@ -102,7 +102,8 @@ def names(values: tuple[str, ...]) -> tuple[str, ...]:
 
 _API_NAMES = (
     "quantity|driven|select|node|decimal|delimiter|frequency_unit|form|angle_unit|scaling"
-    "|reference_ohm|band_hz|confidence|detection_damping"
+    "|reference_ohm|band_hz|confidence|noise_relative|noise_absolute|detection_damping|near_hz"
+    "|within"
 )
 _VALUE = r"(?:\"([^\"]*)\"|'([^']*)')?"
 
@@ -218,6 +219,48 @@ hdf5_option = click.option("--hdf5", metavar="PATH", help="Write data and result
 quiet_option = click.option(
     "--quiet", is_flag=True, help="No progress; only the verdict on standard output."
 )
+identification_options = _together(
+    band_option,
+    click.option(
+        "--confidence",
+        type=Number(0.5, 1, min_open=True, max_open=True),
+        default=0.95,
+        metavar="P",
+        show_default=True,
+        help="Confidence of the verdicts.",
+    ),
+    click.option(
+        "--noise-relative",
+        type=Number(min=0, min_open=True),
+        metavar="SHARE",
+        help="Standard deviation of the noise over the size of a sample, instead of an estimate.",
+    ),
+    click.option(
+        "--noise-absolute",
+        type=Number(min=0, min_open=True),
+        metavar="STD",
+        help="Standard deviation of the noise in the unit of the data, instead of an estimate.",
+    ),
+    click.option(
+        "--detection-damping",
+        type=Number(-1, 1, min_open=True, max_open=True),
+        default=-0.01,
+        metavar="ZETA",
+        show_default=True,
+        help="Damping ratio of the hidden mode for which it is told what would have gone "
+        "unnoticed.",
+    ),
+    click.option("--separately", is_flag=True, help="Each FILE is a circuit of its own."),
+    json_option,
+    html_option,
+    hdf5_option,
+    figures_option,
+    figure_format_option,
+    quiet_option,
+    quantity_option([name for name in QUANTITY_NAMES if name not in NOT_IDENTIFIED]),
+    reading_options,
+)
+"""All options of a command that identifies modes in FILE…, in the order of the help."""
 
 
 def checked_band(band: tuple[float, float] | None) -> tuple[float, float] | None:

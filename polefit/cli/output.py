@@ -12,7 +12,7 @@ from typing import TYPE_CHECKING, TextIO
 from polefit.cli.paths import check_replaceable
 
 if TYPE_CHECKING:
-    from polefit.modes import Identification
+    from polefit.report.answers import Answer
 
 # For terminals without these letters. A lost minus would turn a verdict round, so none is
 # left to chance.
@@ -104,20 +104,22 @@ def encodable(text: str, encoding: str | None) -> str:
     return text
 
 
-def status_of(results: Sequence[Identification]) -> int:
+def status_of(results: Sequence[Answer]) -> int:
     """Return the exit status: unstable before undecided before stable."""
-    verdicts = {result.verdict for result in results}
+    from polefit.report.answers import stability
+
+    verdicts = {stability(result) for result in results}
     worst = next(v for v in ("unstable", "undecided", "stable") if v in verdicts)
     return STATUS[worst]
 
 
-def deliver(results: Sequence[Identification], outputs: Outputs, *, separately: bool) -> int:
+def deliver(results: Sequence[Answer], outputs: Outputs, *, separately: bool) -> int:
     """Write the files asked for, then the report; return the exit status.
 
     Parameters
     ----------
-    results : sequence of Identification
-        One, or one for each file.
+    results : sequence of Identification or Confirmation
+        One, or one for each file; all of one kind.
     outputs : Outputs
         What to write.
     separately : bool
@@ -128,65 +130,68 @@ def deliver(results: Sequence[Identification], outputs: Outputs, *, separately: 
     -------
     int
     """
-    from polefit.report.headline import verdict_sentence
+    from polefit.report.answers import sentence
 
     _write_files(results, outputs, separately)
     if not outputs.json_on_stdout:
-        shown = [verdict_sentence(r) if outputs.quiet else str(r) for r in results]
+        shown = [sentence(r) if outputs.quiet else str(r) for r in results]
         if separately:
             shown = [f"{_name(r)}\n{text}" for r, text in zip(results, shown, strict=True)]
         put(("\n" if outputs.quiet else "\n\n\n").join(shown))
     return status_of(results)
 
 
-def _write_files(results: Sequence[Identification], outputs: Outputs, separately: bool) -> None:
+def _write_files(results: Sequence[Answer], outputs: Outputs, separately: bool) -> None:
     from polefit.atomic import write_text
+    from polefit.report import answers
 
     if outputs.html is not None:
-        from polefit.report.html import identifications_html
-
-        write_text(outputs.html, identifications_html(results))
+        write_text(outputs.html, answers.page(results))
     stems = _stems(results) if separately else ["" for _ in results]
     for result, stem in zip(results, stems, strict=True):
         if outputs.hdf5 is not None:
-            from polefit.report.hdf5 import write_identification
-
             path = _suffixed(Path(outputs.hdf5), stem)
             check_replaceable("--hdf5", path)
-            write_identification(path, result)
+            answers.write_hdf5(path, result)
         if outputs.figures is not None:
             from polefit.report.figures import save_figures
 
-            save_figures(result, Path(outputs.figures) / stem, outputs.figure_formats)
+            identification = answers.identification_of(result)
+            save_figures(identification, Path(outputs.figures) / stem, outputs.figure_formats)
     if outputs.json is not None:
         _write_json(results, outputs, separately)
 
 
-def _write_json(results: Sequence[Identification], outputs: Outputs, separately: bool) -> None:
+def _write_json(results: Sequence[Answer], outputs: Outputs, separately: bool) -> None:
     from polefit.atomic import write_text
-    from polefit.report.json import identification_json, identifications_json
+    from polefit.report.json import documents_json, dumped
 
+    documents = [result.to_dict() for result in results]
     if separately:
-        text = identifications_json(results, ascii_only=outputs.json_on_stdout)
+        text = documents_json(documents, ascii_only=outputs.json_on_stdout)
     else:
-        text = identification_json(results[0], ascii_only=outputs.json_on_stdout)
+        text = dumped(documents[0], outputs.json_on_stdout)
     if outputs.json_on_stdout:
         put(text.rstrip("\n"))
     else:
         write_text(str(outputs.json), text)
 
 
-def _name(result: Identification) -> str:
+def _name(result: Answer) -> str:
+    from polefit.report.answers import identification_of
     from polefit.report.phrases import plain
 
-    return ", ".join(plain(s.file, 90) for s in result.sources) or "arrays"
+    return ", ".join(plain(s.file, 90) for s in identification_of(result).sources) or "arrays"
 
 
-def _stems(results: Sequence[Identification]) -> list[str]:
+def _stems(results: Sequence[Answer]) -> list[str]:
     """Return a distinct short name for each result, from its file."""
+    from polefit.report.answers import identification_of
+
     stems: list[str] = []
     for result in results:
-        stem = Path(result.sources[0].file).stem if result.sources else "result"
+        sources = identification_of(result).sources
+        stem = Path(sources[0].file).stem if sources else "result"
         number = 2
         unique = stem
         while unique in stems:

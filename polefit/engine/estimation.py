@@ -11,23 +11,26 @@ from typing import NamedTuple
 
 import numpy as np
 
-from polefit.engine.blocks import Block, ComplexArray, FloatArray, make_block, samples
-from polefit.engine.noise import NoiseLaw, estimate, first_guess, variance
+from polefit.engine.blocks import Block, FloatArray, samples
+from polefit.engine.delay import Delayed, polish, take_out
+from polefit.engine.noise import NoiseLaw, first_guess, variance
 from polefit.engine.order import (
     TRIALS,
     count_places,
     largest_order,
     parameters,
+    prune,
     search,
     split,
     take_up,
     trial_grid,
     variance_factor,
 )
-from polefit.engine.projection import Solution, model_values, residuals, solve
+from polefit.engine.projection import Solution, residuals, solve
 from polefit.engine.refinement import refine
 from polefit.engine.sections import from_poles
-from polefit.engine.significance import Information, information, scan, section_scores
+from polefit.engine.significance import Information, information, leverage, scan, section_scores
+from polefit.engine.weighting import Measured, by_data, by_model, change, law_of, weigh
 from polefit.engine.whiteness import Whiteness, judge_whiteness
 
 RESHAPED = 2.0
@@ -40,30 +43,6 @@ RAISES = 3
 BELOW = 0.25
 """χ² per degree of freedom below which the residual says nothing: the noise was overstated, as the
 floor of double precision is for data of a closed form."""
-
-
-class Measured(NamedTuple):
-    """Responses on one frequency axis, as the engine takes them.
-
-    Attributes
-    ----------
-    s : (N,) complex ndarray
-        Normalised complex frequency.
-    values : (K, N) complex ndarray
-        Responses.
-    known : (K, 2, N) float ndarray
-        Known noise variance of the two parts of each sample.
-    turn : (K, N) complex ndarray or None
-        Unit phasors, where the parts lie along and across the sample.
-    shift : (N,) float ndarray or None
-        Standard deviation of Im s, where frequencies are rounded.
-    """
-
-    s: ComplexArray
-    values: ComplexArray
-    known: FloatArray
-    turn: ComplexArray | None
-    shift: FloatArray | None = None
 
 
 class Estimation(NamedTuple):
@@ -95,6 +74,8 @@ class Estimation(NamedTuple):
         Number of places at which a spare pair could settle.
     reason : str
         Why this order was taken.
+    delays : tuple of (K,) float ndarray
+        Delay taken out of each channel, over the normalised angular frequency.
     """
 
     blocks: tuple[Block, ...]
@@ -109,12 +90,15 @@ class Estimation(NamedTuple):
     whiteness: Whiteness
     places: int
     reason: str
+    delays: tuple[FloatArray, ...]
 
 
 def estimate_model(
-    data: Sequence[Measured], progress: Callable[[str], None] = lambda _: None
+    data: Sequence[Measured],
+    progress: Callable[[str], None] = lambda _: None,
+    stated: Sequence[NoiseLaw] | None = None,
 ) -> Estimation:
-    """Fit order, poles, residues and noise law.
+    """Fit order, poles, residues, delays and noise law.
 
     Parameters
     ----------
@@ -122,25 +106,32 @@ def estimate_model(
         One for each frequency axis.
     progress : callable
         Told what is being done.
+    stated : sequence of NoiseLaw, optional
+        Noise laws to be taken as given, one for each frequency axis.
 
     Returns
     -------
     Estimation
     """
-    laws = tuple(first_guess([m.values for m in data]))
-    blocks = _weigh(data, laws, _by_data(data))
+    laws = tuple(stated or first_guess([m.values for m in data]))
+    blocks = weigh(data, laws, by_data(data))
     progress("searching the order")
-    found = search(blocks)
+    data, blocks, found, delays = take_out(
+        data, blocks, lambda moved: weigh(moved, laws, by_data(moved))
+    )
     for turn in range(4):
         progress("estimating the noise")
-        seen = _by_model(data, found.solution)
-        spent = parameters(blocks, found.solution) / sum(block.channels for block in blocks)
-        laws = tuple(_law(m, sight, spent) for m, sight in zip(data, seen, strict=True))
-        before, blocks = blocks, _weigh(data, laws, seen)
-        change = _change(before, blocks)
-        if turn > 0 and change < ALTERED:
+        if turn == 1 and any(delay.any() for delay in delays):
+            data, blocks, found, delays = _polish_delays(Delayed(data, blocks, found, delays))
+        seen = by_model(data, found.solution)
+        if stated is None:
+            followed = leverage(blocks, found.solution, information(found.solution))
+            laws = tuple(map(law_of, data, seen, followed))
+        before, blocks = blocks, weigh(data, laws, seen)
+        changed = change(before, blocks)
+        if turn > 0 and changed < ALTERED:
             break  # the refinement below is all that such a change calls for
-        if change > RESHAPED:
+        if changed > RESHAPED:
             found = search(blocks, found.richest)
         found = take_up(blocks, found)
     solution = refine(
@@ -159,7 +150,7 @@ def estimate_model(
         laws=laws,
         noise=tuple(
             level * variance(law, sight.size, sight.known)
-            for law, sight in zip(laws, _by_model(data, settled.solution), strict=True)
+            for law, sight in zip(laws, by_model(data, settled.solution), strict=True)
         ),
         solution=settled.solution,
         info=settled.info,
@@ -171,7 +162,17 @@ def estimate_model(
         places=count_places(blocks),
         reason=found.reason
         + (f"; raised by {raised} as the residual was not noise-like" if raised > 0 else ""),
+        delays=delays,
     )
+
+
+def _polish_delays(before: Delayed) -> Delayed:
+    """Refine the delays at the order found, and leave out the poles that stood in for the rest."""
+    after = polish(before)
+    places = count_places(after.blocks)
+    moved = solve(after.blocks, before.found.solution.sections, before.found.solution.direct)
+    settled = prune(after.blocks, refine(after.blocks, moved), places)
+    return after._replace(found=before.found._replace(solution=settled))
 
 
 class _Settled(NamedTuple):
@@ -204,74 +205,6 @@ def _whiteness(blocks: Sequence[Block], solution: Solution) -> Whiteness:
     if solution.misfit < BELOW * (samples(blocks) - parameters(blocks, solution)):
         return Whiteness(True, 1.0, 0.0, 1.0)
     return judge_whiteness(residuals(blocks, solution))
-
-
-def _change(before: Sequence[Block], after: Sequence[Block]) -> float:
-    """Return the factor by which weights typically changed relative to each other."""
-    steps = [np.log(new.weight / old.weight) for old, new in zip(before, after, strict=True)]
-    return float(np.exp(np.std(np.concatenate([step.ravel() for step in steps]))))
-
-
-class _Sight(NamedTuple):
-    """One set of responses as the data or a model show it: values, |H|, known variance."""
-
-    values: ComplexArray
-    size: FloatArray
-    known: FloatArray
-
-
-def _by_data(data: Sequence[Measured]) -> list[_Sight]:
-    """Look at the responses before there is a model."""
-    seen = []
-    for m in data:
-        moved = None if m.shift is None else np.gradient(m.values, m.s.imag, axis=1) * m.shift
-        seen.append(_Sight(m.values, np.abs(m.values), _known(m, moved)))
-    return seen
-
-
-def _by_model(data: Sequence[Measured], solution: Solution) -> list[_Sight]:
-    """Look at the responses through the model: the data are noisy."""
-    seen = []
-    for m, part in zip(data, solution.parts, strict=True):
-        values, moved = model_values(m.s, solution, part), None
-        if m.shift is not None:
-            above, below = m.s + 1j * m.shift, m.s - 1j * m.shift
-            moved = model_values(above, solution, part) - model_values(below, solution, part)
-            moved = moved / 2
-        seen.append(_Sight(values, np.abs(values), _known(m, moved)))
-    return seen
-
-
-def _known(m: Measured, moved: ComplexArray | None) -> FloatArray:
-    """Return the known variance; a frequency off by δ has `moved` the response by δ·dH/df.
-
-    All channels share δ: together they must tell no more than one.
-    """
-    if moved is None:
-        return m.known
-    moved = moved * np.sqrt(len(m.values))
-    moved = moved if m.turn is None else moved * m.turn
-    total: FloatArray = m.known + np.stack((moved.real**2, moved.imag**2), axis=1)
-    return total
-
-
-def _weigh(
-    data: Sequence[Measured], laws: Sequence[NoiseLaw], seen: Sequence[_Sight]
-) -> tuple[Block, ...]:
-    """Weight by the law, at the size that is seen."""
-    return tuple(
-        make_block(m.s, m.values, 1.0 / np.sqrt(variance(law, sight.size, sight.known)), m.turn)
-        for m, law, sight in zip(data, laws, seen, strict=True)
-    )
-
-
-def _law(m: Measured, sight: _Sight, spent: float) -> NoiseLaw:
-    """Estimate the law of one set from what the model leaves; `spent` freedom of each channel."""
-    rest = m.values - sight.values
-    if m.turn is not None:
-        rest = rest * m.turn
-    parts = np.stack((rest.real, rest.imag), axis=1)
-    return estimate(parts, sight.size, sight.known, spent)
 
 
 def go_past(blocks: Sequence[Block], solution: Solution, info: Information) -> Solution:

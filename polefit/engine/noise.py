@@ -24,6 +24,8 @@ FIRST_LEVEL = 1e-12
 STEPS = 60
 SMALL_GAIN = 0.01
 """Twice the gain in log-likelihood below which no further step is taken."""
+LEAST_FREEDOM = 0.1
+"""Samples of which the fit follows more than the rest of this say next to nothing of the noise."""
 LAW_GAIN = 8.0
 """Likelihood gain 2·Δln L that a second coefficient must bring (χ² with one degree, p = 0.005)."""
 
@@ -121,7 +123,9 @@ def _from_differences(values: ComplexArray) -> NoiseLaw:
     return NoiseLaw(relative, absolute)
 
 
-def estimate(residual: FloatArray, size: FloatArray, known: FloatArray, spent: float) -> NoiseLaw:
+def estimate(
+    residual: FloatArray, size: FloatArray, known: FloatArray, followed: FloatArray
+) -> NoiseLaw:
     """Estimate the law from the residuals of a fit.
 
     Parameters
@@ -132,16 +136,16 @@ def estimate(residual: FloatArray, size: FloatArray, known: FloatArray, spent: f
         |H| of the model.
     known : (K, 2, N) float ndarray
         Variance known beforehand.
-    spent : float
-        Degrees of freedom that the fit took from each channel.
+    followed : (K, 2, N) float ndarray
+        Share of each sample's noise variance that the fit followed. Resonances take most of
+        their samples' freedom: without this the noise there would be understated.
 
     Returns
     -------
     NoiseLaw
         With one coefficient for each channel unless two are clearly better.
     """
-    points = residual.shape[2]
-    squares = residual**2 * (2 * points / max(2 * points - spent, 1.0))
+    squares = residual**2 / np.maximum(1 - followed, LEAST_FREEDOM)
     squared = size**2
     fixed = known + _floor(size)[:, np.newaxis, :]
     shapes = np.stack((squared, np.ones_like(squared)), axis=1)

@@ -121,7 +121,7 @@ def variance_factor(blocks: Sequence[Block], solution: Solution) -> float:
     return max(solution.misfit / max(freedom, 1), 1.0)
 
 
-def _criterion(blocks: Sequence[Block], solution: Solution) -> float:
+def criterion(blocks: Sequence[Block], solution: Solution) -> float:
     """Return BIC with the noise level free (G. Schwarz, Ann. Statist. 6, 461, 1978)."""
     count = samples(blocks)
     level = max(solution.misfit / count, 1.0)
@@ -134,22 +134,32 @@ def largest_order(blocks: Sequence[Block]) -> int:
     return max(1, min(LARGEST_ORDER, (2 * points - 3) // 4))
 
 
+def first_model(blocks: Sequence[Block], order: int, relocations: int = RELOCATIONS) -> Solution:
+    """Fit a model of given order from poles spread over the band."""
+    low, high = _edges(blocks)
+    start = starting_sections(low, high, min(order, largest_order(blocks)))
+    return _vector_fit(blocks, start, relocations)
+
+
+def _edges(blocks: Sequence[Block]) -> tuple[float, float]:
+    low = min(float(block.s[0].imag) for block in blocks)
+    low = low or min(float(block.s[min(1, block.s.size - 1)].imag) for block in blocks)
+    return low, max(float(block.s[-1].imag) for block in blocks)
+
+
 def _rich_fit(blocks: Sequence[Block]) -> Solution:
     """Raise the order in large steps until the criterion no longer improves."""
     everything, blocks = blocks, [sketch(block) for block in blocks]
-    low = min(float(block.s[0].imag) for block in blocks)
-    low = low or min(float(block.s[min(1, block.s.size - 1)].imag) for block in blocks)
-    high = max(float(block.s[-1].imag) for block in blocks)
+    low, high = _edges(blocks)
     most = largest_order(blocks)
-    start = starting_sections(low, high, min(FIRST_ORDER, most))
-    best = refine(blocks, _vector_fit(blocks, start), iterations=5, tolerance=1.0)
+    best = refine(blocks, first_model(blocks, FIRST_ORDER), iterations=5, tolerance=1.0)
     for richer_order in LADDER:
         order = min(richer_order, most)
         if order <= best.sections.order or _explained(blocks, best):
             break
         extra = starting_sections(low, high, order - best.sections.order)
         richer = _vector_fit(blocks, best.sections.join(extra))
-        if _criterion(blocks, richer) >= _criterion(blocks, best):
+        if criterion(blocks, richer) >= criterion(blocks, best):
             break
         best = refine(blocks, richer, iterations=5, tolerance=1.0)
     if all(few is all_ for few, all_ in zip(blocks, everything, strict=True)):
@@ -168,11 +178,13 @@ def _explained(blocks: Sequence[Block], solution: Solution) -> bool:
     return whiteness.probability > LOOKS_WHITE or whiteness.tendency < 2.0
 
 
-def _vector_fit(blocks: Sequence[Block], start: Sections) -> Solution:
+def _vector_fit(
+    blocks: Sequence[Block], start: Sections, relocations: int = RELOCATIONS
+) -> Solution:
     """Relocate a few times and keep the best."""
     sections = start
     best: Solution | None = None
-    for _ in range(RELOCATIONS):
+    for _ in range(relocations):
         sections = relocate(blocks, sections, 2)
         trial = solve(blocks, sections, 2)
         if best is None or trial.misfit < best.misfit:

@@ -23,6 +23,7 @@ from polefit.engine.blocks import (
     FloatArray,
     pieces,
     pulled_back,
+    weighted,
     weighted_parts,
 )
 from polefit.engine.projection import Projected, Solution, normal_equations, residual
@@ -84,6 +85,38 @@ def invert(matrix: FloatArray) -> FloatArray:
     inverse = np.linalg.pinv(matrix / np.outer(scale, scale), rcond=1e-15, hermitian=True)
     result: FloatArray = inverse / np.outer(scale, scale)
     return result
+
+
+def leverage(blocks: Sequence[Block], solution: Solution, info: Information) -> list[FloatArray]:
+    """Return how much of each sample's noise the fit follows: the diagonal of the hat matrix.
+
+    Returns
+    -------
+    list of (K, 2, N) float ndarray
+        Between 0 and 1; the variance of a residual is that of the noise times one minus this.
+
+    Notes
+    -----
+    D. C. Hoaglin, R. E. Welsch, "The hat matrix in regression and ANOVA", Am. Stat. 32(1), 17-22,
+    1978 (from memory), for the model linearised at the solution.
+    """
+    values, vectors = np.linalg.eigh(invert(info.poles))
+    spread = vectors * np.sqrt(np.maximum(values, 0.0))
+    found = []
+    for block, part, linear in zip(blocks, solution.parts, info.linear, strict=True):
+        slopes, _ = chain(solution.sections, part.coefficients)
+        m = part.factor.shape[1]
+        moved = slopes @ spread
+        tied = -linear.inverse @ (part.coupling @ moved)
+        below = np.zeros((block.channels, slopes.shape[1], m))
+        mix = np.block([[linear.inverse, tied], [below, moved]])
+        followed = []
+        for piece in pieces(block):
+            columns = evaluate_with_slopes(solution.sections, piece.s, solution.direct)
+            share = np.sum((weighted(piece, columns) @ mix) ** 2, axis=2)
+            followed.append(share.reshape(block.channels, 2, -1))
+        found.append(np.minimum(np.concatenate(followed, axis=2), 1.0))
+    return found
 
 
 SPARED_SAMPLES = 3

@@ -13,11 +13,13 @@ M is the number of poles, K that of all channels in the order of the response se
 ``/identification/noise_std/0`` …     (N, K_i) float: standard deviation of the noise of each
                                       complex sample (optional)
 ``/identification/model``             H_k(s) = Σ residues[m, k] / (s − poles[m]) + constant[k]
-                                      + proportional[k] s, with s = 2πj f in rad/s
+                                      + proportional[k] s, with s = 2πj f in rad/s,
+                                      times exp(−s delay_s[k])
 ``…/model/poles``                     (M,) complex, rad/s; conjugates are both listed
 ``…/model/residues``                  (M, K) complex, unit of the response times rad/s
 ``…/model/constant``                  (K,) float, unit of the response
 ``…/model/proportional``              (K,) float, unit of the response per rad/s
+``…/model/delay_s``                   (K,) float, seconds: delays in front of the ports, if any
 ``…/model/channels``                  (K, 2) text: output, input
 ``/identification/detection``         group (optional): attributes ``damping_ratio``, ``power``
 ``…/detection/frequency_hz``          (L,) float
@@ -28,6 +30,10 @@ M is the number of poles, K that of all channels in the order of the response se
 ``…/detection/blind_hz``              (B, 2) float: stretches where every channel is blind
 ``…/detection/channel_blind_hz``      (C, 3) float: column of the channel, from, to
 ====================================  =============================================================
+
+A confirmation is written as the identification that it rests on, with ``/confirmation`` beside it:
+attributes ``schema`` = "polefit.confirmation", ``version`` = 1, ``verdict``; and ``json``, scalar
+text, the whole answer.
 
 Complex numbers are compounds {r, i}, as h5py stores them. For example::
 
@@ -44,8 +50,12 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from polefit.atomic import whole_file
+from polefit.confirmation import Confirmation
 from polefit.modes import Detection, Identification, RationalModel
 from polefit.readers.hdf5 import put_responses, put_text, put_texts
+from polefit.report.confirmation_json import SCHEMA as CONFIRMATION_SCHEMA
+from polefit.report.confirmation_json import VERSION as CONFIRMATION_VERSION
+from polefit.report.confirmation_json import confirmation_json
 from polefit.report.json import SCHEMA, identification_json
 
 if TYPE_CHECKING:
@@ -69,11 +79,39 @@ def write_identification(path: str | Path, result: Identification) -> None:
     FileError
         If the file cannot be written there.
     """
+    _write(path, result, None)
+
+
+def write_confirmation(path: str | Path, answer: Confirmation) -> None:
+    """Write a confirmation with the identification and the data behind it, whole or not at all.
+
+    Parameters
+    ----------
+    path : str or pathlib.Path
+        The file to appear.
+    answer : Confirmation
+        The answer.
+
+    Raises
+    ------
+    FileError
+        If the file cannot be written there.
+    """
+    _write(path, answer.identification, answer)
+
+
+def _write(path: str | Path, result: Identification, answer: Confirmation | None) -> None:
     import h5py
 
     with whole_file(path) as temporary, h5py.File(temporary, "w") as file:
         put_responses(file, result.responses)
         _put_identification(file.create_group("identification"), result)
+        if answer is not None:
+            group = file.create_group("confirmation")
+            put_text(group, "schema", CONFIRMATION_SCHEMA)
+            group.attrs["version"] = CONFIRMATION_VERSION
+            put_text(group, "verdict", answer.verdict)
+            group.create_dataset("json", data=confirmation_json(answer), dtype=h5py.string_dtype())
 
 
 def _put_identification(group: h5py.Group, result: Identification) -> None:
@@ -104,6 +142,8 @@ def _put_model(group: h5py.Group, model: RationalModel) -> None:
     group.create_dataset("residues", data=model.residues)
     group.create_dataset("constant", data=model.constant)
     group.create_dataset("proportional", data=model.proportional)
+    if model.delay_s is not None:
+        group.create_dataset("delay_s", data=model.delay_s)
     put_texts(group, "channels", [(c.output, c.input) for c in model.channels])
 
 

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+
 from polefit.estimates import si
 from polefit.modes import Identification, Mode
 from polefit.report.limits import detection_limit
@@ -64,27 +66,36 @@ def loads(result: Identification) -> str:
     return _HYBRID.get(result.quantity, "")
 
 
-def _joined(parts: list[str]) -> str:
+def joined(parts: Sequence[str]) -> str:
+    """Join the parts of a sentence that say anything."""
     return "; ".join(part for part in parts if part) + "."
 
 
 def _unstable(result: Identification) -> str:
     growing = [m for m in result.modes if m.verdict == "unstable" and m.in_band]
     if not growing:
-        return _joined([tidy(result.reason.rstrip(".")), edge_warning(result)])
+        return joined([tidy(result.reason.rstrip(".")), edge_warning(result)])
     mode = growing[0]
     lead = "" if len(growing) == 1 else f"{len(growing)} modes grow; the most dangerous: "
+    core = f"{lead}{growth(mode)}{loads(result)}"
+    return joined([core, strongest(mode), edge_warning(result)])
+
+
+def growth(mode: Mode) -> str:
+    """Say that a mode grows, where and how fast."""
     time = si(1 / mode.growth_rate_per_s.value, "s", 3, keep_zeros=True)
     if mode.real:
-        core = f"a real pole grows without ringing, time constant {time}"
-    else:
-        core = (
-            f"a mode at {label(mode, 5)} grows with time constant {time} "
-            f"(damping ratio {brief(mode.damping_ratio)})"
-        )
+        return f"a real pole grows without ringing, time constant {time}"
+    return (
+        f"a mode at {label(mode, 5)} grows with time constant {time} "
+        f"(damping ratio {brief(mode.damping_ratio)})"
+    )
+
+
+def strongest(mode: Mode) -> str:
+    """Say where a mode shows most; nothing where no channel is known."""
     node = strongest_node(mode)
-    strongest = f"strongest at {plain(node, 30)}" if node else ""
-    return _joined([f"{lead}{core}{loads(result)}", strongest, edge_warning(result)])
+    return f"strongest at {plain(node, 30)}" if node else ""
 
 
 def _stable(result: Identification) -> str:
@@ -104,18 +115,14 @@ def _stable(result: Identification) -> str:
         parts.append(
             f"lightest damped mode: {label(mode)}, damping ratio {brief(mode.damping_ratio)}"
         )
-    return _joined([*parts, detection_limit(result) or ""])
+    return joined([*parts, detection_limit(result) or ""])
 
 
 def _undecided(result: Identification) -> str:
-    points = result.next_points_hz
-    step = ""
-    if points:
-        span = band((min(points), max(points)))
-        step = f"next: simulate {counted(len(points), 'point')} from {span}"
+    step = next_step(result.next_points_hz)
     doubtful = [m for m in result.modes if m.verdict == "undecided" and m.in_band]
     if not doubtful or any(m.verdict == "unstable" and m.in_band for m in result.modes):
-        return _joined([tidy(result.reason.rstrip(".")), edge_warning(result), step])
+        return joined([tidy(result.reason.rstrip(".")), edge_warning(result), step])
     mode = doubtful[0]
     lead = "" if len(doubtful) == 1 else f"{len(doubtful)} modes may grow; the first: "
     at_hz = hertz(mode.natural_frequency_hz.value if mode.real else mode.frequency_hz.value, 3)
@@ -123,7 +130,15 @@ def _undecided(result: Identification) -> str:
     node = strongest_node(mode)
     at = f" at {plain(node, 30)}" if node else ""
     core = f"{lead}{what}{at} may grow{loads(result)}"
-    return _joined([core, _doubt(mode), edge_warning(result), step])
+    return joined([core, _doubt(mode), edge_warning(result), step])
+
+
+def next_step(points: Sequence[float]) -> str:
+    """Say in a few words what to simulate next; nothing where nothing is asked for."""
+    if not points:
+        return ""
+    span = band((min(points), max(points)))
+    return f"next: simulate {counted(len(points), 'point')} from {span}"
 
 
 def _doubt(mode: Mode) -> str:

@@ -9,7 +9,7 @@ from importlib import resources
 from typing import Any
 
 import numpy as np
-from jinja2 import Environment, FunctionLoader, StrictUndefined
+from jinja2 import Environment, FunctionLoader, StrictUndefined, Template
 from markupsafe import Markup, escape
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
@@ -48,18 +48,18 @@ def identification_html(result: Identification) -> str:
 def identifications_html(results: Sequence[Identification]) -> str:
     """Return one page with several separate identifications, one after the other."""
     with drawing.quiet_drawing():
-        views = [_view(result, f"r{i}") for i, result in enumerate(results)]
-    title = f"{views[0]['verdict']}: {views[0]['heading']}" if len(views) == 1 else "polefit"
-    return (
-        _templates()
-        .get_template("page.html.j2")
-        .render(
-            views=views,
-            title=phrases.plain(title, 80),
-            version=__version__,
-            style=Markup(_file("style.css")),
-            dark=Markup(_file("dark.css")),
-        )
+        views = [{"asked": None, **view_of(result, f"r{i}")} for i, result in enumerate(results)]
+    return page(views, f"{views[0]['verdict']}: {views[0]['heading']}")
+
+
+def page(views: Sequence[dict[str, Any]], title: str) -> str:
+    """Return the whole page; what it holds of each answer is in a view, `asked` what was asked."""
+    return template("page.html.j2").render(
+        views=views,
+        title=phrases.plain(title if len(views) == 1 else "polefit", 80),
+        version=__version__,
+        style=style(),
+        dark=Markup(_file("dark.css")),
     )
 
 
@@ -68,10 +68,19 @@ def identification_fragment(result: Identification) -> str:
     with drawing.quiet_drawing():
         view = {
             **_summary(result),
-            "poles": _svg(plot_poles(result), "nb", "Pole map"),
+            "poles": svg(plot_poles(result), "nb", "Pole map"),
         }
-    template = _templates().get_template("fragment.html.j2")
-    return template.render(view=view, style=Markup(_file("style.css")))
+    return template("fragment.html.j2").render(view=view, style=style())
+
+
+def template(name: str) -> Template:
+    """Return one of the templates of the package."""
+    return _templates().get_template(name)
+
+
+def style() -> Markup:
+    """Return the style sheet of pages and fragments."""
+    return Markup(_file("style.css"))
 
 
 @cache
@@ -86,7 +95,8 @@ def _file(name: str) -> str:
     return (resources.files("polefit.report") / "templates" / name).read_text(encoding="utf-8")
 
 
-def _svg(drawn: Axes | Figure, prefix: str, caption: str) -> Markup:
+def svg(drawn: Axes | Figure, prefix: str, caption: str) -> Markup:
+    """Return a figure for a page; `prefix` keeps its ids apart from those of the others."""
     figure = drawn if isinstance(drawn, Figure) else drawn.get_figure(root=True)
     assert isinstance(figure, Figure), "axes made here belong to a figure"
     return Markup(drawing.inline_svg(figure, prefix, str(escape(phrases.plain(caption, 80)))))
@@ -104,19 +114,30 @@ def _summary(result: Identification) -> dict[str, Any]:
         "verdict": result.verdict,
         "sign": SIGNS[result.verdict],
         "word": f"{word}:",
-        "sentence": _one_line(before),
-        "warning": _one_line(warning),
-        "after": _one_line(after),
+        "sentence": one_line(before),
+        "warning": one_line(warning),
+        "after": one_line(after),
         "reason": "" if told else phrases.sentence(result.reason),
-        "modes": [_mode(m, i in full) for i, m in enumerate(result.modes)],
+        "modes": mode_rows(result, range(len(result.modes)), full),
         "node_note": nodes.node_note([result.modes[i] for i in full]),
         "sharp_note": phrases.SHARP_NOTE if any(map(phrases.is_sharp, result.modes)) else "",
         "cautions": wording.CAUTIONS,
     }
 
 
-def _one_line(text: str) -> str:
+def one_line(text: str) -> str:
+    """Write a sentence for a page, numbers and units held together."""
     return phrases.glued(phrases.plain(text, 2000))
+
+
+def mode_rows(
+    result: Identification, indices: Sequence[int], full: Sequence[int] = ()
+) -> list[dict[str, Any]]:
+    """Collect the table of some modes, those of `full` with their nodes."""
+    return [
+        {"number": i + 1, **_mode(mode, i in full)}
+        for i, mode in ((i, result.modes[i]) for i in indices)
+    ]
 
 
 def _mode(mode: Mode, full: bool) -> dict[str, Any]:
@@ -152,25 +173,23 @@ def _limit(value: float, std: float | None) -> str:
     return si(value, "", 4) if "(" in text else text.partition(" ± ")[0]
 
 
-def _view(result: Identification, prefix: str) -> dict[str, Any]:
+def view_of(result: Identification, prefix: str) -> dict[str, Any]:
     """Collect everything the page shows of one result."""
     names = [phrases.plain(s.file, _NAME) for s in result.sources]
     many = len(result.channels) > _MANY
     return {
         **_summary(result),
         "heading": phrases.listed(names, 3, _NAME) if names else f"{result.quantity} from arrays",
-        "next": phrases.glued(wording.next_points(result)),
-        "points": wording.pasteable(result),
-        "sweep": wording.as_sweep(result),
-        "poles": _svg(plot_poles(result), f"{prefix}p", "Pole map"),
+        **next_points(result.next_points_hz),
+        "poles": svg(plot_poles(result), f"{prefix}p", "Pole map"),
         "loops": [_loop(result, i, prefix) for i in range(len(result.loops))],
-        "overview": _svg(plot_overview(result), f"{prefix}o", "All channels") if many else None,
+        "overview": svg(plot_overview(result), f"{prefix}o", "All channels") if many else None,
         "channels": _channels(result, prefix),
-        "evidence": _evidence(result),
+        "evidence": evidence(result, range(len(result.modes))),
         "glossary": glossary.explained(result.modes),
         "detection": None
         if result.detection is None
-        else _svg(plot_detection(result), f"{prefix}d", "Detection limit"),
+        else svg(plot_detection(result), f"{prefix}d", "Detection limit"),
         "limit": phrases.glued(phrases.capital(limits.detection_limit(result) or "")),
         "limits": limits.channel_rows(result),
         "ohms": result.quantity == "impedance" and any(c.driving_point for c in result.channels),
@@ -194,6 +213,15 @@ def _view(result: Identification, prefix: str) -> dict[str, Any]:
     }
 
 
+def next_points(points: Sequence[float]) -> dict[str, str]:
+    """Collect what a page says of the points to simulate next."""
+    return {
+        "next": phrases.glued(wording.next_points(points)),
+        "points": wording.pasteable(points),
+        "sweep": wording.as_sweep(points),
+    }
+
+
 def _loop(result: Identification, index: int, prefix: str) -> dict[str, Any]:
     loop = result.loops[index]
     table = nodes.loop_table(result, index, _ROWS)
@@ -202,7 +230,7 @@ def _loop(result: Identification, index: int, prefix: str) -> dict[str, Any]:
         "mode": loop.mode + 1,
         "label": phrases.label(result.modes[loop.mode]),
         # bars compare nodes: one alone says nothing that the table does not
-        "figure": _svg(
+        "figure": svg(
             plot_nodes(result, index), f"{prefix}n{index}", f"Nodes of mode {loop.mode + 1}"
         )
         if len(loop.nodes) > 1
@@ -230,13 +258,14 @@ def _channels(result: Identification, prefix: str) -> list[dict[str, Any]]:
                 "name": phrases.plain(names[k], _NAME),
                 "note": f"{trace.frequency_hz.size} points, residual {si(rms, '', 2)} (rms)",
                 "open": place < most,
-                "figure": _svg(plot_response(result, k)[0], f"{prefix}c{k}", f"Channel {names[k]}"),
+                "figure": svg(plot_response(result, k)[0], f"{prefix}c{k}", f"Channel {names[k]}"),
             }
         )
     return views
 
 
-def _evidence(result: Identification) -> list[dict[str, Any]]:
+def evidence(result: Identification, indices: Sequence[int]) -> list[dict[str, Any]]:
+    """Collect the tests of some modes."""
     outcome = {True: "passed", False: "failed", None: "not-made"}
     doubtful = wording.suspects(result)
     return [
@@ -254,6 +283,6 @@ def _evidence(result: Identification) -> list[dict[str, Any]]:
                 for test in mode.evidence
             ],
         }
-        for i, mode in enumerate(result.modes)
+        for i, mode in ((i, result.modes[i]) for i in indices)
         if mode.evidence
     ]

@@ -15,7 +15,6 @@ from polefit.modes import BackgroundPole, Detection, FitQuality, Identification,
 from polefit.responses import Channel, ResponseSet
 
 SCHEMA = "polefit.identification"
-LIST_SCHEMA = "polefit.identification-list"
 VERSION = 1
 
 
@@ -43,12 +42,12 @@ def identification_dict(result: Identification) -> dict[str, Any]:
         "quantity": result.quantity,
         "pump_hz": result.pump_hz,
         "band_hz": list(result.band_hz),
-        "channels": [_channel(c) for c in result.channels],
+        "channels": [channel_pair(c) for c in result.channels],
         "termination": result.termination,
         "source": sources[0] if len(sources) == len(result.responses) == 1 else None,
         "sources": sources,
         "fit": _fit(result.fit),
-        "modes": [_mode(m) for m in result.modes],
+        "modes": [mode_dict(m) for m in result.modes],
         "background": [_background(p) for p in result.background],
         "loops": [{"mode": loop.mode, "nodes": list(loop.nodes)} for loop in result.loops],
         "detection": None
@@ -57,42 +56,52 @@ def identification_dict(result: Identification) -> dict[str, Any]:
         "next_points_hz": list(result.next_points_hz),
         "notes": list(result.notes),
     }
-    plain: dict[str, Any] = _plain(document)
+    plain: dict[str, Any] = plain_data(document)
     return plain
 
 
 def identification_json(result: Identification, *, ascii_only: bool = False) -> str:
     """Return :func:`identification_dict` as JSON text that ends with a newline."""
-    return _dumped(identification_dict(result), ascii_only)
+    return dumped(identification_dict(result), ascii_only)
 
 
 def identifications_json(results: Sequence[Identification], *, ascii_only: bool = False) -> str:
     """Return several separate identifications as one JSON document with a newline at its end."""
-    document = {
-        "schema": LIST_SCHEMA,
-        "version": VERSION,
-        "identifications": [identification_dict(r) for r in results],
-    }
-    return _dumped(document, ascii_only)
+    return documents_json([identification_dict(r) for r in results], ascii_only=ascii_only)
+
+
+def documents_json(documents: Sequence[dict[str, Any]], *, ascii_only: bool = False) -> str:
+    """Return several separate answers of one kind as one JSON document, a list of their kind."""
+    kind = documents[0]["schema"]
+    plural = f"{kind.removeprefix('polefit.')}s"
+    return dumped(
+        {"schema": f"{kind}-list", "version": VERSION, plural: list(documents)}, ascii_only
+    )
 
 
 def identification_schema() -> dict[str, Any]:
     """Return the JSON Schema (draft 2020-12) of an identification."""
-    file = resources.files("polefit.report") / "schemas" / "identification.schema.json"
+    return schema_named("identification")
+
+
+def schema_named(name: str) -> dict[str, Any]:
+    """Return one of the schemas of the package as it is written there."""
+    file = resources.files("polefit.report") / "schemas" / f"{name}.schema.json"
     schema: dict[str, Any] = json.loads(file.read_text(encoding="utf-8"))
     return schema
 
 
-def _dumped(document: dict[str, Any], ascii_only: bool) -> str:
+def dumped(document: dict[str, Any], ascii_only: bool = False) -> str:
+    """Return plain data as JSON text that ends with a newline."""
     return json.dumps(document, indent=2, ensure_ascii=ascii_only, allow_nan=False) + "\n"
 
 
-def _plain(value: Any) -> Any:
+def plain_data(value: Any) -> Any:
     """Turn NumPy scalars into Python ones and every non-finite number into None."""
     if isinstance(value, dict):
-        return {key: _plain(item) for key, item in value.items()}
+        return {key: plain_data(item) for key, item in value.items()}
     if isinstance(value, list | tuple):
-        return [_plain(item) for item in value]
+        return [plain_data(item) for item in value]
     if isinstance(value, np.generic):
         value = value.item()
     if isinstance(value, float) and not math.isfinite(value):
@@ -100,7 +109,8 @@ def _plain(value: Any) -> Any:
     return value
 
 
-def _channel(channel: Channel) -> list[str]:
+def channel_pair(channel: Channel) -> list[str]:
+    """Return output and input."""
     return [channel.output, channel.input]
 
 
@@ -132,7 +142,8 @@ def _fit(fit: FitQuality) -> dict[str, Any]:
     }
 
 
-def _mode(mode: Mode) -> dict[str, Any]:
+def mode_dict(mode: Mode) -> dict[str, Any]:
+    """Return a mode as dictionaries, lists, strings and numbers; not all need be finite."""
     return {
         "frequency_hz": mode.frequency_hz.to_dict(),
         "natural_frequency_hz": mode.natural_frequency_hz.to_dict(),
@@ -154,7 +165,7 @@ def _mode(mode: Mode) -> dict[str, Any]:
 
 def _node(view: NodeView) -> dict[str, Any]:
     return {
-        "channel": _channel(view.channel),
+        "channel": channel_pair(view.channel),
         "residue": _complex(view.residue),
         "residue_std": view.residue_std,
         "share": view.share,
@@ -178,7 +189,7 @@ def _detection(found: Detection, channels: Sequence[Channel]) -> dict[str, Any]:
         "power": found.power,
         "limits": [
             {
-                "channel": _channel(channel),
+                "channel": channel_pair(channel),
                 "residue": column(found.residue, k),
                 "peak": column(peak, k),
                 "peak_over_response": column(relative, k),

@@ -108,6 +108,7 @@ def _one_channel(model: RationalModel, index: int) -> RationalModel:
         residues=model.residues[:, keep],
         constant=model.constant[keep],
         proportional=model.proportional[keep],
+        delay_s=None if model.delay_s is None else model.delay_s[keep],
         channels=model.channels[keep],
     )
 

@@ -36,7 +36,7 @@ def linear_axis(axis: Axis, size: float, name: str, unit: str, *, most: int = 9)
     factor, prefix = prefix_for(size) if takes_prefix(unit) else (1.0, "")
     axis.set_major_formatter(FuncFormatter(_tick(lambda value: f"{value / factor:.6g}")))
     axis.set_major_locator(MaxNLocator(nbins=max(most - 2, 2), steps=[1, 2, 2.5, 5, 10]))
-    axis.set_label_text(f"{name} in {prefix}{unit}" if unit else name, parse_math=False)
+    axis.set_label_text(f"{name} in {prefix}{unit}" if name and unit else name, parse_math=False)
 
 
 def log_axis(axis: Axis, low: float, high: float, name: str, unit: str, *, most: int = 9) -> None:

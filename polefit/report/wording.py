@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Sequence
 
 from polefit.estimates import si
 from polefit.modes import BackgroundPole, FitQuality, Identification
@@ -125,9 +126,8 @@ def both_frequencies(pole: complex) -> str:
     return f"{hertz(rings)}, |p|/2π {hertz(natural)}"
 
 
-def next_points(result: Identification) -> str:
+def next_points(points: Sequence[float]) -> str:
     """Say what to simulate next; nothing where nothing is asked for."""
-    points = result.next_points_hz
     if not points:
         return ""
     if len(points) == 1:
@@ -138,21 +138,21 @@ def next_points(result: Identification) -> str:
     )
 
 
-def pasteable(result: Identification) -> str:
+def pasteable(points: Sequence[float]) -> str:
     """Return the points to simulate next in Hz, every digit, separated by blanks."""
-    return " ".join(_full(p) for p in result.next_points_hz)
+    return " ".join(_full(p) for p in points)
 
 
-def as_sweep(result: Identification) -> str:
+def as_sweep(points: Sequence[float]) -> str:
     """Return the same points as start, stop and step, where they are many and evenly spaced."""
-    points = sorted(result.next_points_hz)
     if len(points) < MANY_POINTS:
         return ""
-    step = (points[-1] - points[0]) / (len(points) - 1)
-    even = all(abs(p - points[0] - i * step) <= EVEN * step for i, p in enumerate(points))
+    start, stop = min(points), max(points)
+    step = (stop - start) / (len(points) - 1)
+    even = all(abs(p - start - i * step) <= EVEN * step for i, p in enumerate(sorted(points)))
     if not (even and step > 0):
         return ""
-    return f"start {_full(points[0])} stop {_full(points[-1])} step {_full(float(f'{step:.12g}'))}"
+    return f"start {_full(start)} stop {_full(stop)} step {_full(float(f'{step:.12g}'))}"
 
 
 def _full(value: float) -> str:

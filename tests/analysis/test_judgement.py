@@ -60,6 +60,7 @@ def estimation(blocks, solution, past=None, whiteness=WHITE, level=1.0):
         whiteness=whiteness,
         places=S.size,
         reason="made by hand",
+        delays=tuple(np.zeros(b.channels) for b in blocks),
     )
 
 

@@ -6,6 +6,8 @@ from types import SimpleNamespace
 import pytest
 from invented_results import example
 
+from polefit.analysis.confirm import checked_range, hold_against
+
 RESULTS: dict = {}
 
 
@@ -20,7 +22,7 @@ class Session:
 
     def __init__(self, capsys):
         self.verdict = "stable"
-        self.read, self.identified, self.saved, self.damping = [], [], [], []
+        self.read, self.identified, self.saved, self.asked, self.how = [], [], [], [], []
         self.capsys = capsys
         self.error = None
 
@@ -36,7 +38,7 @@ class Session:
         if isinstance(verdict, list):
             verdict = verdict.pop(0)
         if verdict not in RESULTS:
-            RESULTS[verdict] = example(verdict, nodes=("gate2",), points=31)
+            RESULTS[verdict] = example(verdict, nodes=("gate2",), points=151)
         return RESULTS[verdict]
 
 
@@ -48,15 +50,17 @@ def polefit_command(monkeypatch, capsys):
         session.read.append((str(file), options))
         return (f"responses of {file}",)
 
-    def identify(
-        responses, *, band_hz=None, confidence=0.95, detection_damping=-0.01, progress=None
-    ):
+    def identify(responses, *, band_hz=None, confidence=0.95, progress=None, **how):
         if session.error is not None:
             raise session.error
         session.identified.append((responses, band_hz, confidence))
-        session.damping.append(detection_damping)
+        session.how.append(how)
         progress("fitting")
         return session.answer()
+
+    def confirm(responses, near_hz, within=0.1, **how):
+        session.asked.append((near_hz, within))
+        return hold_against(identify(responses, **how), checked_range(near_hz, within))
 
     def write_identification(path, result):
         session.saved.append(path)
@@ -64,7 +68,10 @@ def polefit_command(monkeypatch, capsys):
     monkeypatch.setattr("polefit.readers.read_all", read, raising=False)
     for name, part in {
         "polefit.analysis.identify": SimpleNamespace(identify=identify),
-        "polefit.report.hdf5": SimpleNamespace(write_identification=write_identification),
+        "polefit.analysis.confirm": SimpleNamespace(confirm=confirm),
+        "polefit.report.hdf5": SimpleNamespace(
+            write_identification=write_identification, write_confirmation=write_identification
+        ),
     }.items():
         monkeypatch.setitem(sys.modules, name, part)
     return session

@@ -6,10 +6,11 @@ import scipy.signal
 from problems import POLES, RESIDUES, axis, noise, response
 
 from polefit.engine.blocks import samples
-from polefit.engine.estimation import Measured, estimate_model, freedom, go_past
+from polefit.engine.estimation import estimate_model, freedom, go_past
 from polefit.engine.order import largest_order, parameters
 from polefit.engine.sections import evaluate
 from polefit.engine.significance import information
+from polefit.engine.weighting import Measured
 from polefit.precision import Precision, Printed
 
 S = axis(301)
@@ -169,17 +170,6 @@ def test_correlated_noise_is_told_and_raises_the_order():
     # richer models were tried to the end, and the true pairs are still among the poles, known
     # to about 1e-3 of residues of 0.05 over widths of 0.02 and less
     assert error(found, poles) < 3e-3
-
-
-def test_a_delay_takes_many_poles_and_is_still_followed():
-    """Three turns of phase over the band: far from any small order, yet fitted to the noise."""
-    few = axis(151)
-    delayed = response(few, residues=RESIDUES[:, :1]) * np.exp(-20 * few)
-    values = delayed + noise(np.random.default_rng(86), delayed.shape) * 1e-4 * np.abs(delayed)
-    found = estimate_model([Measured(few, values, np.zeros((1, 2, few.size)), None)])
-    assert found.solution.sections.order > 10
-    # 302 squares know σ to 4 %, four of them; what is not noise would come on top
-    assert found.laws[0].relative == pytest.approx([1e-4], rel=0.2)
 
 
 def test_the_caller_keeps_his_arrays():

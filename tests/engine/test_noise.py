@@ -35,7 +35,7 @@ def relative_std(*fractions):
 
 @pytest.mark.parametrize("seed", range(5))
 def test_relative_noise_is_recovered(seed):
-    law = estimate(residuals(seed, 3e-3, 0.0), SIZE, NOTHING, 0.0)
+    law = estimate(residuals(seed, 3e-3, 0.0), SIZE, NOTHING, NOTHING)
     (std,) = relative_std(1.0)
     assert std == pytest.approx(1 / np.sqrt(4 * POINTS))  # 2·N squares
     assert law.relative[0] == pytest.approx(3e-3, rel=4 * std)
@@ -44,7 +44,7 @@ def test_relative_noise_is_recovered(seed):
 
 @pytest.mark.parametrize("seed", range(5))
 def test_absolute_noise_is_recovered(seed):
-    law = estimate(residuals(seed, 0.0, 2e-4), SIZE, NOTHING, 0.0)
+    law = estimate(residuals(seed, 0.0, 2e-4), SIZE, NOTHING, NOTHING)
     (std,) = relative_std(1.0)
     assert law.absolute[0] == pytest.approx(2e-4, rel=4 * std)
     assert law.relative[0] == 0.0
@@ -52,7 +52,7 @@ def test_absolute_noise_is_recovered(seed):
 
 @pytest.mark.parametrize("seed", range(5))
 def test_both_are_recovered_together(seed):
-    law = estimate(residuals(seed, 1e-2, 3e-4), SIZE, NOTHING, 0.0)
+    law = estimate(residuals(seed, 1e-2, 3e-4), SIZE, NOTHING, NOTHING)
     total = (1e-2 * SIZE) ** 2 + 3e-4**2
     relative, absolute = relative_std((1e-2 * SIZE) ** 2 / total, 3e-4**2 / total)
     assert law.relative[0] == pytest.approx(1e-2, rel=4 * relative)
@@ -63,7 +63,7 @@ def test_errors_are_as_large_as_the_information_says():
     """Root mean square of 200 estimates over the bound, known to 5 % (one σ)."""
     total = (1e-2 * SIZE) ** 2 + 3e-4**2
     bound = relative_std((1e-2 * SIZE) ** 2 / total, 3e-4**2 / total)
-    laws = [estimate(residuals(s, 1e-2, 3e-4), SIZE, NOTHING, 0.0) for s in range(200)]
+    laws = [estimate(residuals(s, 1e-2, 3e-4), SIZE, NOTHING, NOTHING) for s in range(200)]
     errors = np.array([[w.relative[0] / 1e-2 - 1, w.absolute[0] / 3e-4 - 1] for w in laws])
     assert np.sqrt(np.mean(errors**2, axis=0)) / bound == pytest.approx([1, 1], abs=0.2)
 
@@ -80,7 +80,7 @@ def test_two_coefficients_are_never_confused():
     std = np.hypot(1e-2 * size, 3e-5)
     for seed in range(40):
         parts = std[:, None] * np.random.default_rng(seed).standard_normal((1, 2, points))
-        law = estimate(parts, size, np.zeros((1, 2, points)), 0.0)
+        law = estimate(parts, size, np.zeros((1, 2, points)), np.zeros((1, 2, points)))
         found = np.hypot(law.relative[0] * size, law.absolute[0])
         assert np.max(np.abs(np.log(found / std))) < np.log(2)
 
@@ -88,13 +88,18 @@ def test_two_coefficients_are_never_confused():
 def test_what_the_fit_took_is_given_back():
     """A fit that spends half of the freedom leaves half of the squares."""
     half = residuals(6, 3e-3, 0.0) / np.sqrt(2)
-    law = estimate(half, SIZE, NOTHING, POINTS)
+    law = estimate(half, SIZE, NOTHING, np.full((1, 2, POINTS), 0.5))
     assert law.relative[0] == pytest.approx(3e-3, rel=4 / np.sqrt(4 * POINTS))
 
 
 def test_each_channel_has_its_own_law():
     parts = np.concatenate((residuals(7, 3e-3, 0.0), residuals(8, 0.0, 2e-4)))
-    law = estimate(parts, np.repeat(SIZE, 2, axis=0), np.repeat(NOTHING, 2, axis=0), 0.0)
+    law = estimate(
+        parts,
+        np.repeat(SIZE, 2, axis=0),
+        np.repeat(NOTHING, 2, axis=0),
+        np.repeat(NOTHING, 2, axis=0),
+    )
     assert law.relative[0] > 0
     assert law.relative[1] == 0
     assert law.absolute[0] == 0
@@ -108,7 +113,7 @@ def test_noise_that_is_known_is_not_estimated_again():
     shapes less than 0.5 %: of 300 runs at most 5 (chance of more: 0.5 %).
     """
     known = np.broadcast_to((1e-3 * (1 + SIZE)) ** 2, NOTHING.shape)
-    found = [estimate(residuals(s, 0.0, 0.0, known), SIZE, known, 0.0) for s in range(300)]
+    found = [estimate(residuals(s, 0.0, 0.0, known), SIZE, known, NOTHING) for s in range(300)]
     assert sum(w.relative[0] > 0 or w.absolute[0] > 0 for w in found) <= 5
 
 
@@ -117,13 +122,13 @@ def test_rounding_is_not_called_noise():
     known = np.full_like(NOTHING, 1e-4**2 / 12)
     for seed in range(50):
         rounding = np.random.default_rng(seed).uniform(-0.5e-4, 0.5e-4, NOTHING.shape)
-        law = estimate(rounding, SIZE, known, 0.0)
+        law = estimate(rounding, SIZE, known, NOTHING)
         assert (law.relative[0], law.absolute[0]) == (0.0, 0.0)
 
 
 def test_noise_above_the_known_is_found_beside_it():
     known = np.full_like(NOTHING, 1e-4**2)
-    law = estimate(residuals(9, 1e-2, 0.0, known), SIZE, known, 0.0)
+    law = estimate(residuals(9, 1e-2, 0.0, known), SIZE, known, NOTHING)
     share = (1e-2 * SIZE) ** 2 / ((1e-2 * SIZE) ** 2 + 1e-4**2)
     (std,) = relative_std(share)
     assert law.relative[0] == pytest.approx(1e-2, rel=4 * std)
@@ -132,7 +137,7 @@ def test_noise_above_the_known_is_found_beside_it():
 
 def test_double_precision_is_no_noise():
     """Residuals at the floor of arithmetic give no law."""
-    law = estimate(residuals(10, 1e-16, 1e-17), SIZE, NOTHING, 0.0)
+    law = estimate(residuals(10, 1e-16, 1e-17), SIZE, NOTHING, NOTHING)
     assert (law.relative[0], law.absolute[0]) == (0.0, 0.0)
 
 

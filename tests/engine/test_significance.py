@@ -24,6 +24,7 @@ from polefit.engine.significance import (
     SPARED_SAMPLES,
     information,
     invert,
+    leverage,
     scan,
     section_scores,
     threshold,
@@ -222,3 +223,16 @@ def test_a_narrow_mode_keeps_much_of_its_evidence():
     # wide pairs and real poles are nobody's glitch: nothing is taken away
     assert np.array_equal(scores.full[[2, 4]], scores.spared[[2, 4]])
     assert SPARED_SAMPLES == 3
+
+
+def test_leverage_is_the_share_of_noise_that_the_fit_follows():
+    """By the dense hat matrix J(JᵀJ)⁻¹Jᵀ of all parameters; it sums to their number."""
+    clean = response(S)
+    one = uneven_block(np.random.default_rng(58), S, clean)
+    solution = solve([one], true_sections(), 2)
+    found = leverage([one], solution, information(solution))[0]
+    jacobian = joint_jacobian([one], solution)
+    q, _ = np.linalg.qr(jacobian / np.linalg.norm(jacobian, axis=0))
+    # derivatives by differences are good to about 1e-8 of a column
+    assert found.reshape(-1) == pytest.approx(np.sum(q**2, axis=1), abs=1e-5)
+    assert found.sum() == pytest.approx(jacobian.shape[1], rel=1e-6)

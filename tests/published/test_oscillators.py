@@ -238,6 +238,41 @@ def test_sign_beside_the_start_condition(name, side):
     assert result.verdict == mode.verdict
     assert mode.natural_frequency_hz.value == pytest.approx(f0, rel=1e-9)
     assert mode.damping_ratio.value == pytest.approx(zeta, abs=1e-7)
+    # exact data: 1e-8 of the response is far above their rounding, and no spare pole hides a mode
+    assert result.detection.relative.max() < 1e-8
+
+
+@every_oscillator
+def test_published_frequency_confirmed_above_the_start_condition_only(name):
+    """The oscillation frequency at the threshold is the prediction, ± 2 %.
+
+    One part in a thousand above the threshold it is confirmed, as much below it is refuted, and
+    the mode that decays is shown with the published damping.
+    """
+    o = OSCILLATORS[name]
+    answers = [
+        polefit.confirm(
+            swept(o.circuit(factor * o.threshold), o.node, o.band_hz), o.threshold_hz, 0.02
+        )
+        for factor in (0.999, 1.001)
+    ]
+    assert [answer.verdict for answer in answers] == ["refuted", "confirmed"]
+    for answer, (f0, zeta) in zip(answers, o.around, strict=True):
+        assert answer.mode.natural_frequency_hz.value == pytest.approx(f0, rel=1e-9)
+        assert answer.mode.damping_ratio.value == pytest.approx(zeta, abs=1e-7)
+        assert answer.mode.verdict == ("stable" if zeta > 0 else "unstable")
+
+
+@every_oscillator
+def test_a_prediction_beside_the_oscillation_is_refuted_but_not_passed(name):
+    """15 % above the frequency of the growing pair, ± 5 %: nothing grows there."""
+    o = OSCILLATORS[name]
+    data = swept(o.circuit(o.value), o.node, o.band_hz)
+    answer = polefit.confirm(data, near_hz=1.15 * natural_hz(o.pair), within=0.05)
+    assert answer.verdict == "refuted"
+    assert answer.overall == "unstable", "the status tells that a mode elsewhere grows"
+    nearest = answer.identification.modes[answer.elsewhere[0]]
+    assert nearest.natural_frequency_hz.value == pytest.approx(natural_hz(o.pair), rel=1e-9)
 
 
 def test_two_pairs_at_one_frequency_are_not_averaged():

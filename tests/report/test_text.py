@@ -1,34 +1,15 @@
-"""The text report: exact layout by golden files, and every way in which a number can be missing.
-
-After a wanted change of the layout: POLEFIT_WRITE_GOLDEN=1 python -m pytest tests/report, then
-read the difference before committing it.
-"""
+"""The text report: exact layout by golden files, and every way in which a number can be missing."""
 
 import math
-import os
 from dataclasses import replace
-from pathlib import Path
 
 import pytest
+from golden import check_golden, lines_fit
 from invented_results import with_pole
 
 from polefit.estimates import Estimate
 from polefit.report import headline, nodes, phrases
-from polefit.report.text import WIDTH, identification_text
-
-GOLDEN = Path(__file__).parent / "golden"
-
-
-def check_golden(name, text):
-    path = GOLDEN / f"{name}.txt"
-    if os.environ.get("POLEFIT_WRITE_GOLDEN"):
-        GOLDEN.mkdir(exist_ok=True)
-        path.write_text(text + "\n", encoding="utf-8")
-    assert text + "\n" == path.read_text(encoding="utf-8")
-
-
-def lines_fit(text):
-    return all(len(line) <= WIDTH and line == line.rstrip() for line in text.splitlines())
+from polefit.report.text import identification_text
 
 
 def scattering(result):

@@ -47,24 +47,21 @@ def test_comparison_with_the_stable_model(stable, ratio, words):
     assert basis(replace(stable, fit=fit))["Stable model"].endswith(words)
 
 
-def test_points_to_simulate_read_back_as_the_same_numbers(stable):
+def test_points_to_simulate_read_back_as_the_same_numbers():
     points = (1.4900000000000001e9, 1.5e9 + 1 / 3, 1.61e9)
-    asked = replace(stable, next_points_hz=points)
-    assert tuple(float(word) for word in wording.pasteable(asked).split(" ")) == points
-    assert wording.next_points(asked).startswith("Simulate 3 more points from 1.49 GHz to 1.61 GHz")
-    assert wording.as_sweep(asked) == ""
-    assert wording.next_points(replace(stable, next_points_hz=())) == ""
-    one = replace(stable, next_points_hz=(2e9,))
-    assert wording.next_points(one).startswith("Simulate one more point, 2 GHz")
+    assert tuple(float(word) for word in wording.pasteable(points).split(" ")) == points
+    text = wording.next_points(points)
+    assert text.startswith("Simulate 3 more points from 1.49 GHz to 1.61 GHz")
+    assert wording.as_sweep(points) == ""
+    assert wording.next_points(()) == ""
+    assert wording.next_points((2e9,)).startswith("Simulate one more point, 2 GHz")
 
 
-def test_evenly_spaced_points_are_told_as_a_sweep_too(stable):
-    even = replace(stable, next_points_hz=tuple(1e9 + 2.5e6 * i for i in range(11)))
+def test_evenly_spaced_points_are_told_as_a_sweep_too():
+    even = tuple(1e9 + 2.5e6 * i for i in range(11))
     assert wording.as_sweep(even) == "start 1000000000 stop 1025000000 step 2500000"
-    moved = (*even.next_points_hz[:-1], even.next_points_hz[-1] + 1e3)
-    assert wording.as_sweep(replace(stable, next_points_hz=moved)) == ""
-    same = replace(stable, next_points_hz=(1e9,) * 6)
-    assert wording.as_sweep(same) == ""
+    assert wording.as_sweep((*even[:-1], even[-1] + 1e3)) == ""
+    assert wording.as_sweep((1e9,) * 6) == ""
 
 
 @pytest.mark.parametrize(

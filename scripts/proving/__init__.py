@@ -1,0 +1,1 @@
+"""Proving ground: invented circuits with exactly known modes, and a scorer for identification."""
