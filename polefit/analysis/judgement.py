@@ -9,7 +9,8 @@ from dataclasses import dataclass
 import numpy as np
 import scipy.special
 
-from polefit.analysis.evidence import Candidate, Comparison, compare, evidence_for, nearest
+from polefit.analysis.evidence import Candidate, Comparison, compare, evidence_for
+from polefit.analysis.pole_uncertainty import KnownPoles, known_poles
 from polefit.engine.blocks import FloatArray
 from polefit.engine.estimation import Estimation, freedom
 from polefit.engine.propagation import pole_estimates
@@ -63,10 +64,9 @@ def judge(
     confidence: float,
 ) -> Judged:
     """Tell modes from background and give each mode its verdict."""
-    covariance = invert(estimation.info.poles)
-    covariance = covariance * estimation.level * estimation.whiteness.inflation
+    known = known_poles(estimation)
     found = [
-        _candidate(estimation, covariance, i, scale, band_hz)
+        _candidate(estimation, known, i, scale, band_hz)
         for i in range(estimation.solution.sections.number)
     ]
     claimed, background = _claim(found, estimation, scale)
@@ -97,44 +97,15 @@ def _danger(mode: Mode) -> tuple[int, int, float]:
 
 def _candidate(
     estimation: Estimation,
-    covariance: FloatArray,
+    known: KnownPoles,
     index: int,
     scale: float,
     band_hz: tuple[float, float],
 ) -> Candidate:
-    sections = estimation.solution.sections
-    rows = section_columns(sections, index)
-    own = covariance[np.ix_(rows, rows)]
-    if len(rows) == 2:
-        c1, c0 = sections.c1[index], sections.c0[index]
-        omega = math.sqrt(max(c0 - c1**2 / 4, 0.0))
-        slope = np.array([[-0.5, 0.0], [-c1 / (4 * omega), 1 / (2 * omega)]])
-        pole = complex(-c1 / 2, omega)
-        own = slope @ own @ slope.T
-    else:
-        pole = complex(-sections.c[index - sections.c1.size], 0.0)
-        own = np.array([[own[0, 0], 0.0], [0.0, 0.0]])
-    own = own + _order_spread(estimation, pole, own)
-    inside, near = _place(pole * scale, own * scale**2, band_hz, estimation, scale)
-    return Candidate(
-        index, pole * scale, own * scale**2, float(estimation.scores[index]), inside, near
-    )
-
-
-def _order_spread(estimation: Estimation, pole: complex, own: FloatArray) -> FloatArray:
-    """Variance added when a model past the order moves the pole by more than noise would."""
-    other = nearest(pole, estimation.past.sections.poles())
-    zero = np.zeros((2, 2))
-    if other is None:
-        return zero
-    shift = np.array([other.real - pole.real, other.imag - pole.imag])
-    std = np.sqrt(np.maximum(np.diag(own), 0.0))
-    extra = np.maximum(shift**2 - std**2, 0.0)
-    if abs(other - pole) > 0.5 * abs(pole.real) + 10 * float(np.hypot(*std)):
-        return zero  # another pole altogether: persistence fails instead
-    if pole.imag == 0:
-        extra[1] = 0.0
-    return np.diag(extra)
+    pole = complex(known.poles[index]) * scale
+    own = known.covariance[index] * scale**2
+    inside, near = _place(pole, own, band_hz, estimation, scale)
+    return Candidate(index, pole, own, float(estimation.scores[index]), inside, near)
 
 
 def _place(

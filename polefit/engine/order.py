@@ -13,6 +13,7 @@ from collections.abc import Sequence
 from typing import NamedTuple
 
 import numpy as np
+import scipy.special
 from numpy.typing import NDArray
 
 from polefit.engine.blocks import Block, FloatArray, samples, sketch
@@ -30,7 +31,7 @@ from polefit.engine.significance import (
 from polefit.engine.vector_fitting import relocate, starting_sections
 from polefit.engine.whiteness import judge_whiteness
 
-KEEP_CHANCE = 0.01
+KEEP_CHANCE = 0.03
 """Chance per run that a section fitted to pure noise is kept in the model."""
 FIRST_ORDER = 20
 LADDER = (32, 48, 72, 96)
@@ -206,17 +207,14 @@ def split(blocks: Sequence[Block], solution: Solution) -> Solution:
 
 def prune(blocks: Sequence[Block], start: Solution, places: int) -> Solution:
     """Remove sections that noise alone explains, weakest first, refining after each step."""
-    channels = sum(block.channels for block in blocks)
-    pair = threshold(channels, places, KEEP_CHANCE)
-    real = threshold(channels, places, KEEP_CHANCE, columns=1)
     current = split(blocks, start)
     kept = np.zeros(current.sections.number, dtype=bool)
     largest_batch = current.sections.number
     while current.sections.number:
-        limit = np.where(np.arange(current.sections.number) < current.sections.c1.size, pair, real)
+        limit = keep_limits(blocks, current.sections, places)
         level = variance_factor(blocks, current)
         info = information(current)
-        scores = section_scores(blocks, current, info, least=level * min(pair, real))
+        scores = section_scores(blocks, current, info, least=level * float(limit.min()))
         score = scores.spared / level / limit
         glitch = scores.full / level > limit
         score[kept] = np.inf
@@ -225,10 +223,10 @@ def prune(blocks: Sequence[Block], start: Solution, places: int) -> Solution:
         if weak.size == 0:
             break
         take = weak[: max(1, largest_batch)]
-        allowed = _allowed(channels, places, take, current.sections.c1.size)
+        allowed = _allowed(blocks, current.sections, take, limit)
         while take.size > 1 and joint_score(current, info, take.tolist()) >= allowed * level:
             take = take[:-1]
-            allowed = _allowed(channels, places, take, current.sections.c1.size)
+            allowed = _allowed(blocks, current.sections, take, limit)
         mask = np.ones(current.sections.number, dtype=bool)
         mask[take] = False
         trial = solve(blocks, current.sections.keep(mask), current.direct)
@@ -249,10 +247,31 @@ def prune(blocks: Sequence[Block], start: Solution, places: int) -> Solution:
     return refine(blocks, current, iterations=30, tolerance=1e-2)
 
 
-def _allowed(channels: int, places: int, take: NDArray[np.intp], pairs: int) -> float:
+def keep_limits(blocks: Sequence[Block], sections: Sections, places: int) -> FloatArray:
+    """Return the χ² that noise alone might give each section, all its places counted.
+
+    A narrow pair could have settled at any frequency of the sweep, a broad one only at as many
+    places as its width fits into the band.
+    """
+    channels = sum(block.channels for block in blocks)
+    low, high = _edges(blocks)
+    width = np.concatenate((np.abs(sections.c1) / 2, np.abs(sections.c)))
+    own = np.clip((high - low) / np.maximum(width, 1e-300), 1.0, float(places))
+    columns = np.where(np.arange(sections.number) < sections.c1.size, 2, 1)
+    limits: FloatArray = scipy.special.chdtri(columns * channels, KEEP_CHANCE / own)
+    return limits
+
+
+def _allowed(
+    blocks: Sequence[Block], sections: Sections, take: NDArray[np.intp], limits: FloatArray
+) -> float:
     """Return the rise of χ² that noise alone explains when all of `take` leave at once."""
-    columns = int(np.sum(np.where(take < pairs, 2, 1)))
-    return threshold(channels, places, KEEP_CHANCE, columns=columns)
+    if take.size == 1:
+        return float(limits[take[0]])
+    channels = sum(block.channels for block in blocks)
+    columns = np.where(take < sections.c1.size, 2, 1) * channels
+    chance = scipy.special.chdtrc(columns, limits[take]).min()
+    return float(scipy.special.chdtri(columns.sum(), chance))
 
 
 def trial_grid(blocks: Sequence[Block], count: int) -> FloatArray:
