@@ -87,6 +87,12 @@ class Mode:
         The tests it passed or failed.
     nodes : tuple of NodeView
         One for each channel, strongest first.
+    subharmonic : bool or None
+        Under a periodic drive, where frequencies are folded into 0 to half that of the drive:
+        whether the mode sits exactly at half of it and so divides it by two. None without one.
+    seen_hz : tuple of float
+        Under a periodic drive, where in the sweep its lines show, the strongest first. Residues
+        are those of the first.
     """
 
     pole_rad_per_s: complex
@@ -101,6 +107,8 @@ class Mode:
     in_band: bool
     evidence: tuple[Evidence, ...] = ()
     nodes: tuple[NodeView, ...] = ()
+    subharmonic: bool | None = None
+    seen_hz: tuple[float, ...] = ()
 
     @property
     def real(self) -> bool:
@@ -115,7 +123,8 @@ class BackgroundPole:
     Parameters
     ----------
     pole_rad_per_s : complex
-        The pole, with non-negative imaginary part.
+        The pole, with non-negative imaginary part; under a periodic drive not folded, and of
+        either sign.
     reason : str
         One sentence.
     """
@@ -178,11 +187,12 @@ class RationalModel:
     Parameters
     ----------
     poles : (n,) complex ndarray
-        rad/s; conjugates are both listed.
+        rad/s; conjugates are both listed. Of a periodically driven circuit those lines that the
+        sweep shows, none of which implies its conjugate.
     residues : (n, K) complex ndarray
         In the unit of the responses times rad/s.
-    constant, proportional : (K,) float ndarray
-        Direct terms.
+    constant, proportional : (K,) ndarray
+        Direct terms; complex for a periodically driven circuit.
     channels : tuple of Channel
         The K channels.
     delay_s : (K,) float ndarray, optional
@@ -191,8 +201,8 @@ class RationalModel:
 
     poles: NDArray[np.complex128]
     residues: NDArray[np.complex128]
-    constant: NDArray[np.float64]
-    proportional: NDArray[np.float64]
+    constant: NDArray[np.float64] | NDArray[np.complex128]
+    proportional: NDArray[np.float64] | NDArray[np.complex128]
     channels: tuple[Channel, ...]
     delay_s: NDArray[np.float64] | None = None
 

@@ -19,7 +19,7 @@ from polefit.analysis.range_view import (
     view_of,
 )
 from polefit.confirmation import Confirmation, Holding, RangeView
-from polefit.errors import ArgumentError
+from polefit.errors import ArgumentError, NotSupportedError
 from polefit.estimates import si
 from polefit.modes import Identification, Mode
 from polefit.responses import ResponseSet
@@ -86,6 +86,12 @@ def confirm(
     'refuted'
     """
     asked = checked_range(near_hz, within)
+    sets = (responses,) if isinstance(responses, ResponseSet) else responses
+    if any(isinstance(one, ResponseSet) and one.pump_hz is not None for one in sets):
+        raise NotSupportedError(
+            "pump_hz: predictions about periodically driven circuits are not checked by this "
+            "version, since their modes may oscillate at many frequencies; identify them"
+        )
     result = identify(
         responses,
         band_hz=band_hz,

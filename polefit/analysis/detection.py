@@ -66,8 +66,9 @@ def detect(
     estimation: Estimation,
     scale: float,
     channels: Sequence[Channel],
-    quantity: str,
     damping_ratio: float,
+    *,
+    levers: bool,
 ) -> Detection | None:
     """Compute which hidden mode would have been found, over the whole band and at each channel.
 
@@ -79,10 +80,10 @@ def detect(
         rad/s that is one in the engine.
     channels : sequence of Channel
         In the order of the model.
-    quantity : str
-        Of the responses.
     damping_ratio : float
         Of the hidden mode.
+    levers : bool
+        Whether residues at driving points are damping leverages.
 
     Returns
     -------
@@ -93,7 +94,7 @@ def detect(
     if trials is None:
         return None
     residue = _limits(estimation, trials, damping_ratio) * scale
-    levers = [quantity == "impedance" and channel.driving_point for channel in channels]
+    lever = [levers and channel.driving_point for channel in channels]
     found = Detection(
         frequency_hz=trials.between * scale / (2 * np.pi),
         damping_ratio=damping_ratio,
@@ -101,7 +102,7 @@ def detect(
         residue=residue,
         response=_surroundings(estimation, trials.between),
         # |Re residue| beyond the limit is |residue| beyond it
-        leverage=np.where(levers, residue, np.nan),
+        leverage=np.where(lever, residue, np.nan),
         blind_hz=(),
     )
     blind = np.logical_not(found.relative <= BLIND)

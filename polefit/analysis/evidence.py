@@ -10,7 +10,6 @@ import numpy as np
 
 from polefit.engine.blocks import ComplexArray, FloatArray
 from polefit.engine.estimation import Estimation
-from polefit.engine.sections import residues
 from polefit.engine.stable_model import StableModel, compare_with_stable
 from polefit.modes import Evidence
 
@@ -58,6 +57,14 @@ class Candidate:
         Wald χ² of its residues.
     in_band, near_band : bool
         Where it lies.
+    images : tuple of complex
+        Other growing poles of the model that stand for the same mode.
+    related : frozenset of int
+        Sections that are near for a known reason and cast no doubt on it.
+    spread : (float, float)
+        Part of the two variances that stands for what a model past the order makes of it.
+    firm_std : float or None
+        Standard deviation of its real part without the uncertainty that a richer model adds.
     """
 
     index: int
@@ -66,6 +73,10 @@ class Candidate:
     score: float
     in_band: bool
     near_band: bool
+    images: tuple[complex, ...] = ()
+    related: frozenset[int] = frozenset()
+    spread: tuple[float, float] = (0.0, 0.0)
+    firm_std: float | None = None
 
 
 @dataclass(frozen=True)
@@ -107,7 +118,7 @@ def compare(
             estimation.solution,
             [estimation.past, estimation.richest],
             estimation.level,
-            [c.pole / scale for c in others],
+            [p / scale for c in others for p in (c.pole, *c.images)],
         )
 
     stable = against(())
@@ -176,14 +187,17 @@ def _noisy(estimation: Estimation) -> bool:
 def _companions(c: Candidate, estimation: Estimation, scale: float) -> int:
     """Count the modes on one resonance curve with a growing one, if one of them is stronger."""
     sections = estimation.solution.sections
-    poles = sections.poles()
+    poles = sections.own_poles()
     coefficients = np.concatenate([part.coefficients for part in estimation.solution.parts])
-    strength = np.linalg.norm(residues(sections, coefficients), axis=1)
+    strength = np.linalg.norm(sections.own_residues(coefficients), axis=1)
     distance = np.abs(poles - c.pole / scale)
     own = int(np.argmin(distance))
     width, widths = abs(poles[own].real), np.abs(poles.real)
-    near = (distance < COMPANION_WIDTHS * np.maximum(widths, width)) & (poles.imag > 0)
+    near = (distance < COMPANION_WIDTHS * np.maximum(widths, width)) & (
+        (poles.imag > 0) | (not sections.paired)
+    )
     near &= widths < COMPANION_RATIO * width
+    near[[i for i in c.related if i != own]] = False
     overlapping = distance < np.maximum(widths, width)
     rival = strength > np.where(overlapping, COMPARABLE, 1.0) * strength[own]
     rival[own] = False
@@ -196,8 +210,9 @@ def _persistence(c: Candidate, estimation: Estimation, scale: float) -> Evidence
     std = math.sqrt(float(np.trace(c.covariance))) / scale
     allowed = 5 * std + 0.5 * abs(pole.real)
     name = "persistence over orders"
-    order = estimation.past.sections.order
-    if order == estimation.solution.sections.order:
+    order = estimation.past.sections.poles().size
+    fewer = estimation.solution.sections.poles().size
+    if order == fewer:
         reached = estimation.richest.sections.order >= CAPPED
         too_few = "too few points for a model of higher order"
         return Evidence(name, False if reached and c.pole.real > 0 else None, too_few)
@@ -208,7 +223,7 @@ def _persistence(c: Candidate, estimation: Estimation, scale: float) -> Evidence
     passed = shift <= allowed
     share = shift / max(abs(pole.real), 1e-300)
     moves = f"{share:.2g} half-widths" if share > 1e-6 else "less than a millionth half-width"
-    detail = f"with {order} poles instead of {estimation.solution.sections.order} it "
+    detail = f"with {order} poles instead of {fewer} it "
     detail += "is not found" if other is None else f"moves by {moves}"
     return Evidence(name, passed, detail)
 

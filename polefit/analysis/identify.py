@@ -16,13 +16,14 @@ from polefit.analysis.detection import (
     in_view_of,
 )
 from polefit.analysis.evidence import MOSTLY_NOISE
+from polefit.analysis.folding import coverage
 from polefit.analysis.judgement import Judged, judge
 from polefit.analysis.noise_origin import StatedNoise, noise_origin
 from polefit.analysis.preparation import Prepared, node_names, prepare
+from polefit.engine import complex_poles, sections
 from polefit.engine.blocks import FloatArray
 from polefit.engine.estimation import Estimation, estimate_model
 from polefit.engine.projection import model_values
-from polefit.engine.sections import residues
 from polefit.errors import ArgumentError
 from polefit.estimates import si
 from polefit.modes import (
@@ -37,6 +38,10 @@ from polefit.responses import Channel, ResponseSet
 
 SUSPECT_DAMPING = 0.05
 """Modes damped less than this are listed as suspect loops (common practice)."""
+EDGE_STEPS = 3
+"""Modes within so many steps from an edge of the band do not decide ..."""
+UNSEEN = 0.05
+"""... and this share of the drive's frequency may be left out at its low end without a word."""
 POOR_FIT = 0.2
 """A model that misses the data by this much relative to them carries no verdict."""
 POOR_REASON = "the model does not describe the data well enough to carry a verdict"
@@ -85,13 +90,15 @@ def identify(
     DataError
         If the data cannot carry a verdict.
     NotSupportedError
-        For return differences, loop gains and pumped circuits.
+        For return differences and loop gains.
 
     Notes
     -----
     Rational model with poles shared by all channels and residues private to each, fitted by
     maximum likelihood (variable projection) from starting poles by relaxed vector fitting
-    without flipping. See the modules of ``polefit.engine`` for the sources.
+    without flipping. Of a periodically driven circuit (``pump_hz``) every pole stands alone with a
+    complex residue, and the modes are folded into 0 to half the drive's frequency. See the
+    modules of ``polefit.engine`` for the sources.
 
     Examples
     --------
@@ -111,7 +118,9 @@ def identify(
     prepared = prepare(responses, band_hz)
     laws = stated.laws([m.values.shape[0] for m in prepared.measured])
     with _thread_pools().limit(limits=1), np.errstate(all="ignore"):
-        estimation = estimate_model(prepared.measured, progress or (lambda _: None), laws)
+        kind = sections.NONE if prepared.responses[0].pump_hz is None else complex_poles.NONE
+        told = progress or (lambda _: None)
+        estimation = estimate_model(prepared.measured, told, laws, kind)
         return _answer(prepared, estimation, confidence, stated, damping)
 
 
@@ -132,12 +141,20 @@ def _answer(
     channels = tuple(c for one in sets for c in one.channels)
     band = (min(one.band_hz[0] for one in sets), max(one.band_hz[1] for one in sets))
     judged = judge(
-        estimation, prepared.scale_rad_per_s, band, channels, sets[0].quantity, confidence
+        estimation,
+        prepared.scale_rad_per_s,
+        band,
+        channels,
+        sets[0].quantity,
+        confidence,
+        sets[0].pump_hz,
     )
     model = _model(estimation, prepared.scale_rad_per_s, channels)
     errors, noises = _relative(estimation)
     fit = _quality(prepared, estimation, judged, errors, noises, stated)
-    detection = detect(estimation, prepared.scale_rad_per_s, channels, sets[0].quantity, damping)
+    # under a drive −dσ/dG is the sum over the images at all harmonics, also unseen ones
+    levers = sets[0].quantity == "impedance" and sets[0].pump_hz is None
+    detection = detect(estimation, prepared.scale_rad_per_s, channels, damping, levers=levers)
     verdict, reason = in_view_of(
         *_run_verdict(judged, fit, _poor(estimation, errors, noises)), detection
     )
@@ -165,16 +182,15 @@ def _answer(
 
 def _model(estimation: Estimation, scale: float, channels: tuple[Channel, ...]) -> RationalModel:
     solution = estimation.solution
-    order, direct = solution.sections.order, solution.direct
+    found = solution.sections
     coefficients = np.concatenate([part.coefficients for part in solution.parts])
-    constant = coefficients[:, order]
-    slope = coefficients[:, order + 1] / scale if direct > 1 else np.zeros(len(channels))
+    direct = found.direct_terms(coefficients)
     delays = np.concatenate(estimation.delays) / scale
     return RationalModel(
-        poles=solution.sections.poles() * scale,
-        residues=residues(solution.sections, coefficients) * scale,
-        constant=constant,
-        proportional=slope,
+        poles=found.poles() * scale,
+        residues=found.residues(coefficients) * scale,
+        constant=direct[:, 0],
+        proportional=direct[:, 1] / scale,
         channels=channels,
         delay_s=delays if delays.any() else None,
     )
@@ -190,7 +206,7 @@ def _quality(
 ) -> FitQuality:
     stable = judged.stable_model
     return FitQuality(
-        order=estimation.solution.sections.order,
+        order=estimation.solution.sections.poles().size,
         order_reason=estimation.reason,
         rms_relative=float(np.sqrt(np.mean(errors))),
         noise_relative=float(np.sqrt(np.median(noises))),
@@ -262,6 +278,15 @@ def _notes(prepared: Prepared, estimation: Estimation, fit: FitQuality) -> tuple
     for one in prepared.responses:
         if one.source is not None:
             notes.extend(one.source.assumptions)
+    drive = prepared.responses[0].pump_hz
+    if drive is not None:
+        notes += _unseen(prepared.responses, drive)
+        notes.append(
+            "the circuit is driven periodically: a mode is given by its frequency in 0 to "
+            f"{si(drive / 2, 'Hz', 6)} and may oscillate there and that far from every multiple "
+            "of the drive's frequency; no damping leverage is given, since that takes the "
+            "residues at all of these"
+        )
     if not fit.residual_white:
         raised = estimation.whiteness.inflation
         notes.append(
@@ -283,6 +308,23 @@ def _delay_notes(model: RationalModel) -> list[str]:
     return [
         f"a delay in front of the port was estimated and taken out ({listed}); it moves no pole, "
         "and residues are those behind it"
+    ]
+
+
+def _unseen(sets: Sequence[ResponseSet], drive: float) -> list[str]:
+    """Tell which modes of a driven circuit a sweep cannot show, or at its edges only."""
+    shown = []
+    for one in sets:
+        inner = one.frequency_hz[min(EDGE_STEPS, one.points - 1)], one.frequency_hz[-EDGE_STEPS - 1]
+        shown.append(coverage((float(inner[0]), float(inner[1])), drive))
+    low, high = min(s[0] for s in shown), max(s[1] for s in shown)
+    if low <= UNSEEN * drive and high == drive / 2:
+        return []
+    half = " and frequency division" if high < drive / 2 else ""
+    return [
+        f"the sweep shows modes whose folded frequency lies in {si(low, 'Hz', 4)} to "
+        f"{si(high, 'Hz', 4)} only; the others{half} show if it covers 0 to a little more than "
+        f"{si(drive / 2, 'Hz', 4)}, or as much beside any multiple of that"
     ]
 
 

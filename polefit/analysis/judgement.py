@@ -10,11 +10,12 @@ import numpy as np
 import scipy.special
 
 from polefit.analysis.evidence import Candidate, Comparison, compare, evidence_for
-from polefit.analysis.pole_uncertainty import KnownPoles, known_poles
+from polefit.analysis.folding import Claim, as_it_is, fold, images_in
+from polefit.analysis.images import with_images
+from polefit.analysis.pole_uncertainty import KnownPoles, joint_covariance, known_poles
 from polefit.engine.blocks import FloatArray
 from polefit.engine.estimation import Estimation, freedom
 from polefit.engine.propagation import pole_estimates
-from polefit.engine.sections import Sections, residues, section_columns
 from polefit.engine.significance import invert, threshold
 from polefit.engine.stable_model import StableModel
 from polefit.estimates import Estimate
@@ -62,6 +63,7 @@ def judge(
     channels: Sequence[Channel],
     quantity: str,
     confidence: float,
+    pump_hz: float | None = None,
 ) -> Judged:
     """Tell modes from background and give each mode its verdict."""
     known = known_poles(estimation)
@@ -69,22 +71,47 @@ def judge(
         _candidate(estimation, known, i, scale, band_hz)
         for i in range(estimation.solution.sections.number)
     ]
-    claimed, background = _claim(found, estimation, scale)
+    lines, background = _claim(found, estimation, scale)
+    claimed = [as_it_is(line) for line in lines]
+    if pump_hz is not None:
+        claimed = fold(
+            lines, _joint(estimation, joint_covariance(estimation) * scale**2, lines), pump_hz
+        )
+        claimed = with_images(claimed, estimation, scale, band_hz, pump_hz)
     deciding = sum(c.in_band for c in claimed)
     level = 1 - (1 - confidence ** (1 / max(deciding, 1))) / 2
     factor = float(scipy.special.stdtrit(max(freedom(estimation), 1), level))
-    against = compare(claimed, estimation, scale)
-    views = _node_views(estimation, scale, channels, quantity)
-    modes = [_mode(c, estimation, against, factor, scale, views[c.index]) for c in claimed]
+    against = compare([c.line for c in claimed], estimation, scale)
+    views = _node_views(estimation, scale, channels, quantity, pump_hz)
+    modes = [_mode(c, estimation, against, factor, scale, views[c.line.index]) for c in claimed]
     modes.sort(key=_danger)
-    beyond = [c.pole for c in found if _beyond(c, band_hz, factor)]
+    beyond = [c.pole for c in found if _beyond(c, band_hz, factor, pump_hz)]
     stable = None if against is None else against.stable
     return Judged(tuple(modes), tuple(background), stable, tuple(beyond))
 
 
-def _beyond(c: Candidate, band_hz: tuple[float, float], factor: float) -> bool:
+def _joint(
+    estimation: Estimation, covariance: FloatArray, lines: Sequence[Candidate]
+) -> FloatArray:
+    """Return the joint covariance of real and imaginary parts of poles of which each has both."""
+    sections = estimation.solution.sections
+    jacobian = np.zeros((2 * len(lines), sections.order))
+    for i, line in enumerate(lines):
+        rows = sections.columns(line.index)
+        jacobian[2 * i : 2 * i + 2, rows] = sections.pole_gradient(line.index)
+    joint: FloatArray = jacobian @ covariance @ jacobian.T
+    for i, line in enumerate(lines):  # with what is added where the order moves a pole
+        joint[2 * i : 2 * i + 2, 2 * i : 2 * i + 2] = line.covariance
+    return joint
+
+
+def _beyond(
+    c: Candidate, band_hz: tuple[float, float], factor: float, pump_hz: float | None
+) -> bool:
     """Tell whether a growing pole outside the band deserves a wider sweep."""
     at = c.pole.imag / (2 * math.pi)
+    if pump_hz is not None and images_in(at, pump_hz, band_hz):
+        return False  # what it stands for shows inside the band as well
     not_far = band_hz[0] / BEYOND < at < band_hz[1] * BEYOND
     sure = c.pole.real > factor * math.sqrt(max(c.covariance[0, 0], 0.0))
     return not c.in_band and not_far and sure and c.score > BEYOND_SCORE
@@ -103,9 +130,21 @@ def _candidate(
     band_hz: tuple[float, float],
 ) -> Candidate:
     pole = complex(known.poles[index]) * scale
-    own = known.covariance[index] * scale**2
-    inside, near = _place(pole, own, band_hz, estimation, scale)
-    return Candidate(index, pole, own, float(estimation.scores[index]), inside, near)
+    paired = estimation.solution.sections.paired
+    # under a drive hidden modes are images of those that show, and are fitted as such
+    own = (known.covariance if paired else known.moved)[index] * scale**2
+    spread = np.diag(own / scale**2 - known.own[index]) * scale**2
+    inside, near = _place(pole, known.moved[index] * scale**2, band_hz, estimation, scale)
+    return Candidate(
+        index,
+        pole,
+        own,
+        float(estimation.scores[index]),
+        inside,
+        near,
+        spread=(float(spread[0]), float(spread[1])),
+        firm_std=math.sqrt(max(known.moved[index, 0, 0], 0.0)) * scale if paired else None,
+    )
 
 
 def _place(
@@ -117,12 +156,13 @@ def _place(
 ) -> tuple[bool, bool]:
     """In the band, at least one step and two standard deviations from its edges; or near it."""
     low, high = (2 * np.pi * edge for edge in band_hz)
-    at = pole.imag if pole.imag > 0 else abs(pole)
+    rings = pole.imag > 0 or not estimation.solution.sections.paired
+    at = pole.imag if rings else abs(pole)
     axis = np.unique(np.concatenate([b.s.imag for b in estimation.blocks])) * scale
     step = float(np.interp(at, axis[:-1], np.diff(axis)))
-    part = 1 if pole.imag > 0 else 0
+    part = 1 if rings else 0
     margin = step + 2 * math.sqrt(max(covariance[part, part], 0.0))
-    if pole.imag > 0:
+    if rings:
         margin = max(margin, EDGE_WIDTHS * min(abs(pole.real), 0.1 * at))
     inside = low + (margin if low > 0 else 0.0) <= at <= high - margin and abs(pole) <= high
     near = (1 - NEAR_BAND) * low <= at <= (1 + NEAR_BAND) * high
@@ -132,7 +172,8 @@ def _place(
 def claim_limit(pole: complex, estimation: Estimation) -> float:
     """Return the χ² from which a pole is claimed as a mode, all places counted."""
     channels = sum(block.channels for block in estimation.blocks)
-    columns = 2 if pole.imag > 0 else 1
+    rings = pole.imag > 0 or not estimation.solution.sections.paired
+    columns = 2 if rings else 1
     limit = threshold(channels, estimation.places, CLAIM_CHANCE, columns=columns)
     return limit * estimation.whiteness.inflation
 
@@ -158,7 +199,7 @@ def _claim(
 
 
 def _mode(
-    c: Candidate,
+    c: Claim,
     estimation: Estimation,
     against: Comparison | None,
     factor: float,
@@ -167,9 +208,12 @@ def _mode(
 ) -> Mode:
     estimates = pole_estimates(c.pole, c.covariance)
     std = math.sqrt(max(c.covariance[0, 0], 0.0))
+    if c.pole.real < 0 and c.line.firm_std is not None:
+        std = c.line.firm_std  # no evidence of growth: what hides behind it need not be feared
     distance = c.pole.real / std if std > 0 else math.copysign(math.inf, c.pole.real)
-    limit = claim_limit(c.pole, estimation)
-    evidence = evidence_for(c, estimation, against, distance, factor, scale, limit)
+    limit = claim_limit(c.line.pole, estimation)
+    evidence = evidence_for(c.line, estimation, against, distance, factor, scale, limit)
+    evidence = (*evidence, *c.evidence)
     return Mode(
         pole_rad_per_s=c.pole,
         covariance=(
@@ -182,10 +226,12 @@ def _mode(
         growth_rate_per_s=estimates.growth_rate_per_s,
         verdict=_verdict(distance, factor, evidence, c.in_band),
         probability_unstable=float(scipy.special.ndtr(distance)),
-        significance=math.sqrt(c.score),
+        significance=math.sqrt(c.line.score),
         in_band=c.in_band,
         evidence=evidence,
         nodes=nodes,
+        subharmonic=c.subharmonic,
+        seen_hz=c.seen_hz,
     )
 
 
@@ -201,27 +247,30 @@ def _verdict(
 
 
 def _node_views(
-    estimation: Estimation, scale: float, channels: Sequence[Channel], quantity: str
+    estimation: Estimation,
+    scale: float,
+    channels: Sequence[Channel],
+    quantity: str,
+    pump_hz: float | None,
 ) -> list[tuple[NodeView, ...]]:
     """Residues with uncertainties of every section, strongest channel first."""
     solution = estimation.solution
     sections = solution.sections
-    pairs = sections.c1.size
     coefficients = np.concatenate([part.coefficients for part in solution.parts])
-    poles = np.concatenate((np.arange(pairs), 2 * pairs + np.arange(sections.c.size)))
-    values = residues(sections, coefficients)[poles] * scale
+    poles = sections.own_poles() * scale
+    values = sections.own_residues(coefficients) * scale
     std = residue_std(estimation) * scale
     rms = np.concatenate(
         [np.sqrt(np.mean(np.abs(block.values) ** 2, axis=1)) for block in estimation.blocks]
     )
     views = []
     for index in range(sections.number):
-        pole = sections.poles()[poles[index]] * scale
-        width = max(abs(pole.real), 1e-12 * abs(pole))
+        width = max(abs(poles[index].real), 1e-12 * abs(poles[index]))
         listed = []
         for k, channel in enumerate(channels):
             leverage = None
-            if quantity == "impedance" and channel.driving_point:
+            # under a drive −dσ/dG is the sum over the images at all harmonics, also unseen ones
+            if quantity == "impedance" and channel.driving_point and pump_hz is None:
                 leverage = Estimate.normal(float(values[index, k].real), float(std[index, k, 0]))
             listed.append(
                 NodeView(
@@ -258,7 +307,7 @@ def residue_std(estimation: Estimation) -> FloatArray:
     for part, linear in zip(estimation.solution.parts, estimation.info.linear, strict=True):
         out = np.zeros((sections.number, part.coefficients.shape[0], 2))
         for index in range(sections.number):
-            columns = section_columns(sections, index)
+            columns = sections.columns(index)
             rows = linear.inverse[:, columns]
             slope = linear.slope[:, columns]
             conditional = rows @ rows.transpose(0, 2, 1)
@@ -267,37 +316,8 @@ def residue_std(estimation: Estimation) -> FloatArray:
             own = pole_covariance[np.ix_(columns, columns)]
             own = np.broadcast_to(own, (cross.shape[0], *own.shape))
             joint = np.block([[linear_part, cross], [cross.transpose(0, 2, 1), own]])
-            gradient = _residue_gradient(part.coefficients[:, columns], sections, index)
+            gradient = sections.residue_gradient(part.coefficients[:, columns], index)
             variance = np.einsum("kai,kij,kaj->ka", gradient, joint, gradient)
             out[index] = np.sqrt(np.maximum(variance, 0.0) * factor)
         per_block.append(out)
     return np.concatenate(per_block, axis=1)
-
-
-def _residue_gradient(coefficients: FloatArray, sections: Sections, index: int) -> FloatArray:
-    """Differentiate (Re, Im) of a residue by (coefficients, pole parameters), for K channels."""
-    channels = coefficients.shape[0]
-    if index >= sections.c1.size:
-        gradient = np.zeros((channels, 2, 2))
-        gradient[:, 0, 0] = 1.0
-        return gradient
-    c1, c0 = sections.c1[index], sections.c0[index]
-    omega = math.sqrt(c0 - c1**2 / 4)
-    pole = complex(-c1 / 2, omega)
-    scale = math.sqrt(abs(c0))
-    a, b = coefficients[:, 0], coefficients[:, 1]
-    top = a * pole + b * scale
-    omega_c1, omega_c0 = -c1 / (4 * omega), 1 / (2 * omega)
-    pole_c1, pole_c0 = complex(-0.5, omega_c1), complex(0.0, omega_c0)
-    below = 2j * omega
-    slopes = np.stack(
-        (
-            np.full(channels, pole / below),
-            np.full(channels, scale / below),
-            a * pole_c1 / below - top / below * omega_c1 / omega,
-            # √c0 in the second basis column varies with c0, but b·√c0 is what the data fix
-            a * pole_c0 / below - top / below * omega_c0 / omega,
-        ),
-        axis=1,
-    )
-    return np.stack((slopes.real, slopes.imag), axis=1)

@@ -15,9 +15,8 @@ import numpy as np
 
 from polefit.engine.blocks import ComplexArray, FloatArray
 from polefit.engine.estimation import Estimation
-from polefit.engine.projection import Solution
-from polefit.engine.sections import Sections
-from polefit.engine.significance import Information, information, invert
+from polefit.engine.pole_set import PoleSet
+from polefit.engine.significance import information, invert
 
 SAME_WIDTHS = 0.5
 SAME_DEVIATIONS = 10.0
@@ -34,46 +33,44 @@ class KnownPoles(NamedTuple):
         Normalised.
     covariance : (S, 2, 2) float ndarray
         Of real and imaginary part.
+    moved : (S, 2, 2) float ndarray
+        The same with the shift between the models, but without the uncertainty of the richer one.
+    own : (S, 2, 2) float ndarray
+        The same in the model itself.
     """
 
     poles: ComplexArray
     covariance: FloatArray
+    moved: FloatArray
+    own: FloatArray
 
 
 def known_poles(estimation: Estimation) -> KnownPoles:
     """Return the poles of the model, widened by what a richer model says of them."""
+    own = _at(estimation.solution.sections, joint_covariance(estimation))
+    past = estimation.past
+    if past.sections.order == estimation.solution.sections.order or own.poles.size < 2:
+        return own  # one mode alone: nothing hides behind others
     factor = estimation.level * estimation.whiteness.inflation
-    own = _at(estimation.solution, estimation.info, factor)
-    if estimation.past.sections.order == estimation.solution.sections.order:
-        return own
-    return _widened(own, _at(estimation.past, information(estimation.past), factor))
+    return _widened(own, _at(past.sections, invert(information(past).poles) * factor))
 
 
-def _at(solution: Solution, info: Information, factor: float) -> KnownPoles:
-    sections, joint = solution.sections, invert(info.poles) * factor
-    p = sections.c1.size
-    upper = _upper(sections)
-    slope = np.zeros((p, 2, 2))
-    with np.errstate(divide="ignore", invalid="ignore"):
-        slope[:, 0, 0] = -0.5
-        slope[:, 1, 0] = -sections.c1 / (4 * upper[:p].imag)
-        slope[:, 1, 1] = 1 / (2 * upper[:p].imag)
-    covariance = np.zeros((sections.number, 2, 2))
-    one, two = np.arange(p), np.arange(p, 2 * p)
-    rows = np.stack((one, two), axis=1)
-    own = joint[rows[:, :, np.newaxis], rows[:, np.newaxis, :]]
-    covariance[:p] = slope @ own @ slope.transpose(0, 2, 1)
-    covariance[p:, 0, 0] = np.diag(joint)[2 * p :]
-    return KnownPoles(upper, np.nan_to_num(covariance, nan=np.inf, posinf=np.inf))
+def joint_covariance(estimation: Estimation) -> FloatArray:
+    """Return the covariance of the pole parameters in the model itself."""
+    factor = estimation.level * estimation.whiteness.inflation
+    return invert(estimation.info.poles) * factor
 
 
-def _upper(sections: Sections) -> ComplexArray:
-    omega = np.sqrt(np.maximum(sections.c0 - sections.c1**2 / 4, 0.0))
-    return np.concatenate((-sections.c1 / 2 + 1j * omega, -sections.c.astype(np.complex128)))
+def _at(sections: PoleSet, joint: FloatArray) -> KnownPoles:
+    covariance = np.empty((sections.number, 2, 2))
+    for index in range(sections.number):
+        rows, slope = sections.columns(index), sections.pole_gradient(index)
+        covariance[index] = slope @ joint[np.ix_(rows, rows)] @ slope.T
+    return KnownPoles(sections.own_poles(), covariance, covariance, covariance)
 
 
 def _widened(own: KnownPoles, past: KnownPoles) -> KnownPoles:
-    covariance = own.covariance.copy()
+    covariance, moved = own.covariance.copy(), own.covariance.copy()
     for i, pole in enumerate(own.poles):
         same = (past.poles.imag == 0) == (pole.imag == 0)
         distance = np.where(same, np.abs(past.poles - pole), np.inf)
@@ -85,10 +82,11 @@ def _widened(own: KnownPoles, past: KnownPoles) -> KnownPoles:
         if distance[j] > reach:
             continue  # another pole altogether: persistence fails instead
         shift = past.poles[j] - pole
-        wide = np.diag(past.covariance[j])
-        square = np.maximum(np.array([shift.real**2, shift.imag**2]), wide)
-        covariance[i] = _stretched(covariance[i], std, np.sqrt(square))
-    return KnownPoles(own.poles, covariance)
+        far = np.abs([shift.real, shift.imag])
+        moved[i] = _stretched(own.covariance[i], std, far)
+        wide = np.sqrt(np.maximum(np.diag(past.covariance[j]), 0.0))
+        covariance[i] = _stretched(own.covariance[i], std, np.maximum(far, wide))
+    return KnownPoles(own.poles, covariance, moved, own.covariance)
 
 
 def _stretched(covariance: FloatArray, std: FloatArray, wanted: FloatArray) -> FloatArray:

@@ -97,16 +97,16 @@ def _check_band(band_hz: object) -> None:
 
 def _check_together(sets: tuple[ResponseSet, ...]) -> None:
     for one in sets:
-        if one.pump_hz is not None:
-            raise NotSupportedError(
-                "pump_hz: periodically driven circuits are not identified by this version; "
-                "leave pump_hz out only for an unpumped circuit"
-            )
         if one.quantity in ("return-difference", "loop-gain"):
             raise NotSupportedError(
                 f"quantity: {one.quantity} is not identified by this version; export the "
                 "driving-point impedance of a node in the loop instead"
             )
+    if len({one.pump_hz for one in sets}) > 1:
+        raise ArgumentError(
+            "responses: sets with different pump_hz are not of one circuit in one state; identify "
+            "each on its own (--separately)"
+        )
     if len({one.quantity for one in sets}) > 1:
         raise ArgumentError(
             "responses: different quantities cannot share their modes, since each is terminated "

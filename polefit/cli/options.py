@@ -102,8 +102,8 @@ def names(values: tuple[str, ...]) -> tuple[str, ...]:
 
 _API_NAMES = (
     "quantity|driven|select|node|decimal|delimiter|frequency_unit|form|angle_unit|scaling"
-    "|reference_ohm|band_hz|confidence|noise_relative|noise_absolute|detection_damping|near_hz"
-    "|within"
+    "|reference_ohm|pump_hz|band_hz|confidence|noise_relative|noise_absolute|detection_damping"
+    "|near_hz|within"
 )
 _VALUE = r"(?:\"([^\"]*)\"|'([^']*)')?"
 
@@ -195,6 +195,13 @@ reading_options = _together(
         type=Number(min=0, min_open=True),
         metavar="OHM",
         help="Reference resistance of scattering data.",
+    ),
+    click.option(
+        "--pump",
+        "pump_hz",
+        type=Frequency(),
+        metavar="HZ",
+        help="Frequency of the large periodic drive, such as 2GHz, under which it was simulated.",
     ),
 )
 

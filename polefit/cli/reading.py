@@ -24,6 +24,7 @@ READING = (
     "angle_unit",
     "scaling",
     "reference_ohm",
+    "pump_hz",
 )
 
 

@@ -18,9 +18,10 @@ from numpy.typing import NDArray
 
 from polefit.engine.blocks import Block, FloatArray, make_block, samples
 from polefit.engine.order import Found, criterion, first_model, largest_order, search
+from polefit.engine.pole_set import PoleSet
 from polefit.engine.projection import Solution, solve
 from polefit.engine.refinement import refine
-from polefit.engine.sections import Sections
+from polefit.engine.sections import NONE
 from polefit.engine.weighting import Measured
 
 SUSPECT_TURN = 1.5 * np.pi
@@ -87,6 +88,7 @@ def take_out(
     data: Sequence[Measured],
     blocks: tuple[Block, ...],
     weigh: Callable[[Sequence[Measured]], tuple[Block, ...]],
+    kind: PoleSet = NONE,
 ) -> Delayed:
     """Search the order, with delays taken out where the data ask for it.
 
@@ -98,6 +100,8 @@ def take_out(
         The same, weighted.
     weigh : callable
         Weighs data once more.
+    kind : PoleSet
+        The kind of poles to look for.
 
     Returns
     -------
@@ -106,19 +110,19 @@ def take_out(
     none = tuple(np.zeros(block.channels) for block in blocks)
     looks = [mean_delay(block) for block in blocks]
     if not any(suspected for _, suspected in looks):
-        return Delayed(data, blocks, search(blocks), none)
+        return Delayed(data, blocks, search(blocks, kind=kind), none)
     delays = tuple(
-        find_delay(block, mean) if suspected else np.zeros(block.channels)
+        find_delay(block, mean, kind) if suspected else np.zeros(block.channels)
         for block, (mean, suspected) in zip(blocks, looks, strict=True)
     )
     number = sum(np.unique(delay[delay != 0]).size for delay in delays)
     moved = [turned_back(m, delay) for m, delay in zip(data, delays, strict=True)]
     with_delay = weigh(moved)
-    found = search(with_delay)
+    found = search(with_delay, kind=kind)
     order = found.solution.sections.order + MORE_POLES
-    plain = refine(blocks, first_model(blocks, order), iterations=5, tolerance=1.0)
+    plain = refine(blocks, first_model(blocks, order, kind=kind), iterations=5, tolerance=1.0)
     if plain.misfit < NO_MATCH * found.solution.misfit:
-        without = search(blocks)
+        without = search(blocks, kind=kind)
         asked = criterion(with_delay, found.solution) + number * math.log(samples(blocks))
         if criterion(blocks, without.solution) < asked + WORTH:
             return Delayed(data, blocks, without, none)
@@ -134,14 +138,12 @@ def polish(before: Delayed) -> Delayed:
     return min(trials, key=lambda one: criterion(one.blocks, one.found.solution))
 
 
-def _stand_ins(sections: Sections) -> tuple[NDArray[np.bool_], NDArray[np.bool_]]:
+def _stand_ins(sections: PoleSet) -> tuple[NDArray[np.bool_], NDArray[np.bool_]]:
     """Tell which sections lie beyond the top of the band, and which are broad."""
-    damping = np.concatenate((np.abs(sections.c1) / 2, np.abs(sections.c)))
-    size = np.concatenate((sections.weights(), np.abs(sections.c)))
-    return size > BEYOND, damping > BROAD
+    return sections.sizes() > BEYOND, sections.half_widths() > BROAD
 
 
-def _polished(before: Delayed, sections: Sections) -> Delayed:
+def _polished(before: Delayed, sections: PoleSet) -> Delayed:
     data, blocks = list(before.data), list(before.blocks)
     delays = [delay.copy() for delay in before.delays]
     solution = solve(blocks, sections, before.found.solution.direct)
@@ -166,7 +168,7 @@ def mean_delay(block: Block) -> tuple[FloatArray, bool]:
     return np.where(readable, -turn / _width(block), 0.0), suspected
 
 
-def find_delay(block: Block, mean: FloatArray) -> FloatArray:
+def find_delay(block: Block, mean: FloatArray, kind: PoleSet = NONE) -> FloatArray:
     """Look for the delays with which models of low order miss the data least.
 
     Parameters
@@ -175,6 +177,8 @@ def find_delay(block: Block, mean: FloatArray) -> FloatArray:
         Data.
     mean : (K,) float ndarray
         From :func:`mean_delay`.
+    kind : PoleSet
+        The kind of poles.
 
     Returns
     -------
@@ -183,9 +187,9 @@ def find_delay(block: Block, mean: FloatArray) -> FloatArray:
     """
     thin = _thinned(block)
     width, channels = _width(block), block.channels
-    score = functools.partial(_score, thin)
-    own = np.array([_scanned(functools.partial(_score, _only(thin, k)), mean[k : k + 1], width)
-                    for k in range(channels)])  # fmt: skip
+    score = functools.partial(_score, thin, kind)
+    alone = [functools.partial(_score, _only(thin, k), kind) for k in range(channels)]
+    own = np.array([_scanned(one, mean[k : k + 1], width) for k, one in enumerate(alone)])
     if channels == 1:
         return own
     ones = np.ones(channels)
@@ -244,7 +248,7 @@ def _only(block: Block, k: int) -> Block:
     return make_block(block.s, block.values[k : k + 1], block.weight[k : k + 1])
 
 
-def _score(block: Block, delay: FloatArray) -> float:
+def _score(block: Block, kind: PoleSet, delay: FloatArray) -> float:
     """Sum the logarithms of the misfit over several orders: the right delay needs the fewest."""
     forth = np.exp(block.s * delay[:, np.newaxis])
     moved = make_block(block.s, block.values * forth, block.weight)
@@ -252,5 +256,5 @@ def _score(block: Block, delay: FloatArray) -> float:
     for order in LOOK_ORDERS:
         if order > largest_order([block]):
             break
-        total += math.log(max(first_model([moved], order, relocations=2).misfit, 1e-300))
+        total += math.log(max(first_model([moved], order, 2, kind).misfit, 1e-300))
     return total

@@ -16,7 +16,6 @@ from numpy.typing import NDArray
 
 from polefit.engine.blocks import Block, FloatArray, pieces, weighted
 from polefit.engine.projection import Projected, Solution, orthogonal_triangle
-from polefit.engine.sections import chain, evaluate_with_slopes
 from polefit.engine.significance import Information, information
 
 DEPENDENT = 1e-11
@@ -48,7 +47,7 @@ def set_apart(blocks: Sequence[Block], solution: Solution) -> tuple[Solution, In
     known = information(apart)
     explained = np.zeros(solution.sections.order)
     for part in parts:
-        slopes, _ = chain(solution.sections, part.coefficients)
+        slopes, _ = solution.sections.chain(part.coefficients)
         explained += np.sum((part.coupling @ slopes) ** 2, axis=(0, 1))
     free = np.diag(known.poles) > UNRESOLVED * explained
     return apart, known._replace(poles=known.poles * np.outer(free, free))
@@ -60,16 +59,13 @@ def _solved(block: Block, solution: Solution) -> Projected:
     Of a pole far out nothing is left beside them, which is seen; the other way round its rounding
     errors would spread to them.
     """
-    n = solution.sections.order
-    m = n + solution.direct
+    sections, n = solution.sections, solution.sections.order
+    m = n + sections.direct_columns(solution.direct)
     order = np.concatenate((np.arange(n, m), np.arange(n), np.arange(m, m + n)))
     r = orthogonal_triangle(
         np.concatenate(
             (
-                weighted(
-                    piece,
-                    evaluate_with_slopes(solution.sections, piece.s, solution.direct)[:, order],
-                ),
+                weighted(piece, sections.evaluate_with_slopes(piece.s, solution.direct)[:, order]),
                 piece.target[:, :, np.newaxis],
             ),
             axis=2,

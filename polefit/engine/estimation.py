@@ -26,9 +26,10 @@ from polefit.engine.order import (
     trial_grid,
     variance_factor,
 )
+from polefit.engine.pole_set import PoleSet
 from polefit.engine.projection import Solution, residuals, solve
 from polefit.engine.refinement import refine
-from polefit.engine.sections import from_poles
+from polefit.engine.sections import NONE
 from polefit.engine.significance import Information, information, leverage, scan, section_scores
 from polefit.engine.weighting import Measured, by_data, by_model, change, law_of, weigh
 from polefit.engine.whiteness import Whiteness, judge_whiteness
@@ -40,6 +41,9 @@ ALTERED = 1.3
 RAISES = 3
 """How often the order is raised by two pairs while the residual is not noise-like."""
 
+FEW_MODES = 3
+PAST_WIDTH = 6.0
+"""Half-width of the pairs added to see what depends on the order, in steps of the trial grid."""
 BELOW = 0.25
 """χ² per degree of freedom below which the residual says nothing: the noise was overstated, as the
 floor of double precision is for data of a closed form."""
@@ -97,6 +101,7 @@ def estimate_model(
     data: Sequence[Measured],
     progress: Callable[[str], None] = lambda _: None,
     stated: Sequence[NoiseLaw] | None = None,
+    kind: PoleSet = NONE,
 ) -> Estimation:
     """Fit order, poles, residues, delays and noise law.
 
@@ -108,6 +113,8 @@ def estimate_model(
         Told what is being done.
     stated : sequence of NoiseLaw, optional
         Noise laws to be taken as given, one for each frequency axis.
+    kind : PoleSet
+        The kind of poles to look for.
 
     Returns
     -------
@@ -117,7 +124,7 @@ def estimate_model(
     blocks = weigh(data, laws, by_data(data))
     progress("searching the order")
     data, blocks, found, delays = take_out(
-        data, blocks, lambda moved: weigh(moved, laws, by_data(moved))
+        data, blocks, lambda moved: weigh(moved, laws, by_data(moved)), kind
     )
     for turn in range(4):
         progress("estimating the noise")
@@ -144,7 +151,7 @@ def estimate_model(
     settled = _settle_order(blocks, split(blocks, solution))
     level = variance_factor(blocks, settled.solution)
     scores = section_scores(blocks, settled.solution, settled.info)
-    raised = settled.solution.sections.order - solution.sections.order
+    raised = settled.solution.sections.poles().size - solution.sections.poles().size
     return Estimation(
         blocks=blocks,
         laws=laws,
@@ -208,17 +215,21 @@ def _whiteness(blocks: Sequence[Block], solution: Solution) -> Whiteness:
 
 
 def go_past(blocks: Sequence[Block], solution: Solution, info: Information) -> Solution:
-    """Add two pairs where they help most, wanted or not, to see what depends on the order."""
+    """Add broad pairs where they help most, wanted or not, to see what depends on the order.
+
+    Broad ones, since narrow ones would have been found; two, or one beside few modes.
+    """
+    more = 2 if solution.sections.number > FEW_MODES else 1
     frequencies = trial_grid(blocks, TRIALS // 2)
-    if solution.sections.order + 4 > largest_order(blocks) or frequencies.size < 4:
+    if solution.sections.order + 2 * more > largest_order(blocks) or frequencies.size < 4:
         return solution
-    gap = np.gradient(frequencies)
-    poles = -np.minimum(2 * gap, 0.5 * frequencies) + 1j * frequencies
+    width = np.minimum(PAST_WIDTH * np.gradient(frequencies), 0.5 * frequencies)
+    poles = -width + 1j * frequencies
     gain = scan(blocks, solution, info, poles).gain
     first = int(np.argmax(gain))
     away = np.abs(np.arange(gain.size) - first) > gain.size // 10
     second = int(np.argmax(np.where(away, gain, -1.0)))
-    richer = solution.sections.join(from_poles(poles[[first, second]]))
+    richer = solution.sections.join(solution.sections.like(poles[[first, second][:more]]))
     return split(
         blocks, refine(blocks, solve(blocks, richer, solution.direct), iterations=5, tolerance=0.5)
     )

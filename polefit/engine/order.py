@@ -17,9 +17,10 @@ import scipy.special
 from numpy.typing import NDArray
 
 from polefit.engine.blocks import Block, FloatArray, samples, sketch
+from polefit.engine.pole_set import PoleSet
 from polefit.engine.projection import Solution, residuals, solve
 from polefit.engine.refinement import refine
-from polefit.engine.sections import Sections, from_poles
+from polefit.engine.sections import NONE
 from polefit.engine.significance import (
     Information,
     information,
@@ -28,11 +29,13 @@ from polefit.engine.significance import (
     section_scores,
     threshold,
 )
-from polefit.engine.vector_fitting import relocate, starting_sections
+from polefit.engine.vector_fitting import relocate, starting_poles
 from polefit.engine.whiteness import judge_whiteness
 
-KEEP_CHANCE = 0.03
+KEEP_CHANCE = 0.01
 """Chance per run that a section fitted to pure noise is kept in the model."""
+PLACES_PER_WIDTH = 8.0
+"""Independent places of a pair in its half-width, its width being free as well."""
 FIRST_ORDER = 20
 LADDER = (32, 48, 72, 96)
 LARGEST_ORDER = 96
@@ -71,7 +74,7 @@ def count_places(blocks: Sequence[Block]) -> int:
     return int(np.unique(np.concatenate([block.s.imag for block in blocks])).size)
 
 
-def search(blocks: Sequence[Block], start: Solution | None = None) -> Found:
+def search(blocks: Sequence[Block], start: Solution | None = None, kind: PoleSet = NONE) -> Found:
     """Find order and poles for data whose noise level is free but whose noise shape is known.
 
     Parameters
@@ -80,20 +83,22 @@ def search(blocks: Sequence[Block], start: Solution | None = None) -> Found:
         Data.
     start : Solution, optional
         A rich model from a search with other weights, to be taken up again.
+    kind : PoleSet
+        The kind of poles to look for.
 
     Returns
     -------
     Found
     """
     if start is None:
-        richest = _rich_fit(blocks)
+        richest = _rich_fit(blocks, kind)
     else:
         richest = refine(blocks, solve(blocks, start.sections, 2), iterations=10, tolerance=0.1)
     places = count_places(blocks)
     final = drop_direct(blocks, prune(blocks, richest, places))
     reason = (
-        f"pruned from {richest.sections.order} poles; removing any further one raises the misfit "
-        f"more than noise explains (chance {KEEP_CHANCE:g} over {places} places)"
+        f"pruned from {richest.sections.poles().size} poles; removing any further one raises the "
+        f"misfit more than noise explains (chance {KEEP_CHANCE:g} over {places} places)"
     )
     return Found(final, richest, reason)
 
@@ -113,7 +118,7 @@ def parameters(blocks: Sequence[Block], solution: Solution) -> int:
     """Return the number of real parameters: poles, and residues and direct terms per channel."""
     channels = sum(block.channels for block in blocks)
     n = solution.sections.order
-    return n + channels * (n + solution.direct)
+    return n + channels * (n + solution.sections.direct_columns(solution.direct))
 
 
 def variance_factor(blocks: Sequence[Block], solution: Solution) -> float:
@@ -135,10 +140,12 @@ def largest_order(blocks: Sequence[Block]) -> int:
     return max(1, min(LARGEST_ORDER, (2 * points - 3) // 4))
 
 
-def first_model(blocks: Sequence[Block], order: int, relocations: int = RELOCATIONS) -> Solution:
+def first_model(
+    blocks: Sequence[Block], order: int, relocations: int = RELOCATIONS, kind: PoleSet = NONE
+) -> Solution:
     """Fit a model of given order from poles spread over the band."""
     low, high = _edges(blocks)
-    start = starting_sections(low, high, min(order, largest_order(blocks)))
+    start = kind.like(starting_poles(low, high, min(order, largest_order(blocks))))
     return _vector_fit(blocks, start, relocations)
 
 
@@ -148,18 +155,19 @@ def _edges(blocks: Sequence[Block]) -> tuple[float, float]:
     return low, max(float(block.s[-1].imag) for block in blocks)
 
 
-def _rich_fit(blocks: Sequence[Block]) -> Solution:
+def _rich_fit(blocks: Sequence[Block], kind: PoleSet) -> Solution:
     """Raise the order in large steps until the criterion no longer improves."""
     everything, blocks = blocks, [sketch(block) for block in blocks]
     low, high = _edges(blocks)
     most = largest_order(blocks)
-    best = refine(blocks, first_model(blocks, FIRST_ORDER), iterations=5, tolerance=1.0)
+    first = first_model(blocks, FIRST_ORDER, kind=kind)
+    best = refine(blocks, first, iterations=5, tolerance=1.0)
     for richer_order in LADDER:
         order = min(richer_order, most)
         if order <= best.sections.order or _explained(blocks, best):
             break
-        extra = starting_sections(low, high, order - best.sections.order)
-        richer = _vector_fit(blocks, best.sections.join(extra))
+        extra = kind.like(starting_poles(low, high, order - best.sections.order))
+        richer = _vector_fit(blocks, best.sections.join(extra), RELOCATIONS)
         if criterion(blocks, richer) >= criterion(blocks, best):
             break
         best = refine(blocks, richer, iterations=5, tolerance=1.0)
@@ -179,9 +187,7 @@ def _explained(blocks: Sequence[Block], solution: Solution) -> bool:
     return whiteness.probability > LOOKS_WHITE or whiteness.tendency < 2.0
 
 
-def _vector_fit(
-    blocks: Sequence[Block], start: Sections, relocations: int = RELOCATIONS
-) -> Solution:
+def _vector_fit(blocks: Sequence[Block], start: PoleSet, relocations: int) -> Solution:
     """Relocate a few times and keep the best."""
     sections = start
     best: Solution | None = None
@@ -200,7 +206,7 @@ def _vector_fit(
 def split(blocks: Sequence[Block], solution: Solution) -> Solution:
     """Let real poles of second-order sections stand alone, so that each may be judged."""
     flat = solution.sections.split()
-    if flat.c.size == solution.sections.c.size:
+    if flat is solution.sections:
         return solution
     return solve(blocks, flat, solution.direct)
 
@@ -247,7 +253,7 @@ def prune(blocks: Sequence[Block], start: Solution, places: int) -> Solution:
     return refine(blocks, current, iterations=30, tolerance=1e-2)
 
 
-def keep_limits(blocks: Sequence[Block], sections: Sections, places: int) -> FloatArray:
+def keep_limits(blocks: Sequence[Block], sections: PoleSet, places: int) -> FloatArray:
     """Return the χ² that noise alone might give each section, all its places counted.
 
     A narrow pair could have settled at any frequency of the sweep, a broad one only at as many
@@ -255,21 +261,21 @@ def keep_limits(blocks: Sequence[Block], sections: Sections, places: int) -> Flo
     """
     channels = sum(block.channels for block in blocks)
     low, high = _edges(blocks)
-    width = np.concatenate((np.abs(sections.c1) / 2, np.abs(sections.c)))
-    own = np.clip((high - low) / np.maximum(width, 1e-300), 1.0, float(places))
-    columns = np.where(np.arange(sections.number) < sections.c1.size, 2, 1)
+    width = np.maximum(sections.half_widths(), 1e-300)
+    own = np.minimum(PLACES_PER_WIDTH * (high - low) / width + 1, float(places))
+    columns = np.where(np.arange(sections.number) < sections.twofold, 2, 1)
     limits: FloatArray = scipy.special.chdtri(columns * channels, KEEP_CHANCE / own)
     return limits
 
 
 def _allowed(
-    blocks: Sequence[Block], sections: Sections, take: NDArray[np.intp], limits: FloatArray
+    blocks: Sequence[Block], sections: PoleSet, take: NDArray[np.intp], limits: FloatArray
 ) -> float:
     """Return the rise of χ² that noise alone explains when all of `take` leave at once."""
     if take.size == 1:
         return float(limits[take[0]])
     channels = sum(block.channels for block in blocks)
-    columns = np.where(take < sections.c1.size, 2, 1) * channels
+    columns = np.where(take < sections.twofold, 2, 1) * channels
     chance = scipy.special.chdtrc(columns, limits[take]).min()
     return float(scipy.special.chdtri(columns.sum(), chance))
 
@@ -298,10 +304,11 @@ def grow(blocks: Sequence[Block], start: Solution, places: int) -> Solution:
         place, gain = _best_place(blocks, current, info, frequencies)
         if gain < limit * level:
             break
-        trial = solve(blocks, current.sections.join(from_poles(np.array([place]))), current.direct)
+        more = current.sections.like(np.array([place]))
+        trial = solve(blocks, current.sections.join(more), current.direct)
         trial = refine(blocks, trial, iterations=20, tolerance=0.1)
         trial_info = information(trial)
-        own = trial.sections.c1.size - 1
+        own = trial.sections.twofold - 1
         if section_scores(blocks, trial, trial_info).spared[own] < limit * variance_factor(
             blocks, trial
         ):
@@ -339,6 +346,6 @@ def drop_direct(blocks: Sequence[Block], start: Solution) -> Solution:
     trial = refine(blocks, trial, iterations=8, tolerance=0.1)
     level = variance_factor(blocks, start)
     rise = trial.misfit - start.misfit
-    if rise < level * threshold(channels, 1, KEEP_CHANCE, columns=1):
+    if rise < level * threshold(channels, 1, KEEP_CHANCE, columns=start.sections.direct_columns(1)):
         return trial
     return start

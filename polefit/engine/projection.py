@@ -28,7 +28,7 @@ from polefit.engine.blocks import (
     weighted,
     weighted_parts,
 )
-from polefit.engine.sections import Sections, chain, evaluate, evaluate_with_slopes
+from polefit.engine.pole_set import PoleSet
 
 TIE = 1e-6
 """A column that lies so close to the span of those before it is left to orthogonalisation: the
@@ -67,7 +67,7 @@ class Solution(NamedTuple):
 
     Attributes
     ----------
-    sections : Sections
+    sections : PoleSet
         The poles.
     direct : int
         Number of direct terms for each channel.
@@ -77,13 +77,13 @@ class Solution(NamedTuple):
         χ², the sum of squared weighted residuals; infinite where the model is.
     """
 
-    sections: Sections
+    sections: PoleSet
     direct: int
     parts: tuple[Projected, ...]
     misfit: float
 
 
-def solve(blocks: Sequence[Block], sections: Sections, direct: int) -> Solution:
+def solve(blocks: Sequence[Block], sections: PoleSet, direct: int) -> Solution:
     """Solve for the residues and direct terms of every channel."""
     parts = []
     for block in blocks:
@@ -92,14 +92,14 @@ def solve(blocks: Sequence[Block], sections: Sections, direct: int) -> Solution:
     return Solution(sections, direct, tuple(parts), sum(part.misfit for part in parts))
 
 
-def _by_cholesky(block: Block, sections: Sections, direct: int) -> Projected | None:
+def _by_cholesky(block: Block, sections: PoleSet, direct: int) -> Projected | None:
     """Solve by normal equations with one correction; None where columns nearly tie."""
-    m = sections.order + direct
+    m = sections.order + sections.direct_columns(direct)
     cut = pieces(block)
     kept: list[ComplexArray] = []
     gram, cross = None, None
     for piece in cut:
-        columns = evaluate_with_slopes(sections, piece.s, direct)
+        columns = sections.evaluate_with_slopes(piece.s, direct)
         if len(cut) == 1:
             kept.append(columns)
         rows = weighted(piece, columns)
@@ -117,7 +117,7 @@ def _by_cholesky(block: Block, sections: Sections, direct: int) -> Projected | N
     again = np.zeros_like(cross)
     misfit = 0.0
     for index, piece in enumerate(cut):
-        columns = kept[index] if kept else evaluate_with_slopes(sections, piece.s, direct)
+        columns = kept[index] if kept else sections.evaluate_with_slopes(piece.s, direct)
         rest = piece.target - weighted_parts(piece, coefficients @ columns[:, :m].T)
         misfit += float(np.vdot(rest, rest))
         again += (pulled_back(piece, rest) @ columns).real
@@ -150,12 +150,13 @@ def _normal_solve(factor: FloatArray, right: FloatArray) -> FloatArray:
     return solved
 
 
-def _by_orthogonalisation(block: Block, sections: Sections, direct: int) -> Projected:
-    m, n = sections.order + direct, sections.order
+def _by_orthogonalisation(block: Block, sections: PoleSet, direct: int) -> Projected:
+    n = sections.order
+    m = n + sections.direct_columns(direct)
     r = orthogonal_triangle(
         np.concatenate(
             (
-                weighted(piece, evaluate_with_slopes(sections, piece.s, direct)),
+                weighted(piece, sections.evaluate_with_slopes(piece.s, direct)),
                 piece.target[:, :, np.newaxis],
             ),
             axis=2,
@@ -201,7 +202,7 @@ def regular(r: FloatArray) -> FloatArray:
 
 def model_values(s: ComplexArray, solution: Solution, part: Projected) -> ComplexArray:
     """Return the fitted responses of one block, (K, N)."""
-    values: ComplexArray = part.coefficients @ evaluate(solution.sections, s, solution.direct).T
+    values: ComplexArray = part.coefficients @ solution.sections.evaluate(s, solution.direct).T
     return values
 
 
@@ -222,7 +223,7 @@ def normal_equations(solution: Solution) -> tuple[FloatArray, FloatArray]:
     information = np.zeros((n, n))
     gradient = np.zeros(n)
     for part in solution.parts:
-        slopes, _ = chain(solution.sections, part.coefficients)
+        slopes, _ = solution.sections.chain(part.coefficients)
         flat = (part.inner @ slopes).reshape(part.coefficients.shape[0] * n, n)
         information += flat.T @ flat
         gradient += np.einsum("kdj,kd->j", slopes, part.pull)

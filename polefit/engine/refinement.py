@@ -62,7 +62,7 @@ def refine(
             free = ~confined | (theta > BOUND) | (gradient > 0)
         if not free.any():
             break
-        step, expected = _damped_step(information, gradient, free, damping)
+        step, expected = damped_step(information, gradient, free, damping)
         if expected <= tolerance * best.misfit / count:
             break
         moved = theta + step
@@ -81,7 +81,7 @@ def refine(
     return best
 
 
-def _damped_step(
+def damped_step(
     information: FloatArray, gradient: FloatArray, free: np.ndarray, damping: float
 ) -> tuple[FloatArray, float]:
     """Solve the damped normal equations; also the decrease of χ² that the model expects."""

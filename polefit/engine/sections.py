@@ -8,13 +8,13 @@ Frequencies are normalised: s = jω / (scale of the problem).
 
 from __future__ import annotations
 
+import math
 from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
 
-FloatArray = NDArray[np.float64]
-ComplexArray = NDArray[np.complex128]
+from polefit.engine.pole_set import ComplexArray, FloatArray
 
 
 class Sections(NamedTuple):
@@ -33,6 +33,11 @@ class Sections(NamedTuple):
     c: FloatArray
 
     @property
+    def paired(self) -> bool:
+        """A pole implies its conjugate."""
+        return True
+
+    @property
     def order(self) -> int:
         """Number of poles, 2P + R."""
         return 2 * self.c1.size + self.c.size
@@ -42,6 +47,11 @@ class Sections(NamedTuple):
         """Number of sections, P + R."""
         return self.c1.size + self.c.size
 
+    @property
+    def twofold(self) -> int:
+        """Number of second-order sections, P."""
+        return self.c1.size
+
     def vector(self) -> FloatArray:
         """Return the parameters (c1, c0, c) as one vector of length `order`."""
         return np.concatenate((self.c1, self.c0, self.c))
@@ -50,6 +60,10 @@ class Sections(NamedTuple):
         """Return sections of the same kinds with other parameters."""
         p = self.c1.size
         return Sections(vector[:p], vector[p : 2 * p], vector[2 * p :])
+
+    def like(self, poles: ComplexArray) -> Sections:
+        """Return sections of the given poles; lower ones are implied."""
+        return from_poles(poles)
 
     def weights(self) -> FloatArray:
         """Return the scale √|c0| of each second-order section."""
@@ -75,6 +89,26 @@ class Sections(NamedTuple):
         upper = -flat.c1 / 2 + 1j * np.sqrt(np.maximum(flat.c0 - flat.c1**2 / 4, 0.0))
         return np.concatenate((upper, upper.conj(), -flat.c.astype(np.complex128)))
 
+    def own_poles(self) -> ComplexArray:
+        """Return the upper or real pole of each of the split sections."""
+        flat = self.split()
+        return np.concatenate((flat.poles()[: flat.c1.size], (-flat.c).astype(np.complex128)))
+
+    def place(self, index: int) -> tuple[float, float]:
+        """Return the frequency of a section and the full width of its curve."""
+        if index >= self.c1.size:
+            return 0.0, 2 * abs(float(self.c[index - self.c1.size]))
+        square = self.c0[index] - self.c1[index] ** 2 / 4
+        return math.sqrt(max(square, 0.0)), abs(float(self.c1[index]))
+
+    def sizes(self) -> FloatArray:
+        """Return √|c0| or |c| of each section."""
+        return np.concatenate((self.weights(), np.abs(self.c)))
+
+    def half_widths(self) -> FloatArray:
+        """Return half the width of each section's curve."""
+        return np.concatenate((np.abs(self.c1) / 2, np.abs(self.c)))
+
     def drop(self, index: int) -> Sections:
         """Return the sections without number `index` (second-order ones count first)."""
         p = self.c1.size
@@ -90,6 +124,102 @@ class Sections(NamedTuple):
     def join(self, other: Sections) -> Sections:
         """Return the sections of both."""
         return Sections(*(np.concatenate(pair) for pair in zip(self, other, strict=True)))
+
+    def columns(self, index: int) -> list[int]:
+        """Return the basis columns of one section; see :func:`section_columns`."""
+        return section_columns(self, index)
+
+    def direct_columns(self, terms: int) -> int:
+        """Return how many columns so many direct terms take: one each."""
+        return terms
+
+    def direct_terms(self, coefficients: FloatArray) -> FloatArray:
+        """Return constant and s-proportional term of each channel, zero where left out."""
+        found = np.zeros((len(coefficients), 2))
+        found[:, : coefficients.shape[1] - self.order] = coefficients[:, self.order :]
+        return found
+
+    def evaluate(self, s: ComplexArray, direct: int) -> ComplexArray:
+        """Return the basis; see :func:`evaluate`."""
+        return evaluate(self, s, direct)
+
+    def evaluate_with_slopes(self, s: ComplexArray, direct: int) -> ComplexArray:
+        """Return basis and derivative functions; see :func:`evaluate_with_slopes`."""
+        return evaluate_with_slopes(self, s, direct)
+
+    def chain(self, coefficients: FloatArray) -> tuple[FloatArray, FloatArray]:
+        """Return the coefficients of the derivatives; see :func:`chain`."""
+        return chain(self, coefficients)
+
+    def residue_columns(self, s: ComplexArray, poles: ComplexArray) -> ComplexArray:
+        """Return what the real, then the imaginary part of each pair's residue adds at `s`.
+
+        `poles` are the upper ones; a residue x + jy adds x·(2s − 2·Re p)/q − y·2·Im p/q.
+        """
+        count = self.c1.size
+        columns = evaluate(self, s, 0)
+        along, across = columns[:, :count], columns[:, count:] / self.weights()
+        parts = (2 * along - 2 * poles.real * across, -2 * poles.imag * across)
+        return np.concatenate(parts, axis=1)
+
+    def residues(self, coefficients: FloatArray) -> ComplexArray:
+        """Return the residues at :meth:`poles`; see :func:`residues`."""
+        return residues(self, coefficients)
+
+    def own_residues(self, coefficients: FloatArray) -> ComplexArray:
+        """Return the residues at :meth:`own_poles`."""
+        listed, p = residues(self, coefficients), self.c1.size
+        return np.concatenate((listed[:p], listed[2 * p :]))
+
+    def pole_gradient(self, index: int) -> FloatArray:
+        """Differentiate (Re, Im) of a section's pole by its parameters."""
+        if index >= self.c1.size:
+            return np.array([[-1.0], [0.0]])
+        omega = self.place(index)[0]
+        return np.array([[-0.5, 0.0], [-self.c1[index] / (4 * omega), 1 / (2 * omega)]])
+
+    def residue_gradient(self, coefficients: FloatArray, index: int) -> FloatArray:
+        """Differentiate (Re, Im) of a residue by (coefficients, parameters), for K channels."""
+        return residue_gradient(self, coefficients, index)
+
+    def companion(self, weights: FloatArray) -> FloatArray:
+        """Return the matrix whose eigenvalues are the zeros of Σ weights·basis + the last.
+
+        Each second-order section is realised with the states (s/q, √|c0|/q), so that the zeros
+        are the eigenvalues of A − b·cᵀ/d.
+        """
+        p, r, n = self.c1.size, self.c.size, self.order
+        scale = self.weights()
+        matrix = np.zeros((n, n))
+        index = np.arange(p)
+        matrix[index, index] = -self.c1
+        matrix[index, p + index] = -self.c0 / scale
+        matrix[p + index, index] = scale
+        tail = 2 * p + np.arange(r)
+        matrix[tail, tail] = -self.c
+        drive = np.concatenate((np.ones(p), np.zeros(p), np.ones(r)))
+        matrix -= np.outer(drive, weights[:-1] / weights[-1])
+        return matrix
+
+    def half_plane(self) -> NDArray[np.bool_]:
+        """All coefficients are positive where all poles lie in the left half-plane."""
+        return np.ones(self.order, dtype=bool)
+
+    def reflected(self) -> Sections:
+        """Return the sections with every coefficient made positive."""
+        return self.with_vector(np.abs(self.vector()))
+
+    def on_axis(self, least: float) -> Sections:
+        """Return the sections with right-half-plane poles moved to the axis."""
+        return Sections(
+            np.maximum(self.c1, 1e-9 * np.sqrt(np.abs(self.c0))),
+            np.maximum(np.abs(self.c0), least),
+            np.maximum(self.c, least),
+        )
+
+
+NONE = Sections(np.zeros(0), np.zeros(0), np.zeros(0))
+"""No poles, of this kind."""
 
 
 def from_poles(poles: ComplexArray) -> Sections:
@@ -238,3 +368,32 @@ def residues(sections: Sections, coefficients: FloatArray) -> ComplexArray:
     pair = (along * upper + across) / (2j * omega)
     real = coefficients[:, 2 * p : 2 * p + r].astype(np.complex128)
     return np.concatenate((pair, pair.conj(), real), axis=1).T
+
+
+def residue_gradient(sections: Sections, coefficients: FloatArray, index: int) -> FloatArray:
+    """Differentiate (Re, Im) of a residue by (coefficients, pole parameters), for K channels."""
+    channels = coefficients.shape[0]
+    if index >= sections.c1.size:
+        gradient = np.zeros((channels, 2, 2))
+        gradient[:, 0, 0] = 1.0
+        return gradient
+    c1, c0 = sections.c1[index], sections.c0[index]
+    omega = math.sqrt(c0 - c1**2 / 4)
+    pole = complex(-c1 / 2, omega)
+    scale = math.sqrt(abs(c0))
+    a, b = coefficients[:, 0], coefficients[:, 1]
+    top = a * pole + b * scale
+    omega_c1, omega_c0 = -c1 / (4 * omega), 1 / (2 * omega)
+    pole_c1, pole_c0 = complex(-0.5, omega_c1), complex(0.0, omega_c0)
+    below = 2j * omega
+    slopes = np.stack(
+        (
+            np.full(channels, pole / below),
+            np.full(channels, scale / below),
+            a * pole_c1 / below - top / below * omega_c1 / omega,
+            # √c0 in the second basis column varies with c0, but b·√c0 is what the data fix
+            a * pole_c0 / below - top / below * omega_c0 / omega,
+        ),
+        axis=1,
+    )
+    return np.stack((slopes.real, slopes.imag), axis=1)

@@ -9,7 +9,6 @@ alternative", Biometrika 64(2), 247-254, 1977, from memory).
 
 from __future__ import annotations
 
-import math
 from collections.abc import Sequence
 from typing import NamedTuple, cast
 
@@ -26,15 +25,8 @@ from polefit.engine.blocks import (
     weighted,
     weighted_parts,
 )
+from polefit.engine.pole_set import PoleSet
 from polefit.engine.projection import Projected, Solution, normal_equations, residual
-from polefit.engine.sections import (
-    Sections,
-    chain,
-    evaluate,
-    evaluate_with_slopes,
-    from_poles,
-    section_columns,
-)
 
 
 class Linear(NamedTuple):
@@ -71,7 +63,7 @@ def information(solution: Solution) -> Information:
     """Collect the Fisher information of a solution."""
     linear = []
     for part in solution.parts:
-        slopes, along = chain(solution.sections, part.coefficients)
+        slopes, along = solution.sections.chain(part.coefficients)
         identity = np.eye(part.factor.shape[1])[np.newaxis]
         inverse = cast(FloatArray, np.linalg.solve(part.factor, identity))
         linear.append(Linear(inverse, inverse @ (part.coupling @ slopes) + along))
@@ -104,7 +96,7 @@ def leverage(blocks: Sequence[Block], solution: Solution, info: Information) -> 
     spread = vectors * np.sqrt(np.maximum(values, 0.0))
     found = []
     for block, part, linear in zip(blocks, solution.parts, info.linear, strict=True):
-        slopes, _ = chain(solution.sections, part.coefficients)
+        slopes, _ = solution.sections.chain(part.coefficients)
         m = part.factor.shape[1]
         moved = slopes @ spread
         tied = -linear.inverse @ (part.coupling @ moved)
@@ -112,7 +104,7 @@ def leverage(blocks: Sequence[Block], solution: Solution, info: Information) -> 
         mix = np.block([[linear.inverse, tied], [below, moved]])
         followed = []
         for piece in pieces(block):
-            columns = evaluate_with_slopes(solution.sections, piece.s, solution.direct)
+            columns = solution.sections.evaluate_with_slopes(piece.s, solution.direct)
             share = np.sum((weighted(piece, columns) @ mix) ** 2, axis=2)
             followed.append(share.reshape(block.channels, 2, -1))
         found.append(np.minimum(np.concatenate(followed, axis=2), 1.0))
@@ -151,7 +143,7 @@ def section_scores(
     Samples are not looked at where the whole score is below `least` already.
     """
     sections = solution.sections
-    p, n = sections.c1.size, sections.order
+    p, n = sections.twofold, sections.order
     pairs = np.stack((np.arange(p), np.arange(p, 2 * p)), axis=1)
     full = np.concatenate(
         (_wald(solution, info, pairs), _wald(solution, info, np.arange(2 * p, n)[:, np.newaxis]))
@@ -203,17 +195,17 @@ def _wald(solution: Solution, info: Information, columns: NDArray[np.intp]) -> F
 
 def joint_score(solution: Solution, info: Information, sections: Sequence[int]) -> float:
     """Return the Wald χ² of the residues of several sections together."""
-    columns = [c for index in sections for c in section_columns(solution.sections, index)]
+    columns = [c for index in sections for c in solution.sections.columns(index)]
     return float(_wald(solution, info, np.array([columns]))[0])
 
 
-def _narrow(blocks: Sequence[Block], sections: Sections, index: int) -> bool:
+def _narrow(blocks: Sequence[Block], sections: PoleSet, index: int) -> bool:
     """Tell whether a pair is so narrow that a few samples alone could have made it."""
-    if index >= sections.c1.size:
+    if index >= sections.twofold:
         return False
-    omega = math.sqrt(max(sections.c0[index] - sections.c1[index] ** 2 / 4, 0.0))
+    omega, width = sections.place(index)
     step = min(float(step_at(block.s.imag, np.array([omega]))[0]) for block in blocks)
-    return abs(float(sections.c1[index])) < NARROW_STEPS * step
+    return width < NARROW_STEPS * step
 
 
 def step_at(axis: FloatArray, omega: FloatArray) -> FloatArray:
@@ -233,7 +225,7 @@ def _concentration(
     blocks: Sequence[Block], solution: Solution, info: Information, index: int
 ) -> float:
     """Share of a section's evidence that its most telling samples carry."""
-    columns = section_columns(solution.sections, index)
+    columns = solution.sections.columns(index)
     energies = []
     for block, part, linear in zip(blocks, solution.parts, info.linear, strict=True):
         rows = linear.inverse[:, columns, :]
@@ -244,7 +236,7 @@ def _concentration(
         solved = np.linalg.solve(covariance, part.coefficients[:, columns, np.newaxis])
         direction = (linear.inverse @ (rows.transpose(0, 2, 1) @ solved))[:, :, 0]
         for piece in pieces(block):
-            basis = evaluate(solution.sections, piece.s, solution.direct)
+            basis = solution.sections.evaluate(piece.s, solution.direct)
             seen = weighted_parts(piece, direction @ basis.T)
             half = seen.shape[1] // 2
             energies.append(np.sum(seen[:, :half] ** 2 + seen[:, half:] ** 2, axis=0))
@@ -289,7 +281,7 @@ def scan(
     Scan
     """
     count = trial_poles.size
-    trial: Sections = from_poles(trial_poles)
+    trial = solution.sections.like(trial_poles)
     pole_covariance = invert(info.poles)
     gain = np.zeros(count)
     found: list[FloatArray] = []
@@ -297,7 +289,7 @@ def scan(
         products = _products(block, solution, part, trial, trial_poles)
         m = part.factor.shape[1]
         tied = linear.inverse.transpose(0, 2, 1) @ products.with_model[:, :m]
-        slopes, _ = chain(solution.sections, part.coefficients)
+        slopes, _ = solution.sections.chain(part.coefficients)
         free = products.with_model[:, m:] - part.coupling.transpose(0, 2, 1) @ tied
         shared = slopes.transpose(0, 2, 1) @ free
         moved = pole_covariance @ shared
@@ -327,21 +319,17 @@ class _Products(NamedTuple):
 
 
 def _products(
-    block: Block, solution: Solution, part: Projected, trial: Sections, poles: ComplexArray
+    block: Block, solution: Solution, part: Projected, trial: PoleSet, poles: ComplexArray
 ) -> _Products:
     """Accumulate the products over the pieces of a block, all channels at once."""
-    channels, count = block.channels, poles.size
+    channels, count = block.channels, trial.number
     inner = part.factor.shape[1] + solution.sections.order
     own, cross = np.zeros((channels, 2 * count)), np.zeros((channels, count))
     with_model = np.zeros((channels, inner, 2 * count))
     with_residual = np.zeros((channels, 2 * count))
-    scale = trial.weights()
     for piece in pieces(block, shared=4 * count):
-        columns = evaluate(trial, piece.s, 0)
-        along, across = columns[:, :count], columns[:, count:] / scale
-        # residue x + jy  ->  x·(2s/q − 2·Re p/q) − y·2·Im p/q
-        x = np.concatenate((2 * along - 2 * poles.real * across, -2 * poles.imag * across), axis=1)
-        model = evaluate_with_slopes(solution.sections, piece.s, solution.direct)
+        x = trial.residue_columns(piece.s, poles)
+        model = solution.sections.evaluate_with_slopes(piece.s, solution.direct)
         rest = residual(piece, solution, part)
         # Σ w₁²·Re(t·a)·Re(t·b) + w₂²·Im(t·a)·Im(t·b) = Σ even·Re(ā·b) + Re(odd·a·b)
         even = (piece.weight[:, 0] ** 2 + piece.weight[:, 1] ** 2) / 2

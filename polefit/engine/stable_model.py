@@ -10,9 +10,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from polefit.engine.blocks import Block, samples
+from polefit.engine.pole_set import PoleSet
 from polefit.engine.projection import Solution, solve
 from polefit.engine.refinement import BOUND, refine
-from polefit.engine.sections import Sections
 
 FAR = 100.0
 """χ² so many times that of the free model needs no polish: nobody would call it a tie."""
@@ -38,27 +38,23 @@ class StableModel(NamedTuple):
     order: int
 
 
-def reflected(sections: Sections, exempt: NDArray[np.bool_]) -> Sections:
-    """Return the sections with every coefficient made positive: a start, not an answer."""
-    theta = sections.vector()
-    positive = np.maximum(np.abs(theta), BOUND)
-    return sections.with_vector(np.where(_parameters_of(sections, exempt), theta, positive))
+def reflected(sections: PoleSet, exempt: NDArray[np.bool_]) -> PoleSet:
+    """Return the sections with every growing pole mirrored: a start, not an answer."""
+    positive = np.maximum(sections.reflected().vector(), BOUND)
+    return sections.with_vector(np.where(_bounded(sections, exempt), positive, sections.vector()))
 
 
-def on_axis(sections: Sections, exempt: NDArray[np.bool_]) -> Sections:
-    """Return the sections with right-half-plane pairs moved to the axis: another start."""
-    moved = Sections(
-        np.maximum(sections.c1, 1e-9 * np.sqrt(np.abs(sections.c0))),
-        np.maximum(np.abs(sections.c0), BOUND),
-        np.maximum(sections.c, BOUND),
-    )
-    keep = _parameters_of(sections, exempt)
-    return sections.with_vector(np.where(keep, sections.vector(), moved.vector()))
+def on_axis(sections: PoleSet, exempt: NDArray[np.bool_]) -> PoleSet:
+    """Return the sections with right-half-plane poles moved to the axis: another start."""
+    moved = sections.on_axis(BOUND).vector()
+    return sections.with_vector(np.where(_bounded(sections, exempt), moved, sections.vector()))
 
 
-def _parameters_of(sections: Sections, which: NDArray[np.bool_]) -> NDArray[np.bool_]:
-    pairs = sections.c1.size
-    return np.concatenate((which[:pairs], which[:pairs], which[pairs:]))
+def _bounded(sections: PoleSet, exempt: NDArray[np.bool_]) -> NDArray[np.bool_]:
+    """Tell which parameters are to be kept positive: those of the half-plane, but for `exempt`."""
+    pairs = sections.twofold
+    spared = np.concatenate((exempt[:pairs], exempt[:pairs], exempt[pairs:]))
+    return sections.half_plane() & ~spared
 
 
 def compare_with_stable(
@@ -88,7 +84,7 @@ def compare_with_stable(
     -------
     StableModel
     """
-    rise, ratio, order = math.inf, math.inf, free.sections.order
+    rise, ratio, order = math.inf, math.inf, free.sections.poles().size
     starts = [(reflected, free), (on_axis, free), *((reflected, one) for one in richer)]
     for number, (bring, solution) in enumerate(starts):
         if ratio**2 > (FAR**3, FAR)[number > 1] and number > 0:
@@ -99,21 +95,20 @@ def compare_with_stable(
         confined = _confine(blocks, bring(sections, spared), spared, base)
         if confined.misfit - base.misfit < rise * level:
             rise = (confined.misfit - base.misfit) / level
-            order = confined.sections.order
+            order = confined.sections.poles().size
         ratio = min(ratio, math.sqrt(confined.misfit / max(base.misfit, 1e-300)))
     return StableModel(ratio, rise, order)
 
 
-def _again(blocks: Sequence[Block], sections: Sections, direct: int) -> Solution:
+def _again(blocks: Sequence[Block], sections: PoleSet, direct: int) -> Solution:
     """Return the free model of the same order, refined alike: more poles fit noise better, too."""
     return refine(blocks, solve(blocks, sections, direct), iterations=20, tolerance=0.1)
 
 
-def _spared(sections: Sections, exempt: Sequence[complex]) -> NDArray[np.bool_]:
+def _spared(sections: PoleSet, exempt: Sequence[complex]) -> NDArray[np.bool_]:
     """Tell which sections hold the poles that are exempt, or what is left of them."""
     spared = np.zeros(sections.number, dtype=bool)
-    pairs, poles = sections.c1.size, sections.poles()
-    own = np.concatenate((poles[:pairs], poles[2 * pairs :]))
+    own = sections.own_poles()
     for pole in exempt:
         distance = np.abs(own - pole)
         if distance.size and distance.min() < abs(pole.real):
@@ -122,11 +117,11 @@ def _spared(sections: Sections, exempt: Sequence[complex]) -> NDArray[np.bool_]:
 
 
 def _confine(
-    blocks: Sequence[Block], start: Sections, spared: NDArray[np.bool_], free: Solution
+    blocks: Sequence[Block], start: PoleSet, spared: NDArray[np.bool_], free: Solution
 ) -> Solution:
     """Fit with bounds; finely only where the confined model comes near the free one."""
     solution = solve(blocks, start, free.direct)
-    bounds = ~_parameters_of(start, spared)
+    bounds = _bounded(start, spared)
     coarse = COARSE * samples(blocks)
     solution = refine(blocks, solution, iterations=25, tolerance=coarse, confined=bounds)
     if solution.misfit > FAR * free.misfit:

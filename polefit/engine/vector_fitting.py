@@ -10,31 +10,40 @@ Components Letters 18(6), 383-385, 2008.
 from __future__ import annotations
 
 from collections.abc import Sequence
+from typing import TypeVar
 
 import numpy as np
 import scipy.linalg
 
-from polefit.engine.blocks import Block, FloatArray, pieces, weighted
+from polefit.engine.blocks import Block, ComplexArray, FloatArray, pieces, weighted
+from polefit.engine.pole_set import PoleSet
 from polefit.engine.projection import cholesky, orthogonal_triangle
-from polefit.engine.sections import Sections, evaluate, from_poles
+from polefit.engine.sections import Sections, from_poles
+
+Poles = TypeVar("Poles", bound=PoleSet)
 
 
 def starting_sections(low: float, high: float, order: int, damping: float = 0.01) -> Sections:
-    """Return lightly damped pairs spread over a band.
+    """Return lightly damped pairs spread over a band; see :func:`starting_poles`."""
+    return from_poles(starting_poles(low, high, order, damping))
+
+
+def starting_poles(low: float, high: float, order: int, damping: float = 0.01) -> ComplexArray:
+    """Spread lightly damped poles over a band.
 
     Parameters
     ----------
     low, high : float
         Band edges, normalised rad/s.
     order : int
-        Number of poles; an odd one adds a real pole.
+        Twice the number of upper poles; an odd one adds a real pole.
     damping : float
-        Damping ratio of the pairs.
+        Damping ratio of the poles.
 
     Returns
     -------
-    Sections
-        Evenly spaced pairs; half of them logarithmically when the band spans over a decade.
+    (n,) complex ndarray
+        Evenly spaced upper poles; half of them logarithmically when the band spans over a decade.
     """
     pairs = max(order // 2, 0)
     low = max(low, high * 1e-7)
@@ -46,24 +55,24 @@ def starting_sections(low: float, high: float, order: int, damping: float = 0.01
         spread = spread * (1 + 1e-3 * np.arange(pairs) / max(pairs, 1))
     poles = spread * (-damping + 1j)
     real = [-high / 2] if order % 2 else []
-    return from_poles(np.concatenate((poles, np.asarray(real, dtype=np.complex128))))
+    return np.concatenate((poles, np.asarray(real, dtype=np.complex128)))
 
 
-def relocate(blocks: Sequence[Block], sections: Sections, direct: int) -> Sections:
+def relocate(blocks: Sequence[Block], sections: Poles, direct: int) -> Poles:
     """Move the poles once: the new poles are the zeros of the relaxed weighting function.
 
     Parameters
     ----------
     blocks : sequence of Block
         Data.
-    sections : Sections
+    sections : PoleSet
         Current poles.
     direct : int
         0, 1 or 2 direct terms for each channel.
 
     Returns
     -------
-    Sections
+    PoleSet
         As many poles as before, wherever they fall.
     """
     unknowns = sections.order + 1
@@ -72,7 +81,7 @@ def relocate(blocks: Sequence[Block], sections: Sections, direct: int) -> Sectio
     total = 0.0
     for block in blocks:
         for piece in pieces(block):
-            constraint[:-1] += evaluate(sections, piece.s, 0).real.sum(axis=0)
+            constraint[:-1] += sections.evaluate(piece.s, 0).real.sum(axis=0)
         constraint[-1] += block.s.size
         total += float(np.vdot(block.target, block.target))
     stacked = np.concatenate(triangles, axis=0)
@@ -89,9 +98,9 @@ def relocate(blocks: Sequence[Block], sections: Sections, direct: int) -> Sectio
     return zeros_of_weighting(sections, weights)
 
 
-def _reduced(block: Block, sections: Sections, direct: int) -> FloatArray:
+def _reduced(block: Block, sections: PoleSet, direct: int) -> FloatArray:
     """Triangular factors that remain of the shared unknowns, channels stacked."""
-    n = sections.order
+    first = sections.order + sections.direct_columns(direct)
     grams, parts = None, pieces(block)
     for piece in parts:
         rows = _rows(piece, sections, direct)
@@ -101,12 +110,12 @@ def _reduced(block: Block, sections: Sections, direct: int) -> FloatArray:
     factor = cholesky(grams)
     if factor is None:
         factor = orthogonal_triangle(_rows(piece, sections, direct) for piece in parts)
-    return factor[:, n + direct :, n + direct :].reshape(-1, n + 1)
+    return factor[:, first:, first:].reshape(-1, sections.order + 1)
 
 
-def _rows(block: Block, sections: Sections, direct: int) -> FloatArray:
+def _rows(block: Block, sections: PoleSet, direct: int) -> FloatArray:
     """Weighted rows of the basis and of −H times the weighting function's columns."""
-    basis = evaluate(sections, block.s, direct)
+    basis = sections.evaluate(block.s, direct)
     m = basis.shape[1]
     columns = np.empty((block.channels, block.s.size, m + sections.order + 1), dtype=np.complex128)
     columns[:, :, :m] = basis
@@ -116,22 +125,6 @@ def _rows(block: Block, sections: Sections, direct: int) -> FloatArray:
     return weighted(block, columns)
 
 
-def zeros_of_weighting(sections: Sections, weights: FloatArray) -> Sections:
-    """Return the zeros of Σ weights·basis + constant as sections.
-
-    Each second-order section is realised with the states (s/q, √|c0|/q), so that the zeros are
-    the eigenvalues of A − b·cᵀ/d.
-    """
-    p, r = sections.c1.size, sections.c.size
-    n = sections.order
-    scale = sections.weights()
-    matrix = np.zeros((n, n))
-    index = np.arange(p)
-    matrix[index, index] = -sections.c1
-    matrix[index, p + index] = -sections.c0 / scale
-    matrix[p + index, index] = scale
-    tail = 2 * p + np.arange(r)
-    matrix[tail, tail] = -sections.c
-    drive = np.concatenate((np.ones(p), np.zeros(p), np.ones(r)))
-    matrix -= np.outer(drive, weights[:-1] / weights[-1])
-    return from_poles(scipy.linalg.eigvals(matrix, check_finite=False))
+def zeros_of_weighting(sections: Poles, weights: FloatArray) -> Poles:
+    """Return the zeros of Σ weights·basis + constant as sections."""
+    return sections.like(scipy.linalg.eigvals(sections.companion(weights), check_finite=False))

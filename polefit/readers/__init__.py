@@ -47,6 +47,7 @@ def read(
     angle_unit: Literal["deg", "rad"] | None = None,
     scaling: Literal["normalised", "absolute"] | None = None,
     reference_ohm: float | None = None,
+    pump_hz: float | None = None,
 ) -> ResponseSet:
     """Read a file exported from a circuit simulator.
 
@@ -81,6 +82,9 @@ def read(
         Whether Z, Y, H, G numbers of a Touchstone 1.x file are normalised to the reference.
     reference_ohm : float, optional
         Reference resistance, where scattering data do not say, or to convert into them.
+    pump_hz : float, optional
+        Frequency of the periodic drive, in hertz, where the file holds small-signal responses of
+        a circuit under large drive: few formats can say it.
 
     Returns
     -------
@@ -116,6 +120,7 @@ def read(
         angle_unit=angle_unit,
         scaling=scaling,
         reference_ohm=reference_ohm,
+        pump_hz=pump_hz,
     ).responses
 
 
@@ -242,7 +247,7 @@ def _finished(
     parsed: Parsed, format_: Format, options: ReadOptions, name: str, digest: str
 ) -> Parsed:
     """Convert and select as asked, and tell where the responses came from."""
-    responses = parsed.responses
+    responses = _driven(parsed.responses, options.pump_hz, name)
     assumptions = (*format_.assumptions, *parsed.assumptions)
     if format_.module not in _SETTLE_THEMSELVES:
         try:
@@ -259,6 +264,17 @@ def _finished(
         assumptions=(*assumptions, *parsed.warnings),
     )
     return replace(parsed, responses=replace(responses, source=source), assumptions=assumptions)
+
+
+def _driven(responses: ResponseSet, pump_hz: float | None, name: str) -> ResponseSet:
+    """State the periodic drive, before anything is converted."""
+    if pump_hz is None or responses.pump_hz == pump_hz:
+        return responses
+    if responses.pump_hz is not None:
+        raise ArgumentError(
+            f"{name}: pump_hz: the file states a drive at {responses.pump_hz:.12g} Hz; leave it out"
+        )
+    return replace(responses, pump_hz=pump_hz)
 
 
 def _converted(responses: ResponseSet, options: ReadOptions) -> tuple[ResponseSet, tuple[str, ...]]:

@@ -139,6 +139,8 @@ class ReadOptions:
         Whether Z, Y, H, G numbers of a Touchstone 1.x file are normalised to the reference.
     reference_ohm : float, optional
         Reference resistance, where scattering data do not say, or to convert into them.
+    pump_hz : float, optional
+        Frequency of the periodic drive under which the circuit was simulated.
 
     Raises
     ------
@@ -157,6 +159,7 @@ class ReadOptions:
     angle_unit: Literal["deg", "rad"] | None = None
     scaling: Literal["normalised", "absolute"] | None = None
     reference_ohm: float | None = None
+    pump_hz: float | None = None
 
     def __post_init__(self) -> None:
         for name, allowed in _ALLOWED.items():
@@ -176,10 +179,13 @@ class ReadOptions:
         if self.reference_ohm is not None:
             ohm = as_positive("reference_ohm", self.reference_ohm, "resistance; give ohms")
             object.__setattr__(self, "reference_ohm", ohm)
+        if self.pump_hz is not None:
+            pump_hz = as_positive("pump_hz", self.pump_hz, "frequency; give hertz")
+            object.__setattr__(self, "pump_hz", pump_hz)
 
     def refuse_unused(self, used: Iterable[str], format_name: str) -> None:
         """Raise ArgumentError for an option that has no meaning for this format."""
-        known = {*used, "quantity", "select"}
+        known = {*used, "quantity", "select", "pump_hz"}
         for option in fields(self):
             if getattr(self, option.name) is not None and option.name not in known:
                 raise ArgumentError(

@@ -56,7 +56,17 @@ def _grows(mode: Mode) -> bool:
 
 
 def loads(result: Identification) -> str:
-    """Say how the ports are terminated where the probe itself terminates them; or nothing."""
+    """Say how the probe itself terminates the ports, and under which drive; or nothing."""
+    return _terminations(result) + driven(result)
+
+
+def driven(result: Identification) -> str:
+    """Name the periodic drive; nothing without one."""
+    pump = result.pump_hz
+    return "" if pump is None else f" under the drive at {si(pump, 'Hz', 5)}"
+
+
+def _terminations(result: Identification) -> str:
     if result.quantity == "admittance":
         return " with every port shorted"
     if result.quantity == "scattering":
@@ -86,8 +96,9 @@ def growth(mode: Mode) -> str:
     time = si(1 / mode.growth_rate_per_s.value, "s", 3, keep_zeros=True)
     if mode.real:
         return f"a real pole grows without ringing, time constant {time}"
+    half = ", half the drive's frequency," if mode.subharmonic else ""
     return (
-        f"a mode at {label(mode, 5)} grows with time constant {time} "
+        f"a mode at {label(mode, 5)}{half} grows with time constant {time} "
         f"(damping ratio {brief(mode.damping_ratio)})"
     )
 

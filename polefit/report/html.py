@@ -144,26 +144,24 @@ def _mode(mode: Mode, full: bool) -> dict[str, Any]:
     strengths = nodes.node_strengths(mode)
     shown = ", ".join(phrases.plain(s.brief, 40) for s in strengths[:4])
     rest = len(strengths) - 4
+    seen = wording.sightings(mode)
     ratio = mode.damping_ratio
     sharp = ratio.std is not None and ratio.std < 1e-4 * abs(ratio.value)
     interval = ""
     if ratio.low is not None and ratio.high is not None and not mode.real and not sharp:
         interval = f"{_limit(ratio.low, ratio.std)} to {_limit(ratio.high, ratio.std)}"
-    frequency = phrases.uncrowded(mode.frequency_hz.text("Hz"))
-    if mode.real:
-        frequency = f"{phrases.hertz(mode.natural_frequency_hz.value, 5)}, real pole"
     return {
         "verdict": mode.verdict,
         "sign": SIGNS[mode.verdict],
         "word": mode.verdict,
         "in_band": mode.in_band,
-        "frequency": frequency,
+        "frequency": phrases.rings_at(mode),
         "damping": si(ratio.value) if mode.real else phrases.uncrowded(ratio.text()),
         "interval": interval,
         "time": f"{phrases.trend(mode)}, {phrases.time_constant(mode)}",
         "probability": phrases.probability(mode.probability_unstable),
         "full": full,
-        "nodes": shown + (f" and {rest} more" if rest > 0 else ""),
+        "nodes": (f"{seen}; " if seen else "") + shown + (f" and {rest} more" if rest > 0 else ""),
     }
 
 
@@ -192,7 +190,7 @@ def view_of(result: Identification, prefix: str) -> dict[str, Any]:
         else svg(plot_detection(result), f"{prefix}d", "Detection limit"),
         "limit": phrases.glued(phrases.capital(limits.detection_limit(result) or "")),
         "limits": limits.channel_rows(result),
-        "ohms": result.quantity == "impedance" and any(c.driving_point for c in result.channels),
+        "ohms": result.detection is not None and not np.isnan(result.detection.leverage).all(),
         "basis": [(head, phrases.glued(text)) for head, text in wording.basis(result)],
         "notes": [phrases.plain(n, 2000) for n in wording.notes(result)],
         "background": [wording.background_row(p) for p in result.background],

@@ -144,6 +144,9 @@ def _fit(fit: FitQuality) -> dict[str, Any]:
 
 def mode_dict(mode: Mode) -> dict[str, Any]:
     """Return a mode as dictionaries, lists, strings and numbers; not all need be finite."""
+    folded: dict[str, Any] = {}
+    if mode.subharmonic is not None:
+        folded = {"subharmonic": mode.subharmonic, "seen_hz": list(mode.seen_hz)}
     return {
         "frequency_hz": mode.frequency_hz.to_dict(),
         "natural_frequency_hz": mode.natural_frequency_hz.to_dict(),
@@ -160,6 +163,7 @@ def mode_dict(mode: Mode) -> dict[str, Any]:
             {"name": e.name, "passed": e.passed, "detail": e.detail} for e in mode.evidence
         ],
         "nodes": [_node(view) for view in mode.nodes],
+        **folded,
     }
 
 

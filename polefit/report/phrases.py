@@ -106,6 +106,15 @@ def natural(mode: Mode) -> str:
     return uncrowded(mode.natural_frequency_hz.text("Hz")) if words == si(value, "Hz") else words
 
 
+def rings_at(mode: Mode) -> str:
+    """Write the frequency of a mode for a table."""
+    if mode.real:
+        return f"{hertz(mode.natural_frequency_hz.value, 5)}, real pole"
+    if mode.subharmonic:
+        return f"{hertz(mode.frequency_hz.value, 7)}, drive/2"
+    return uncrowded(mode.frequency_hz.text("Hz"))
+
+
 def brief(estimate: Estimate) -> str:
     """Write an estimate for a sentence: a very sharp one is rounded to four digits."""
     if estimate.std is not None and estimate.std < 1e-6 * abs(estimate.value):

@@ -14,8 +14,9 @@ from matplotlib.ticker import FixedLocator, FuncFormatter, NullLocator
 from matplotlib.transforms import Bbox
 from numpy.typing import NDArray
 
+from polefit.analysis.folding import coverage
 from polefit.estimates import si
-from polefit.modes import Identification, Mode
+from polefit.modes import BackgroundPole, Identification, Mode
 from polefit.report import drawing, phrases, units, wording
 
 CHI_SQUARE_95 = 5.991  # two degrees of freedom
@@ -51,7 +52,7 @@ def plot_poles(result: Identification, *, ax: Axes | None = None) -> Axes:
     _sides(ax, bottom)
     _band_limits(ax, result, low, high)
     hidden = 0
-    for pole in result.background:
+    for pole in _spare(result):
         x, y = _place(pole.pole_rad_per_s)
         if low <= x <= high:
             look = drawing.BACKGROUND
@@ -63,6 +64,11 @@ def plot_poles(result: Identification, *, ax: Axes | None = None) -> Axes:
     _label_modes(ax, result)
     _legend(ax, result, hidden)
     return ax
+
+
+def _spare(result: Identification) -> list[BackgroundPole]:
+    """Return the poles that are not claimed; negative frequencies of driven circuits left out."""
+    return [p for p in result.background if p.pole_rad_per_s.imag >= 0]
 
 
 def _place(pole: complex) -> tuple[float, float]:
@@ -92,7 +98,7 @@ def _damping_axis(ax: Axes, result: Identification) -> float:
     smallest = min([n for n in near if n > 0], default=0.01)
     inner = 10.0 ** min(max(math.floor(math.log10(smallest)), -9), -2)
     drawn = [m.damping_ratio.value for m in result.modes]
-    drawn += [_place(p.pole_rad_per_s)[1] for p in result.background]
+    drawn += [_place(p.pole_rad_per_s)[1] for p in _spare(result)]
     spread = [2.5 * (m.damping_ratio.std or 0.0) for m in result.modes]
     lowest = min([v - s for v, s in zip(drawn, spread + [0.0] * len(drawn), strict=False)] + [0.0])
     bottom = -min(_DAMPED, max(5 * inner, -3 * lowest))
@@ -134,7 +140,8 @@ def _sides(ax: Axes, bottom: float) -> None:
 
 
 def _band_limits(ax: Axes, result: Identification, low: float, high: float) -> None:
-    for edge in result.band_hz:
+    pump = result.pump_hz
+    for edge in result.band_hz if pump is None else coverage(result.band_hz, pump):
         if low < edge < high:
             ax.axvline(edge, color=drawing.FAINT, linestyle=(0, (4, 3)), linewidth=1.0, zorder=1)
 

@@ -282,18 +282,19 @@ def mark_modes(ax: Axes, result: Identification, low: float, high: float, *, num
     taken: list[float] = []
     marked = []
     for i, mode in enumerate(result.modes):
-        frequency = mode.frequency_hz.value
-        if mode.real or not low <= frequency <= high:
-            continue
         if i not in suspects and mode.damping_ratio.value > _BROAD:
             continue
-        place = float(ax.transAxes.inverted().transform(ax.transData.transform((frequency, 1)))[0])
-        free = all(abs(place - other) > _NUMBER_WIDTH for other in taken)
-        taken += [place] if free else []
-        marked.append((i, mode, free))
-    for i, mode, free in reversed(marked):
+        # under a periodic drive a mode shows elsewhere than at its folded frequency, and more often
+        for frequency in mode.seen_hz or (() if mode.real else (mode.frequency_hz.value,)):
+            if not low <= frequency <= high:
+                continue
+            point = ax.transData.transform((frequency, 1))
+            place = float(ax.transAxes.inverted().transform(point)[0])
+            free = all(abs(place - other) > _NUMBER_WIDTH for other in taken)
+            taken += [place] if free else []
+            marked.append((i, mode, frequency, free))
+    for i, mode, frequency, free in reversed(marked):
         look = drawing.LOOKS[mode.verdict]
-        frequency = mode.frequency_hz.value
         ax.axvline(frequency, color=look.colour, linewidth=0.9, linestyle=(0, (3, 2)), zorder=1)
         if numbers and free:
             ax.annotate(

@@ -107,20 +107,18 @@ def _line(row: Sequence[str], widths: Sequence[int]) -> str:
 
 def _row(index: int, mode: Mode) -> tuple[str, ...]:
     word = mode.verdict.upper() if mode.verdict != "stable" else "stable"
-    if mode.real:
-        frequency = f"{phrases.hertz(mode.natural_frequency_hz.value, 5)}, real pole"
-        ratio = si(mode.damping_ratio.value)
-    else:
-        frequency = phrases.uncrowded(mode.frequency_hz.text("Hz"))
-        ratio = phrases.uncrowded(mode.damping_ratio.text())
+    ratio = mode.damping_ratio
+    shown = si(ratio.value) if mode.real else phrases.uncrowded(ratio.text())
     time = f"{phrases.trend(mode)}, {phrases.time_constant(mode)}"
-    return str(index + 1), word if mode.in_band else f"{word}*", frequency, ratio, time
+    return str(index + 1), word if mode.in_band else f"{word}*", phrases.rings_at(mode), shown, time
 
 
 def _second_line(mode: Mode) -> str:
     parts = [f"P(unstable) {phrases.probability(mode.probability_unstable)}"]
     if mode.real:
         parts.append(f"|p|/2π {phrases.natural(mode)}")
+    if mode.seen_hz:
+        parts.append(wording.sightings(mode))
     strengths = nodes.node_strengths(mode)
     if strengths:
         shown = ", ".join(phrases.plain(s.brief, 40) for s in strengths[:_NODES_IN_TABLE])

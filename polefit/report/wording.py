@@ -6,7 +6,7 @@ import math
 from collections.abc import Sequence
 
 from polefit.estimates import si
-from polefit.modes import BackgroundPole, FitQuality, Identification
+from polefit.modes import BackgroundPole, FitQuality, Identification, Mode
 from polefit.report.limits import detection_limit
 from polefit.report.phrases import band, counted, hertz, listed, percent, plain, sentence, tidy
 
@@ -46,6 +46,7 @@ def basis(result: Identification) -> tuple[tuple[str, str], ...]:
             f"{result.quantity})",
         ),
         ("Terminations", result.termination),
+        *_drive(result),
         ("Confidence", f"{percent(result.confidence)}; intervals are at 95 %"),
         ("Model", f"order {fit.order}; {fit.order_reason}"),
         ("Fit", f"residual {si(fit.rms_relative, '', 2)} of the response (rms), {_residual(fit)}"),
@@ -58,6 +59,30 @@ def basis(result: Identification) -> tuple[tuple[str, str], ...]:
     else:
         rows.append(("Detection", "what would have gone unnoticed was not computed"))
     return tuple((heading, sentence(text)) for heading, text in rows)
+
+
+def _drive(result: Identification) -> tuple[tuple[str, str], ...]:
+    """Say what the modes of a periodically driven circuit are; nothing of another one."""
+    if result.pump_hz is None:
+        return ()
+    pump, half = si(result.pump_hz, "Hz", 6), si(result.pump_hz / 2, "Hz", 6)
+    text = (
+        f"periodic, {pump}; frequencies of modes are folded into 0 to {half}; the verdict holds "
+        "for this drive level and this periodic state"
+    )
+    return (("Drive", text),)
+
+
+def sightings(mode: Mode) -> str:
+    """Say what the mode of a periodically driven circuit does to the drive, and where it shows."""
+    if not mode.seen_hz:
+        return ""
+    shown = listed((hertz(f, 5) for f in mode.seen_hz), 3)
+    half = ""
+    if mode.subharmonic:
+        grows = mode.verdict == "unstable"
+        half = "frequency division of the drive, " if grows else "at half the drive's frequency, "
+    return f"{half}seen in the sweep at {shown}"
 
 
 def _residual(fit: FitQuality) -> str:
@@ -119,11 +144,12 @@ def background_row(pole: BackgroundPole) -> tuple[str, str, str]:
 def both_frequencies(pole: complex) -> str:
     """Write Im(p)/2π, the frequency of the table, and ``|p|``/2π where that is another one."""
     natural, rings = abs(pole) / math.tau, abs(pole.imag) / math.tau
+    sign = "−" if pole.imag < 0 else ""  # one line of a driven circuit, without its conjugate
     if rings == 0:
         return f"real pole, |p|/2π {hertz(natural)}"
     if natural - rings < SAME * natural:
-        return hertz(rings)
-    return f"{hertz(rings)}, |p|/2π {hertz(natural)}"
+        return f"{sign}{hertz(rings)}"
+    return f"{sign}{hertz(rings)}, |p|/2π {hertz(natural)}"
 
 
 def next_points(points: Sequence[float]) -> str:

@@ -77,10 +77,11 @@ def test_a_band_without_points_is_refused(band, text):
     assert text in message
 
 
-def test_a_pumped_circuit_is_refused():
-    message = refused(NotSupportedError, one(pump_hz=3e9), None)
-    assert message.startswith("pump_hz:")
-    assert "not identified by this version" in message
+def test_different_drives_are_refused():
+    message = refused(ArgumentError, [one(pump_hz=3e9), one(pump_hz=2e9)], None)
+    assert "different pump_hz" in message
+    message = refused(ArgumentError, [one(pump_hz=3e9), one()], None)
+    assert "different pump_hz" in message
 
 
 @pytest.mark.parametrize("quantity", ["return-difference", "loop-gain"])

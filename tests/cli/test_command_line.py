@@ -105,7 +105,7 @@ def test_reading_options_reach_the_reader(polefit_command):
         "identify", "run.raw", "--quantity", "impedance", "--driven", "gate2",
         "--select", "gate2,v(a,b)", "--select", "drain1", "--node", "n1", "--decimal", ",",
         "--delimiter", "semicolon", "--frequency-unit", "GHz", "--form", "decibel-angle",
-        "--angle-unit", "rad", "--scaling", "absolute", "--reference-ohm", "75",
+        "--angle-unit", "rad", "--scaling", "absolute", "--reference-ohm", "75", "--pump", "2GHz",
     )  # fmt: skip
     assert polefit_command.read == [
         (
@@ -122,6 +122,7 @@ def test_reading_options_reach_the_reader(polefit_command):
                 "angle_unit": "rad",
                 "scaling": "absolute",
                 "reference_ohm": 75.0,
+                "pump_hz": 2e9,
             },
         )
     ]
@@ -400,6 +401,7 @@ def test_a_reader_that_goes_away_is_no_error():
     [
         ("a.csv: driven: no node; save it", "a.csv: --driven: no node; save it"),
         ("reference_ohm: needed; say it", "--reference-ohm: needed; say it"),
+        ("a.csv: pump_hz: states it; leave it out", "a.csv: --pump: states it; leave it out"),
         ("band_hz: no point; the data", "--band: no point; the data"),
         ("noise_relative: 0 is none; give", "--noise-relative: 0 is none; give"),
         ("noise_absolute: 0 is none; give", "--noise-absolute: 0 is none; give"),

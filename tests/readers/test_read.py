@@ -300,3 +300,35 @@ def test_the_command_line_ends_with_status_2(file, capsys, command):
         f"polefit: error: {path}: line 3: 'x' is not a number; "
         "write numbers with a decimal point, comments behind '!'\n"
     )
+
+
+# -- a periodic drive ---------------------------------------------------------------------------
+
+
+@pytest.mark.parametrize(
+    ("content", "options"), [(TOUCHSTONE, {}), (TEXT, {}), (RAW, {"driven": "a"})]
+)
+def test_every_format_can_be_told_its_drive(file, content, options):
+    found = polefit.read(file(content), pump_hz=2e9, **options)
+    assert found.pump_hz == 2e9
+    assert found.values[:, 0].tolist() == VALUES
+
+
+def test_a_drive_that_the_file_states_stands(file, tmp_path):
+    stated = polefit.read(file(TEXT), pump_hz=2e9)
+    path = tmp_path / "a.h5"
+    polefit.write_hdf5(path, stated)
+    assert polefit.read(path).pump_hz == polefit.read(path, pump_hz=2e9).pump_hz == 2e9
+    assert "states a drive at 2000000000 Hz" in str(refusal(path, pump_hz=3e9))
+
+
+def test_driven_data_are_not_converted(file):
+    """Conversion at one frequency leaves out the loads that the other sidebands see."""
+    path = file("# Hz S RI R 50\n1e9 0.1 0.2\n2e9 0.3 0.4\n", "a.s1p")
+    assert "pumped" in str(refusal(path, pump_hz=2e9, quantity="impedance"))
+
+
+@pytest.mark.parametrize("value", [0, -1e9, float("nan"), "fast"])
+def test_a_drive_is_a_positive_frequency(file, value):
+    with pytest.raises(ArgumentError, match=r"pump_hz: .* give hertz"):
+        polefit.read(file(TEXT), pump_hz=value)
