@@ -2,10 +2,11 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass, field
 from typing import Any, Literal, TypeAlias
 
-from polefit.modes import Identification, Mode, Verdict
+from polefit.modes import Detection, Identification, Mode, Stretch, Verdict
 from polefit.responses import Channel
 
 Holding: TypeAlias = Literal["confirmed", "refuted", "undecided"]
@@ -13,28 +14,41 @@ Holding: TypeAlias = Literal["confirmed", "refuted", "undecided"]
 
 @dataclass(frozen=True)
 class NodeLimit:
-    """What one channel would have shown of a growing mode anywhere in the range.
+    """What one channel would have shown of a hidden mode anywhere in the range.
+
+    All numbers are those of the frequency at which the channel sees least of it.
 
     Parameters
     ----------
     channel : Channel
         Where.
+    frequency_hz : float
+        That frequency.
     residue : float
-        |residue| from which such a mode would have been found here, at the least favourable
-        frequency of the range, in the unit of the response times rad/s; infinite if it is blind.
+        |residue| from which such a mode would have been found here, in the unit of the response
+        times rad/s; infinite where the samples say nothing.
     peak : float
-        The largest peak in the range that would have gone unnoticed here, |r|/(|ζ|·2πf).
+        The same as the height |residue|/|σ| of its peak.
     response : float
-        Typical (median) |response| of the model in the range, in the same unit.
+        |response| around that frequency, in the same unit.
+    blind_hz : tuple of (float, float)
+        Stretches of the range where this channel is blind.
     """
 
     channel: Channel
+    frequency_hz: float
     residue: float
     peak: float
     response: float
+    blind_hz: tuple[Stretch, ...] = ()
+
+    @property
+    def relative(self) -> float:
+        """The height of the peak over that of the response; 1 is as high."""
+        return self.peak / self.response if self.response > 0 else math.inf
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False)
 class RangeView:
     """How well the data see the range, as far as it lies inside the band.
 
@@ -45,21 +59,17 @@ class RangeView:
     step_hz, step_at_hz : float
         The step between neighbouring samples that is largest relative to its frequency, and that
         frequency.
-    damping_ratio, power : float
-        Of the mode that was supposed, and the probability with which it would have been found.
+    detection : Detection
+        What would have gone unnoticed in the range.
     limits : tuple of NodeLimit
-        One for each channel, the one that sees most first.
-    blind_hz : tuple of (float, float)
-        Stretches in which no channel would have shown a mode as high as its response.
+        The worst of it for each channel, the one that sees most first.
     """
 
     points: int
     step_hz: float
     step_at_hz: float
-    damping_ratio: float
-    power: float
+    detection: Detection
     limits: tuple[NodeLimit, ...] = ()
-    blind_hz: tuple[tuple[float, float], ...] = ()
 
 
 @dataclass(frozen=True, eq=False)

@@ -226,26 +226,72 @@ class RationalModel:
         return total
 
 
+Stretch: TypeAlias = tuple[float, float]
+"""From … to, in Hz."""
+
+
 @dataclass(frozen=True, eq=False)
 class Detection:
-    """What would have gone unnoticed: the smallest mode found with the stated power.
+    """What would have gone unnoticed: the smallest hidden mode found with the stated power.
+
+    Found means that the run would not have been called stable. Each limit holds for a mode that
+    shows at this one channel only, with the least favourable phase, wherever it lies between the
+    samples.
 
     Parameters
     ----------
     frequency_hz : (M,) float ndarray
-        Frequencies at which a hidden mode was supposed.
+        Frequencies at which a hidden mode was supposed, over the whole band.
     damping_ratio : float
-        Its damping ratio.
+        Its damping ratio; negative grows.
     power : float
         Probability with which a mode at the limit would have been found.
     residue : (M, K) float ndarray
-        Smallest |residue| found, for each channel, in the unit of the response times rad/s.
+        Smallest |residue| found, for each channel, in the unit of the response times rad/s;
+        infinite where the samples say nothing.
+    response : (M, K) float ndarray
+        |H| of the model around each frequency, in the unit of the response: the larger of the
+        value there and the median of the neighbourhood, so that a notch is not taken for silence.
+    leverage : (M, K) float ndarray
+        Smallest damping leverage |−dσ/dG| found, in 1/(s·S); NaN for channels that are no
+        driving-point impedance.
+    blind_hz : tuple of tuple of (float, float)
+        For each channel, the stretches of the band where it is blind: where nothing is found
+        below the height of the response itself.
+    blind_everywhere_hz : tuple of (float, float)
+        Stretches where every channel is blind.
+    blind_share : float
+        Share of the samples that these hold.
     """
 
     frequency_hz: NDArray[np.float64]
     damping_ratio: float
     power: float
     residue: NDArray[np.float64]
+    response: NDArray[np.float64]
+    leverage: NDArray[np.float64]
+    blind_hz: tuple[tuple[Stretch, ...], ...]
+    blind_everywhere_hz: tuple[Stretch, ...] = ()
+    blind_share: float = 0.0
+
+    @property
+    def peak(self) -> NDArray[np.float64]:
+        """Limits as the height |residue|/|σ| of the peak, (M, K), in the unit of the response.
+
+        A shunt resistor takes a mode that shows at a node with this height to the axis, to first
+        order, when it has as many ohms: above it none would help.
+        """
+        ratio = self.damping_ratio
+        sigma = 2 * np.pi * self.frequency_hz * abs(ratio) / np.sqrt(1 - ratio**2)
+        height: NDArray[np.float64] = self.residue / sigma[:, np.newaxis]
+        return height
+
+    @property
+    def relative(self) -> NDArray[np.float64]:
+        """Limits as the height of the peak over that of the response, (M, K); 1 is as high."""
+        with np.errstate(divide="ignore", invalid="ignore"):
+            ratio: NDArray[np.float64] = self.peak / self.response
+        return np.where(np.isnan(ratio), np.inf, ratio)
 
 
 @dataclass(frozen=True, eq=False)

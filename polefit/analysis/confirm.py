@@ -7,9 +7,17 @@ from collections.abc import Callable, Sequence
 
 import numpy as np
 
+from polefit.analysis.detection import DAMPING, mostly_blind, named, named_ratio
 from polefit.analysis.evidence import MOSTLY_NOISE
-from polefit.analysis.identify import DETECTION_DAMPING, MOSTLY_NOISE_REASON, POOR_REASON, identify
-from polefit.analysis.range_view import Range, coarsest_step, sweep, view_of
+from polefit.analysis.identify import MOSTLY_NOISE_REASON, POOR_REASON, identify
+from polefit.analysis.range_view import (
+    Range,
+    largest_step,
+    sampled,
+    sweep,
+    undersampled,
+    view_of,
+)
 from polefit.confirmation import Confirmation, Holding, RangeView
 from polefit.errors import ArgumentError, NotSupportedError
 from polefit.estimates import si
@@ -27,6 +35,9 @@ def confirm(
     *,
     band_hz: tuple[float, float] | None = None,
     confidence: float = 0.95,
+    noise_relative: float | None = None,
+    noise_absolute: float | None = None,
+    detection_damping: float = DAMPING,
     progress: Callable[[str], None] | None = None,
 ) -> Confirmation:
     """Hold a predicted oscillation frequency against the data.
@@ -39,7 +50,7 @@ def confirm(
         The predicted frequency, in hertz.
     within : float
         Half of the range relative to it: 0.1 stands for ± 10 %.
-    band_hz, confidence, progress : optional
+    band_hz, confidence, noise_relative, noise_absolute, detection_damping, progress : optional
         As :func:`polefit.identify` takes them.
 
     Returns
@@ -57,8 +68,9 @@ def confirm(
     -----
     Confirmed: a mode is unstable, all evidence agreeing, and the 95 % interval of its frequency
     lies in the range. Refuted: no mode there grows or may grow, the range lies inside the band and
-    is sampled, and a mode of damping ratio −0.01 that raises a peak as high as the response
-    itself would have been found at one of the nodes. Undecided: everything else.
+    at none of its frequencies every node is blind to a mode of the damping ratio
+    `detection_damping`: one whose peak is as high as the response itself would have been found at
+    one of them. Undecided: everything else.
 
     Examples
     --------
@@ -80,7 +92,15 @@ def confirm(
             "pump_hz: predictions about periodically driven circuits are not checked by this "
             "version, since their modes may oscillate at many frequencies; identify them"
         )
-    result = identify(responses, band_hz=band_hz, confidence=confidence, progress=progress)
+    result = identify(
+        responses,
+        band_hz=band_hz,
+        confidence=confidence,
+        noise_relative=noise_relative,
+        noise_absolute=noise_absolute,
+        detection_damping=detection_damping,
+        progress=progress,
+    )
     return hold_against(result, asked)
 
 
@@ -157,12 +177,14 @@ def _doubt_of_run(result: Identification) -> list[str]:
     """Return why nothing that was found may be trusted; one mode in doubt elsewhere is no reason.
 
     A run is also undecided because of a mode; then a mode of the band is undecided, none unstable.
+    Or because most of the band is blind; whether the range is, is looked at by itself.
     """
     if result.verdict != "undecided":
         return []
     verdicts = {mode.verdict for mode in result.modes if mode.in_band}
     by_a_mode = "undecided" in verdicts and "unstable" not in verdicts
-    if by_a_mode and result.reason not in (POOR_REASON, MOSTLY_NOISE_REASON):
+    other = by_a_mode or mostly_blind(result.detection)
+    if other and result.reason not in (POOR_REASON, MOSTLY_NOISE_REASON):
         return []
     return [result.reason.rstrip(".")]
 
@@ -225,22 +247,20 @@ def _unseen(result: Identification, asked: Range, view: RangeView | None) -> lis
         found.append(MOSTLY_NOISE_REASON)
     if view is None:
         return found or ["what would have gone unnoticed in the range is not known"]
-    if _coarse(view):
+    blind = view.detection.blind_everywhere_hz
+    if blind:
+        coarse = undersampled(result, view)
+        remedy = "less noise or more digits would show it"
+        if coarse:
+            step = max(largest_step(sampled(result), *stretch)[0] for stretch in coarse)
+            remedy = (
+                f"samples lie up to {si(step, 'Hz', 3)} apart there, and closer ones are needed"
+            )
         found.append(
-            f"near {si(view.step_at_hz, 'Hz', 3)} samples are {si(view.step_hz, 'Hz', 3)} apart; "
-            f"a growing mode of damping ratio {si(view.damping_ratio, '', 2)} is only sure to be "
-            f"seen with steps of {si(coarsest_step(view), 'Hz', 3)} or less"
-        )
-    for start, end in view.blind_hz:
-        found.append(
-            f"between {si(start, 'Hz')} and {si(end, 'Hz')} no node would have shown a growing "
-            "mode even as high as the response itself"
+            f"every node is blind to a mode with {named_ratio(view.detection)} from "
+            f"{named(blind)}: one as high as the response itself could go unnoticed; {remedy}"
         )
     return found
-
-
-def _coarse(view: RangeView | None) -> bool:
-    return view is not None and view.step_hz > coarsest_step(view)
 
 
 def _elsewhere(modes: Sequence[Mode], inside: Sequence[int], asked: Range) -> tuple[int, ...]:
@@ -267,9 +287,8 @@ def _next_points(
         wanted.append((start, min(low, end)))
     if asked.high_hz > high or any(at**2 >= low * high for at in cut_off):
         wanted.append((max(high, start), end))
-    if _coarse(view):
-        wanted.append((max(asked.low_hz, low), min(asked.high_hz, high)))
-    damping = DETECTION_DAMPING if view is None else view.damping_ratio
+    wanted.extend(() if view is None else undersampled(result, view))
+    damping = DAMPING if result.detection is None else result.detection.damping_ratio
     points = {at for stretch in wanted for at in sweep(*stretch, damping)}
     # what the run asks for may be about a mode elsewhere: beside a sweep of the range, too much
     run = [at for at in result.next_points_hz if not points or start <= at <= end]

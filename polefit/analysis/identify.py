@@ -8,22 +8,25 @@ from collections.abc import Callable, Sequence
 import numpy as np
 from threadpoolctl import ThreadpoolController
 
+from polefit.analysis.detection import (
+    DAMPING,
+    blind_notes,
+    checked_damping,
+    detect,
+    in_view_of,
+)
 from polefit.analysis.evidence import MOSTLY_NOISE
 from polefit.analysis.folding import coverage
-from polefit.analysis.judgement import CLAIM_CHANCE, Judged, judge
+from polefit.analysis.judgement import Judged, judge
 from polefit.analysis.noise_origin import StatedNoise, noise_origin
 from polefit.analysis.preparation import Prepared, node_names, prepare
 from polefit.engine import complex_poles, sections
 from polefit.engine.blocks import FloatArray
-from polefit.engine.detection import residue_limits
 from polefit.engine.estimation import Estimation, estimate_model
-from polefit.engine.order import trial_grid
 from polefit.engine.projection import model_values
-from polefit.engine.significance import threshold
 from polefit.errors import ArgumentError
 from polefit.estimates import si
 from polefit.modes import (
-    Detection,
     FitQuality,
     Identification,
     Loop,
@@ -33,8 +36,6 @@ from polefit.modes import (
 )
 from polefit.responses import Channel, ResponseSet
 
-DETECTION_DAMPING = -0.01
-DETECTION_POWER = 0.95
 SUSPECT_DAMPING = 0.05
 """Modes damped less than this are listed as suspect loops (common practice)."""
 EDGE_STEPS = 3
@@ -54,6 +55,7 @@ def identify(
     confidence: float = 0.95,
     noise_relative: float | None = None,
     noise_absolute: float | None = None,
+    detection_damping: float = DAMPING,
     progress: Callable[[str], None] | None = None,
 ) -> Identification:
     """Identify the natural modes behind frequency responses and judge their stability.
@@ -71,6 +73,9 @@ def identify(
         Noise to be taken as given instead of being estimated: standard deviation of a sample,
         both parts together, over its size, or in the unit of the responses; both may be given.
         Rounding of printed numbers and stated uncertainties of the samples come on top.
+    detection_damping : float
+        Damping ratio of the hidden mode for which it is told what would have gone unnoticed;
+        negative grows.
     progress : callable, optional
         Told in a few words what is being done.
 
@@ -109,13 +114,14 @@ def identify(
     if not isinstance(confidence, int | float) or not 0.5 < confidence < 1:
         raise ArgumentError(f"confidence: {confidence!r} is not between 0.5 and 1; give e.g. 0.95")
     stated = StatedNoise(noise_relative, noise_absolute)
+    damping = checked_damping(detection_damping)
     prepared = prepare(responses, band_hz)
     laws = stated.laws([m.values.shape[0] for m in prepared.measured])
     with _thread_pools().limit(limits=1), np.errstate(all="ignore"):
         kind = sections.NONE if prepared.responses[0].pump_hz is None else complex_poles.NONE
         told = progress or (lambda _: None)
         estimation = estimate_model(prepared.measured, told, laws, kind)
-        return _answer(prepared, estimation, confidence, stated)
+        return _answer(prepared, estimation, confidence, stated, damping)
 
 
 @functools.cache
@@ -125,7 +131,11 @@ def _thread_pools() -> ThreadpoolController:
 
 
 def _answer(
-    prepared: Prepared, estimation: Estimation, confidence: float, stated: StatedNoise
+    prepared: Prepared,
+    estimation: Estimation,
+    confidence: float,
+    stated: StatedNoise,
+    damping: float,
 ) -> Identification:
     sets = prepared.responses
     channels = tuple(c for one in sets for c in one.channels)
@@ -142,7 +152,12 @@ def _answer(
     model = _model(estimation, prepared.scale_rad_per_s, channels)
     errors, noises = _relative(estimation)
     fit = _quality(prepared, estimation, judged, errors, noises, stated)
-    verdict, reason = _run_verdict(judged, fit, _poor(estimation, errors, noises))
+    # under a drive −dσ/dG is the sum over the images at all harmonics, also unseen ones
+    levers = sets[0].quantity == "impedance" and sets[0].pump_hz is None
+    detection = detect(estimation, prepared.scale_rad_per_s, channels, damping, levers=levers)
+    verdict, reason = in_view_of(
+        *_run_verdict(judged, fit, _poor(estimation, errors, noises)), detection
+    )
     return Identification(
         verdict=verdict,
         reason=reason,
@@ -154,11 +169,12 @@ def _answer(
         loops=_loops(judged.modes),
         fit=fit,
         model=model,
-        detection=_detection(estimation, prepared.scale_rad_per_s),
+        detection=detection,
         notes=(
             *_notes(prepared, estimation, fit),
             *_delay_notes(model),
             *_edge_notes(judged.beyond, band),
+            *blind_notes(detection, channels),
         ),
         noise_std=tuple(np.sqrt(v.sum(axis=1)).T for v in estimation.noise),
     )
@@ -255,26 +271,6 @@ def _loops(modes: Sequence[Mode]) -> tuple[Loop, ...]:
         if mode.in_band and lively:
             loops.append(Loop(index, node_names([view.channel for view in mode.nodes])))
     return tuple(loops)
-
-
-def _detection(estimation: Estimation, scale: float) -> Detection:
-    frequencies = trial_grid(estimation.blocks, 60)
-    limits = residue_limits(
-        estimation.blocks,
-        estimation.solution,
-        estimation.info,
-        frequencies,
-        damping_ratio=DETECTION_DAMPING,
-        power=DETECTION_POWER,
-        threshold=threshold(1, estimation.places, CLAIM_CHANCE),
-        level=estimation.level * estimation.whiteness.inflation,
-    )
-    return Detection(
-        frequency_hz=frequencies * scale / (2 * np.pi),
-        damping_ratio=DETECTION_DAMPING,
-        power=DETECTION_POWER,
-        residue=limits * scale,
-    )
 
 
 def _notes(prepared: Prepared, estimation: Estimation, fit: FitQuality) -> tuple[str, ...]:

@@ -3,26 +3,24 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
 
 import numpy as np
 
 from polefit.confirmation import NodeLimit, RangeView
 from polefit.engine.blocks import FloatArray
-from polefit.modes import Detection, Identification, Mode
+from polefit.modes import Detection, Identification, Mode, Stretch
 
-NOTICED = 1.0
-"""A growing mode counts as seen if it would have been found when its peak is as high as this many
-times the typical response of the node in the range (common practice: it doubles what is there)."""
-COARSEST_STEP = 5.0
-"""Half-widths of the supposed mode by which samples may lie apart. In trials with noise of 1 % the
-detection limit held up to 10, beside a single other mode; half of that is asked for."""
+COARSE = 2.0
+"""Half-widths of the supposed mode from which closer points help: then not even one sample is sure
+to lie on the upper half of its peak."""
 FINE_STEP = 0.5
 """Half-widths between the points of a sweep that is asked for."""
 MOST_POINTS = 400
 """A sweep that would take more has its points spaced logarithmically."""
-CURVE = 201
-"""Points at which the model is looked at for the typical response."""
+AT_MOST = 2 * MOST_POINTS
+"""No more are asked for at once, even if they do not suffice for so narrow a mode."""
 
 
 @dataclass(frozen=True)
@@ -91,37 +89,68 @@ def view_of(result: Identification, asked: Range) -> RangeView | None:
     detection = result.detection
     if not low < high or detection is None or detection.frequency_hz.size == 0:
         return None
-    axis = np.unique(np.concatenate([one.frequency_hz for one in result.responses]))
-    step, at = _largest_step(axis, low, high)
-    grid, residue = _limits(detection, low, high)
-    peak = residue / (abs(detection.damping_ratio) * 2 * np.pi * grid[:, np.newaxis])
-    curve = np.abs(result.model.response(np.linspace(low, high, CURVE)))
-    response = np.median(curve, axis=0)
-    with np.errstate(divide="ignore", invalid="ignore"):
-        ratio = peak / response
-    ratio = np.where(np.isnan(ratio), np.inf, ratio)
-    order = np.argsort(ratio.max(axis=0), kind="stable")
-    limits = tuple(
-        NodeLimit(
-            channel=result.channels[k],
-            residue=float(residue[:, k].max()),
-            peak=float(peak[:, k].max()),
-            response=float(response[k]),
-        )
-        for k in order
-    )
+    axis = sampled(result)
+    step, at = largest_step(axis, low, high)
+    inside = axis[(axis >= low) & (axis <= high)]
+    cut = _cut(detection, low, high, inside)
     return RangeView(
-        points=int(np.count_nonzero((axis >= low) & (axis <= high))),
+        points=inside.size,
         step_hz=step,
         step_at_hz=at,
-        damping_ratio=detection.damping_ratio,
-        power=detection.power,
-        limits=limits,
-        blind_hz=_stretches(grid, ratio.min(axis=1) > NOTICED),
+        detection=cut,
+        limits=_node_limits(cut, result),
     )
 
 
-def _largest_step(axis: FloatArray, low: float, high: float) -> tuple[float, float]:
+def _cut(detection: Detection, low: float, high: float, inside: FloatArray) -> Detection:
+    """Return what is known of the range only; where nothing was tried inside, what is nearest."""
+    known = detection.frequency_hz
+    rows = np.flatnonzero((known >= low) & (known <= high))
+    if rows.size == 0:
+        rows = np.array([np.argmin(np.abs(known - np.clip(known, low, high)))])
+    everywhere = _overlap(detection.blind_everywhere_hz, low, high)
+    blind = [np.any([(a <= f) & (f <= b) for a, b in everywhere]) for f in inside]
+    return replace(
+        detection,
+        frequency_hz=known[rows],
+        residue=detection.residue[rows],
+        response=detection.response[rows],
+        leverage=detection.leverage[rows],
+        blind_hz=tuple(_overlap(own, low, high) for own in detection.blind_hz),
+        blind_everywhere_hz=everywhere,
+        blind_share=float(np.mean(blind)) if blind else float(bool(everywhere)),
+    )
+
+
+def _overlap(blind: Sequence[Stretch], low: float, high: float) -> tuple[Stretch, ...]:
+    """Return the parts of stretches that lie in the range."""
+    return tuple((max(a, low), min(b, high)) for a, b in blind if a < high and b > low)
+
+
+def _node_limits(cut: Detection, result: Identification) -> tuple[NodeLimit, ...]:
+    """Return what each channel would have shown at its least favourable frequency, best first."""
+    relative = cut.relative
+    worst = np.argmax(relative, axis=0)
+    order = np.argsort(relative.max(axis=0), kind="stable")
+    return tuple(
+        NodeLimit(
+            channel=result.channels[k],
+            frequency_hz=float(cut.frequency_hz[worst[k]]),
+            residue=float(cut.residue[worst[k], k]),
+            peak=float(cut.peak[worst[k], k]),
+            response=float(cut.response[worst[k], k]),
+            blind_hz=cut.blind_hz[k],
+        )
+        for k in order.tolist()
+    )
+
+
+def sampled(result: Identification) -> FloatArray:
+    """Return all frequencies at which anything was sampled."""
+    return np.unique(np.concatenate([one.frequency_hz for one in result.responses]))
+
+
+def largest_step(axis: FloatArray, low: float, high: float) -> tuple[float, float]:
     """Return the step that is largest relative to its frequency, and that frequency."""
     start, end = axis[:-1], axis[1:]
     inside = (start < high) & (end > low)
@@ -131,32 +160,14 @@ def _largest_step(axis: FloatArray, low: float, high: float) -> tuple[float, flo
     return float((end - start)[worst]), float(at[worst])
 
 
-def _limits(detection: Detection, low: float, high: float) -> tuple[FloatArray, FloatArray]:
-    """Return frequencies from low to high, and the limits there; between two, interpolated."""
-    known = np.asarray(detection.frequency_hz, dtype=float)
-    grid = np.unique(np.concatenate(([low, high], known[(known > low) & (known < high)])))
-    columns = []
-    for limit in np.asarray(detection.residue, dtype=float).T:
-        blind = ~np.isfinite(limit)
-        size = np.log(np.where(blind, 1.0, np.maximum(limit, 1e-300)))
-        between = np.exp(np.interp(np.log(grid), np.log(known), size))
-        columns.append(np.where(np.interp(grid, known, blind.astype(float)) > 0, np.inf, between))
-    return grid, np.array(columns).T
-
-
-def _stretches(grid: FloatArray, blind: np.ndarray) -> tuple[tuple[float, float], ...]:
-    """Return where `blind` holds, each stretch up to the nearest frequency at which it does not."""
-    edges = np.flatnonzero(np.diff(np.concatenate(([False], blind, [False])).astype(int)))
-    last = grid.size - 1
+def undersampled(result: Identification, view: RangeView) -> tuple[Stretch, ...]:
+    """Return the blind stretches of the range in which closer points would help."""
+    axis, blind = sampled(result), view.detection.blind_everywhere_hz
+    steps = [largest_step(axis, low, high) for low, high in blind]
+    width = COARSE * abs(view.detection.damping_ratio)
     return tuple(
-        (float(grid[max(first - 1, 0)]), float(grid[min(past, last)]))
-        for first, past in zip(edges[::2].tolist(), edges[1::2].tolist(), strict=True)
+        stretch for stretch, (step, at) in zip(blind, steps, strict=True) if step > width * at
     )
-
-
-def coarsest_step(view: RangeView) -> float:
-    """Return the step that suffices where the largest one was found, in hertz."""
-    return COARSEST_STEP * abs(view.damping_ratio) * view.step_at_hz
 
 
 def sweep(low_hz: float, high_hz: float, damping_ratio: float) -> tuple[float, ...]:
@@ -172,7 +183,8 @@ def sweep(low_hz: float, high_hz: float, damping_ratio: float) -> tuple[float, .
     Returns
     -------
     tuple of float
-        Multiples of a round step; or with a constant ratio, where that would take too many.
+        Multiples of a round step; or with a constant ratio, where that would take too many; never
+        more than :data:`AT_MOST`.
     """
     widest = FINE_STEP * abs(damping_ratio) * low_hz
     decade = 10.0 ** math.floor(math.log10(widest))
@@ -181,4 +193,5 @@ def sweep(low_hz: float, high_hz: float, damping_ratio: float) -> tuple[float, .
     if last - first < MOST_POINTS:
         return tuple(float(f"{k * step:.12g}") for k in range(max(first, 1), last + 1))
     count = math.ceil(math.log(high_hz / low_hz) / (FINE_STEP * abs(damping_ratio))) + 1
-    return tuple(float(f"{f:.6g}") for f in np.geomspace(low_hz, high_hz, count))
+    spaced = np.geomspace(low_hz, high_hz, min(count, AT_MOST))
+    return tuple(float(f"{f:.12g}") for f in spaced)

@@ -17,6 +17,10 @@ if TYPE_CHECKING:
     from polefit.report.answers import Answer
 
 
+IDENTIFYING = ("confidence", "noise_relative", "noise_absolute", "detection_damping")
+"""Options that are keywords of :func:`polefit.identify` as they are."""
+
+
 def answer(files: Sequence[str], given: Mapping[str, Any], ask: Callable[..., Answer]) -> int:
     """Read response files, ask one question of them, and deliver the answer.
 
@@ -27,8 +31,8 @@ def answer(files: Sequence[str], given: Mapping[str, Any], ask: Callable[..., An
     given : mapping
         What :data:`polefit.cli.options.identification_options` took.
     ask : callable
-        From the response sets of one circuit, and ``band_hz``, ``confidence`` and ``progress``, to
-        the answer.
+        From the response sets of one circuit, and the keywords of :func:`polefit.identify`, to the
+        answer.
 
     Returns
     -------
@@ -53,9 +57,7 @@ def answer(files: Sequence[str], given: Mapping[str, Any], ask: Callable[..., An
         groups = [[*sets] for sets in responses]
         if not given["separately"]:
             groups = [[*chain.from_iterable(groups)]]
-        answers = [
-            ask(group, band_hz=band_hz, confidence=given["confidence"], progress=progress)
-            for group in groups
-        ]
+        how = {name: given[name] for name in IDENTIFYING}
+        answers = [ask(group, band_hz=band_hz, progress=progress, **how) for group in groups]
         progress("writing the report")
         return deliver(answers, outputs, separately=given["separately"])

@@ -102,7 +102,8 @@ def names(values: tuple[str, ...]) -> tuple[str, ...]:
 
 _API_NAMES = (
     "quantity|driven|select|node|decimal|delimiter|frequency_unit|form|angle_unit|scaling"
-    "|reference_ohm|pump_hz|band_hz|confidence|near_hz|within"
+    "|reference_ohm|pump_hz|band_hz|confidence|noise_relative|noise_absolute|detection_damping"
+    "|near_hz|within"
 )
 _VALUE = r"(?:\"([^\"]*)\"|'([^']*)')?"
 
@@ -234,6 +235,27 @@ identification_options = _together(
         metavar="P",
         show_default=True,
         help="Confidence of the verdicts.",
+    ),
+    click.option(
+        "--noise-relative",
+        type=Number(min=0, min_open=True),
+        metavar="SHARE",
+        help="Standard deviation of the noise over the size of a sample, instead of an estimate.",
+    ),
+    click.option(
+        "--noise-absolute",
+        type=Number(min=0, min_open=True),
+        metavar="STD",
+        help="Standard deviation of the noise in the unit of the data, instead of an estimate.",
+    ),
+    click.option(
+        "--detection-damping",
+        type=Number(-1, 1, min_open=True, max_open=True),
+        default=-0.01,
+        metavar="ZETA",
+        show_default=True,
+        help="Damping ratio of the hidden mode for which it is told what would have gone "
+        "unnoticed.",
     ),
     click.option("--separately", is_flag=True, help="Each FILE is a circuit of its own."),
     json_option,

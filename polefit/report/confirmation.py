@@ -2,13 +2,14 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 from polefit.confirmation import Confirmation, NodeLimit
 from polefit.estimates import si
 from polefit.modes import Mode
-from polefit.report import headline, phrases, text, wording
-from polefit.responses import UNITS
+from polefit.report import headline, limits, phrases, text, wording
 
-LIMIT_HEADINGS = ("node", "smallest peak found", "response there")
+LIMIT_HEADINGS = ("node", "at worst above", "at", "blind")
 _NODES = 8
 
 
@@ -91,17 +92,11 @@ def _others(modes: list[Mode], verb: str) -> str:
 
 
 def limit(answer: Confirmation) -> str:
-    """Say which growing mode would have been found in the range; or nothing."""
-    view = answer.view
-    if view is None or not view.limits:
+    """Say which mode would have been found in the range; or nothing."""
+    if answer.view is None:
         return ""
-    best = view.limits[0]
-    return (
-        f"a mode with damping ratio {si(view.damping_ratio, '', 2)} there that raises a peak above "
-        f"{wording.peak_text(answer.identification, best.peak)} at node "
-        f" {phrases.plain(str(best.channel), 30)} would have been found with "
-        f"{phrases.percent(view.power)} probability"
-    )
+    found = limits.detection_limit(replace(answer.identification, detection=answer.view.detection))
+    return f"in the range {found}" if found else ""
 
 
 def rows(answer: Confirmation) -> list[tuple[str, str]]:
@@ -132,15 +127,27 @@ def limit_rows(answer: Confirmation) -> list[tuple[str, ...]]:
 
 def limit_title(answer: Confirmation) -> str:
     """Say what the table of limits is about."""
-    ratio = "" if answer.view is None else f" of damping ratio {answer.view.damping_ratio:g}"
-    return f"What would have been found in the range, of a mode{ratio}".replace("-", "−")
+    if answer.view is None:
+        return ""
+    ratio = si(answer.view.detection.damping_ratio, "", 2)
+    return f"What would have been found in the range, of a mode with damping ratio {ratio}"
 
 
 def _limit_row(answer: Confirmation, one: NodeLimit) -> tuple[str, ...]:
-    unit = UNITS.get(answer.identification.quantity, "")
-    blind = one.peak == float("inf")
-    peak = "blind" if blind else wording.peak_text(answer.identification, one.peak)
-    return phrases.plain(str(one.channel), 30), peak, si(one.response, unit, 3)
+    return (
+        phrases.plain(str(one.channel), 30),
+        limits.height(one.peak, one.relative, answer.identification.quantity),
+        phrases.hertz(one.frequency_hz, 3),
+        _blind_part(answer, one),
+    )
+
+
+def _blind_part(answer: Confirmation, one: NodeLimit) -> str:
+    """Say whether a node is blind in the range; where, the identification tells."""
+    if not one.blind_hz:
+        return "nowhere"
+    (low, high), (start, end) = answer.range_hz, answer.identification.band_hz
+    return "everywhere" if one.blind_hz == ((max(low, start), min(high, end)),) else "in part"
 
 
 def confirmation_text(answer: Confirmation) -> str:
@@ -159,7 +166,7 @@ def confirmation_text(answer: Confirmation) -> str:
     result = answer.identification
     doubtful = [i for i in answer.elsewhere if result.modes[i].verdict != "stable"]
     there = text.mode_table(result, answer.in_range, answer.in_range) if answer.in_range else []
-    limits = limit_rows(answer)
+    table = limit_rows(answer)
     return text.joined(
         [
             text.wrapped(verdict_sentence(answer)),
@@ -169,7 +176,7 @@ def confirmation_text(answer: Confirmation) -> str:
                 "Modes elsewhere, nearest first",
                 text.mode_table(result, answer.elsewhere) if answer.elsewhere else [],
             ),
-            text.section(limit_title(answer), text.table(limits) if limits else []),
+            text.section(limit_title(answer), text.table(table) if table else []),
             text.section("What to simulate next", text.next_points(answer.next_points_hz)),
             text.section("Evidence", text.evidence(result, [*answer.in_range, *doubtful])),
             text.section("The identification behind it", _behind(answer)),

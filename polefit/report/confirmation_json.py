@@ -57,7 +57,16 @@ def confirmation_dict(answer: Confirmation) -> dict[str, Any]:
 
 def _view(view: RangeView) -> dict[str, Any]:
     limits = [{**asdict(limit), "channel": channel_pair(limit.channel)} for limit in view.limits]
-    return {**asdict(view), "limits": limits}
+    return {
+        "points": view.points,
+        "step_hz": view.step_hz,
+        "step_at_hz": view.step_at_hz,
+        "damping_ratio": view.detection.damping_ratio,
+        "power": view.detection.power,
+        "limits": limits,
+        "blind_hz": view.detection.blind_everywhere_hz,
+        "blind_share": view.detection.blind_share,
+    }
 
 
 def confirmation_json(answer: Confirmation, *, ascii_only: bool = False) -> str:

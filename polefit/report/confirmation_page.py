@@ -76,7 +76,7 @@ def _view(answer: Confirmation, prefix: str) -> dict[str, Any]:
         "sharp_note": phrases.SHARP_NOTE if any(map(phrases.is_sharp, inside)) else "",
         "elsewhere": {"modes": html.mode_rows(result, answer.elsewhere)},
         "figure": html.svg(plot_range(answer, shown)[0], f"{prefix}q", f"The range at {shown}"),
-        "next": html.one_line(" ".join(wording.next_points(answer.next_points_hz))),
+        **html.next_points(answer.next_points_hz),
         "rows": [(head, html.one_line(text)) for head, text in confirmation.rows(answer)],
         "evidence": html.evidence(result, [*answer.in_range, *doubtful]),
         "limit_title": confirmation.limit_title(answer),

@@ -10,26 +10,20 @@ import re
 from collections.abc import Sequence
 from dataclasses import dataclass
 from pathlib import Path
-from typing import Any
 
-import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
-from matplotlib.lines import Line2D
-from numpy.typing import NDArray
 
 from polefit.atomic import whole_file
 from polefit.errors import ArgumentError
-from polefit.estimates import si
 from polefit.modes import Identification
-from polefit.report import drawing, nodes, phrases, units, wording
+from polefit.report import drawing, nodes, phrases, units
+from polefit.report.detection_plot import plot_detection
 from polefit.report.pole_map import plot_poles
 from polefit.report.response_plot import plot_overview, plot_response
-from polefit.responses import UNITS
 
 FORMATS = ("png", "svg", "pdf")
 _MOST_BARS = 12
-_MOST_NAMED = 6
 
 __all__ = [
     "FORMATS",
@@ -168,84 +162,6 @@ def _draw_bars(ax: Axes | None, part: _Bars, title: str) -> Axes:
             ha="right",
         )
     return ax
-
-
-def plot_detection(result: Identification, *, ax: Axes | None = None) -> Axes:
-    """Draw what would have gone unnoticed: the smallest peak found, over frequency.
-
-    Parameters
-    ----------
-    result : Identification
-        The answer; its `detection` must be given.
-    ax : matplotlib.axes.Axes, optional
-        Where; by default a new figure.
-
-    Returns
-    -------
-    matplotlib.axes.Axes
-
-    Raises
-    ------
-    ArgumentError
-        If the result has no detection limit.
-    """
-    found = result.detection
-    if found is None:
-        raise ArgumentError("result: it holds no detection limit; there is nothing to draw")
-    ax = drawing.axes_or_new(ax, 7.2, 3.6)
-    drawing.dress(
-        ax,
-        f"Found with {phrases.percent(found.power)} probability above the line: a mode with "
-        f"damping ratio {si(found.damping_ratio, '', 2)}",
-    )
-    low, high = drawing.shown_band(result)
-    frequency = np.asarray(found.frequency_hz, dtype=float)
-    omega = 2 * np.pi * np.where(frequency > 0, frequency, np.nan)
-    peaks = found.residue / (abs(found.damping_ratio) * omega[:, np.newaxis])
-    peaks = np.where(np.isfinite(peaks) & (peaks > 0), peaks, np.nan)
-    names = [str(c) for c in result.channels]
-    named = len(names) <= _MOST_NAMED
-    styles: tuple[Any, ...] = ("-", "--", "-.", ":", (0, (5, 1, 1, 1, 1, 1)), (0, (1, 3)))
-    handles = []
-    for k, name in enumerate(names):
-        style: Any = styles[k % len(styles)] if named else "-"
-        (line,) = ax.plot(
-            frequency,
-            peaks[:, k],
-            color=drawing.BLUE if named else drawing.FAINT,
-            linestyle=style,
-            linewidth=1.2 if named else 0.6,
-        )
-        if named:
-            handles.append(Line2D([], [], color=drawing.BLUE, linestyle=style))
-            handles[-1].set_label(phrases.plain(name, 20))
-    best = np.fmin.reduce(peaks, axis=1)
-    (line,) = ax.plot(frequency, best, color=drawing.INK, linewidth=2.2, label="the best node")
-    ax.set_yscale("log")
-    drawing.frequency_axis(ax, low, high)
-    seen = peaks[np.isfinite(peaks)]
-    unit = UNITS.get(result.quantity, "")
-    name = f"smallest peak found of |{wording.SYMBOL[result.quantity]}|"
-    if seen.size:
-        bottom, top = 0.7 * float(seen.min()), 1.4 * float(seen.max())
-        ax.set_ylim(bottom, top)
-        units.log_axis(ax.yaxis, bottom, top, name, unit)
-    _mark_blind(ax, frequency, best)
-    if not named:
-        handles.append(Line2D([], [], color=drawing.FAINT, linewidth=0.6, label="single nodes"))
-    drawing.legend_below(ax, [*handles, line], 7)
-    return ax
-
-
-def _mark_blind(ax: Axes, frequency: NDArray[np.float64], best: NDArray[np.float64]) -> None:
-    """Shade the frequencies at which no node would have shown the mode."""
-    for at in np.flatnonzero(~np.isfinite(best)).tolist():
-        left = float(frequency[max(at - 1, 0)])
-        right = float(frequency[min(at + 1, frequency.size - 1)])
-        ax.axvspan(left, right, color=drawing.ORANGE, alpha=0.25, linewidth=0)
-        drawing.text(
-            ax, frequency[at], 0.5, "blind", transform=ax.get_xaxis_transform(), rotation=90
-        )
 
 
 def save_figures(

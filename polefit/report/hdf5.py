@@ -24,6 +24,11 @@ M is the number of poles, K that of all channels in the order of the response se
 ``/identification/detection``         group (optional): attributes ``damping_ratio``, ``power``
 ``…/detection/frequency_hz``          (L,) float
 ``…/detection/residue``               (L, K) float: smallest residue that would have been found
+``…/detection/peak``                  (L, K) float: the same as the height of the mode's peak
+``…/detection/peak_over_response``    (L, K) float: the same over the response around it
+``…/detection/leverage``              (L, K) float, 1/(s·S): NaN but for driving-point impedances
+``…/detection/blind_hz``              (B, 2) float: stretches where every channel is blind
+``…/detection/channel_blind_hz``      (C, 3) float: column of the channel, from, to
 ====================================  =============================================================
 
 A confirmation is written as the identification that it rests on, with ``/confirmation`` beside it:
@@ -41,6 +46,8 @@ from __future__ import annotations
 
 from pathlib import Path
 from typing import TYPE_CHECKING
+
+import numpy as np
 
 from polefit.atomic import whole_file
 from polefit.confirmation import Confirmation
@@ -145,3 +152,10 @@ def _put_detection(group: h5py.Group, detection: Detection) -> None:
     group.attrs["power"] = detection.power
     group.create_dataset("frequency_hz", data=detection.frequency_hz)
     group.create_dataset("residue", data=detection.residue)
+    group.create_dataset("peak", data=detection.peak)
+    group.create_dataset("peak_over_response", data=detection.relative)
+    group.create_dataset("leverage", data=detection.leverage)
+    everywhere = np.array(detection.blind_everywhere_hz, dtype=float).reshape(-1, 2)
+    group.create_dataset("blind_hz", data=everywhere)
+    single = [(k, *ends) for k, own in enumerate(detection.blind_hz) for ends in own]
+    group.create_dataset("channel_blind_hz", data=np.array(single, dtype=float).reshape(-1, 3))

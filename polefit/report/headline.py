@@ -6,9 +6,9 @@ from collections.abc import Sequence
 
 from polefit.estimates import si
 from polefit.modes import Identification, Mode
+from polefit.report.limits import detection_limit
 from polefit.report.nodes import strongest_node
 from polefit.report.phrases import band, brief, counted, hertz, label, listed, plain, tidy
-from polefit.report.wording import detection_limit
 
 SURE = 10.0  # standard deviations by which a growing mode beside the band must stand out
 _DOUBTS = {

@@ -17,7 +17,7 @@ from matplotlib.figure import Figure
 from polefit import __version__
 from polefit.estimates import si, with_uncertainty
 from polefit.modes import Identification, Mode
-from polefit.report import drawing, headline, nodes, phrases, wording
+from polefit.report import drawing, glossary, headline, limits, nodes, phrases, wording
 from polefit.report.figures import plot_detection, plot_nodes, plot_overview, plot_poles
 from polefit.report.response_plot import plot_response, trace_of
 
@@ -178,15 +178,19 @@ def view_of(result: Identification, prefix: str) -> dict[str, Any]:
     return {
         **_summary(result),
         "heading": phrases.listed(names, 3, _NAME) if names else f"{result.quantity} from arrays",
-        "next": phrases.glued(" ".join(wording.next_points(result.next_points_hz))),
+        **next_points(result.next_points_hz),
         "poles": svg(plot_poles(result), f"{prefix}p", "Pole map"),
         "loops": [_loop(result, i, prefix) for i in range(len(result.loops))],
         "overview": svg(plot_overview(result), f"{prefix}o", "All channels") if many else None,
         "channels": _channels(result, prefix),
         "evidence": evidence(result, range(len(result.modes))),
+        "glossary": glossary.explained(result.modes),
         "detection": None
         if result.detection is None
         else svg(plot_detection(result), f"{prefix}d", "Detection limit"),
+        "limit": phrases.glued(phrases.capital(limits.detection_limit(result) or "")),
+        "limits": limits.channel_rows(result),
+        "ohms": result.detection is not None and not np.isnan(result.detection.leverage).all(),
         "basis": [(head, phrases.glued(text)) for head, text in wording.basis(result)],
         "notes": [phrases.plain(n, 2000) for n in wording.notes(result)],
         "background": [wording.background_row(p) for p in result.background],
@@ -204,6 +208,15 @@ def view_of(result: Identification, prefix: str) -> dict[str, Any]:
             phrases.plain(a, 2000)
             for a in dict.fromkeys(a for s in result.sources for a in s.assumptions)
         ],
+    }
+
+
+def next_points(points: Sequence[float]) -> dict[str, str]:
+    """Collect what a page says of the points to simulate next."""
+    return {
+        "next": phrases.glued(wording.next_points(points)),
+        "points": wording.pasteable(points),
+        "sweep": wording.as_sweep(points),
     }
 
 

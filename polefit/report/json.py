@@ -9,6 +9,7 @@ from importlib import resources
 from typing import Any
 
 import numpy as np
+from numpy.typing import NDArray
 
 from polefit.modes import BackgroundPole, Detection, FitQuality, Identification, Mode, NodeView
 from polefit.responses import Channel, ResponseSet
@@ -180,13 +181,29 @@ def _background(pole: BackgroundPole) -> dict[str, Any]:
     return {"pole_rad_per_s": _complex(pole.pole_rad_per_s), "reason": pole.reason}
 
 
-def _detection(detection: Detection, channels: Sequence[Channel]) -> dict[str, Any]:
+def _detection(found: Detection, channels: Sequence[Channel]) -> dict[str, Any]:
+    def column(values: NDArray[np.float64], k: int) -> list[float]:
+        listed: list[float] = np.asarray(values[:, k], dtype=float).tolist()
+        return listed
+
+    peak, relative = found.peak, found.relative
     return {
-        "frequency_hz": np.asarray(detection.frequency_hz, dtype=float).tolist(),
-        "damping_ratio": detection.damping_ratio,
-        "power": detection.power,
+        "frequency_hz": np.asarray(found.frequency_hz, dtype=float).tolist(),
+        "damping_ratio": found.damping_ratio,
+        "power": found.power,
         "limits": [
-            {"channel": channel_pair(c), "residue": np.asarray(column, dtype=float).tolist()}
-            for c, column in zip(channels, detection.residue.T, strict=True)
+            {
+                "channel": channel_pair(channel),
+                "residue": column(found.residue, k),
+                "peak": column(peak, k),
+                "peak_over_response": column(relative, k),
+                "leverage": None
+                if np.isnan(found.leverage[:, k]).all()
+                else column(found.leverage, k),
+                "blind_hz": [list(stretch) for stretch in found.blind_hz[k]],
+            }
+            for k, channel in enumerate(channels)
         ],
+        "blind_hz": [list(stretch) for stretch in found.blind_everywhere_hz],
+        "blind_share": found.blind_share,
     }

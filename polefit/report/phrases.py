@@ -41,6 +41,12 @@ def sentence(text: str) -> str:
     return clean if clean.endswith((".", "!", "?")) else f"{clean}."
 
 
+def capital(text: str) -> str:
+    """Return one sentence that begins with a capital letter."""
+    whole = sentence(text)
+    return whole[:1].upper() + whole[1:]
+
+
 def listed(names: Iterable[str], most: int = 4, limit: int = 30) -> str:
     """Join names with commas, the first `most` of them, and count the rest."""
     all_names = list(dict.fromkeys(names))

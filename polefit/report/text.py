@@ -7,7 +7,7 @@ from collections.abc import Iterable, Sequence
 
 from polefit.estimates import si
 from polefit.modes import Identification, Mode
-from polefit.report import headline, nodes, phrases, wording
+from polefit.report import glossary, headline, nodes, phrases, wording
 
 WIDTH = 100
 _HEADINGS = ("", "", "frequency", "damping ratio", "time constant")
@@ -146,8 +146,20 @@ def table(rows: Sequence[Sequence[str]]) -> list[str]:
 
 
 def next_points(points: Sequence[float]) -> list[str]:
-    """List what to simulate next."""
-    return [line for text in wording.next_points(points) for line in wrapped(text, "  ", "  ")]
+    """List what to simulate next, with a line to paste."""
+    if not points:
+        return []
+    lines = wrapped(wording.next_points(points), "  ", "  ")
+    lines += textwrap.wrap(
+        wording.pasteable(points),
+        WIDTH,
+        initial_indent="    ",
+        subsequent_indent="    ",
+        break_on_hyphens=False,
+        break_long_words=False,
+    )
+    sweep = wording.as_sweep(points)
+    return [*lines, f"  evenly spaced: {sweep}"] if sweep else lines
 
 
 def _evidence(result: Identification) -> list[str]:
@@ -161,6 +173,7 @@ def _evidence(result: Identification) -> list[str]:
 def evidence(result: Identification, indices: Iterable[int]) -> list[str]:
     """List the tests of some modes of a result."""
     lines: list[str] = []
+    shown: list[Mode] = []
     for i in indices:
         mode = result.modes[i]
         if not mode.evidence:
@@ -169,6 +182,12 @@ def evidence(result: Identification, indices: Iterable[int]) -> list[str]:
         for test in mode.evidence:
             sentence = wording.evidence_sentence(test.name, test.passed, test.detail)
             lines.extend(wrapped(sentence, "    ", "      "))
+        shown.append(mode)
+    meaning = glossary.explained(shown)
+    if meaning:
+        lines.append("  What they ask")
+    for name, asks in meaning:
+        lines.extend(wrapped(f"{name}: {asks}", "    ", "      "))
     return lines
 
 

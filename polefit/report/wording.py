@@ -5,12 +5,10 @@ from __future__ import annotations
 import math
 from collections.abc import Sequence
 
-import numpy as np
-
 from polefit.estimates import si
 from polefit.modes import BackgroundPole, FitQuality, Identification, Mode
+from polefit.report.limits import detection_limit
 from polefit.report.phrases import band, counted, hertz, listed, percent, plain, sentence, tidy
-from polefit.responses import UNITS
 
 SYMBOL = {
     "impedance": "Z",
@@ -22,9 +20,10 @@ SYMBOL = {
     "return-difference": "F",
     "loop-gain": "T",
 }
+MANY_POINTS = 5  # from which evenly spaced points are told as a sweep, too
+EVEN = 1e-6  # of a step by which evenly spaced points may be off
 CERTAIN = 1e4  # misfit ratio from which digits say nothing
 SAME = 0.01  # frequencies closer than this are one to a reader
-NOISELESS = 1e-6  # of the typical response: a detection limit below is not worth its digits
 CAUTIONS = (
     "The verdict holds for the model, the nodes, the band and the terminations that were "
     "simulated; another bias, temperature, load or layout is another circuit.",
@@ -33,39 +32,6 @@ CAUTIONS = (
     "Radio-frequency power burns, and an amplifier that oscillates can destroy itself and what "
     "is connected to it: limit the supply current and terminate every port before power is on.",
 )
-
-
-def detection_limit(result: Identification) -> str | None:
-    """Say which hidden mode would have been found, for the least favourable frequency.
-
-    A mode with residue r and damping ratio ζ at frequency f raises a peak of ``|r|/(|ζ|·2πf)``;
-    at each frequency the node that sees it best counts.
-    """
-    detection = result.detection
-    if detection is None or detection.frequency_hz.size == 0:
-        return None
-    ratio = f"a mode with damping ratio {si(detection.damping_ratio, '', 2)}"
-    omega = 2 * np.pi * np.asarray(detection.frequency_hz)
-    with np.errstate(divide="ignore", invalid="ignore"):
-        peak = detection.residue.min(axis=1) / (abs(detection.damping_ratio) * omega)
-    seen = peak[np.isfinite(peak)]
-    if seen.size == 0:
-        return f"{ratio} would have gone unnoticed: the data are blind to it"
-    blind = peak.size - seen.size
-    highest = peak_text(result, float(seen.max()))
-    text = (
-        f"{ratio} that raises a peak above {highest} at one of the nodes "
-        f"would have been found with {percent(detection.power)} probability"
-    )
-    return text if not blind else f"{text}, except where every node is blind (see detection)"
-
-
-def peak_text(result: Identification, limit: float) -> str:
-    """Write a detection limit; one far below the response, of exact data, only as such."""
-    typical = float(np.median([np.median(np.abs(r.values)) for r in result.responses]))
-    if limit < NOISELESS * typical:
-        return "a millionth of the typical response"
-    return si(limit, UNITS.get(result.quantity, ""), 2)
 
 
 def basis(result: Identification) -> tuple[tuple[str, str], ...]:
@@ -186,14 +152,38 @@ def both_frequencies(pole: complex) -> str:
     return f"{sign}{hertz(rings)}, |p|/2π {hertz(natural)}"
 
 
-def next_points(points: Sequence[float], most: int = 12) -> tuple[str, ...]:
+def next_points(points: Sequence[float]) -> str:
     """Say what to simulate next; nothing where nothing is asked for."""
     if not points:
-        return ()
-    count = "1 point" if len(points) == 1 else f"{len(points)} points"
-    shown = ", ".join(si(p, "Hz", 7) for p in points[:most])
-    rest = f" and {len(points) - most} more" if len(points) > most else ""
-    return (f"{count} from {band((min(points), max(points)))}: {shown}{rest}.",)
+        return ""
+    if len(points) == 1:
+        return f"Simulate one more point, {hertz(points[0], 6)}; in Hz, to paste:"
+    return (
+        f"Simulate {len(points)} more points from {band((min(points), max(points)))}; in Hz, to "
+        "paste:"
+    )
+
+
+def pasteable(points: Sequence[float]) -> str:
+    """Return the points to simulate next in Hz, every digit, separated by blanks."""
+    return " ".join(_full(p) for p in points)
+
+
+def as_sweep(points: Sequence[float]) -> str:
+    """Return the same points as start, stop and step, where they are many and evenly spaced."""
+    if len(points) < MANY_POINTS:
+        return ""
+    start, stop = min(points), max(points)
+    step = (stop - start) / (len(points) - 1)
+    even = all(abs(p - start - i * step) <= EVEN * step for i, p in enumerate(sorted(points)))
+    if not (even and step > 0):
+        return ""
+    return f"start {_full(start)} stop {_full(stop)} step {_full(float(f'{step:.12g}'))}"
+
+
+def _full(value: float) -> str:
+    """Write a number so that it reads back as the same."""
+    return repr(float(value)).removesuffix(".0")
 
 
 def evidence_sentence(name: str, passed: bool | None, detail: str) -> str:

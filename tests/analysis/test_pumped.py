@@ -59,6 +59,7 @@ def test_modes_are_folded_and_say_where_they_show(answers):
             inside = [low <= f <= high for f in mode.seen_hz]
             assert any(inside) or not mode.in_band
             assert all(view.leverage is None for view in mode.nodes)
+        assert np.isnan(result.detection.leverage).all()
 
 
 def test_the_model_is_the_response(answers):

@@ -1,71 +1,89 @@
-"""What the data see of a range: steps, limits between known ones, blind stretches, sweeps."""
+"""What the data see of a range: steps, limits, blind stretches, sweeps."""
+
+from dataclasses import replace
 
 import numpy as np
 import pytest
 from invented_results import example
 
 from polefit.analysis.range_view import (
-    COARSEST_STEP,
+    AT_MOST,
     MOST_POINTS,
     Range,
-    _largest_step,
-    _limits,
-    _stretches,
-    coarsest_step,
+    largest_step,
     sweep,
+    undersampled,
     view_of,
 )
-from polefit.modes import Detection
 
 
 def test_the_largest_step_is_that_relative_to_its_frequency():
     axis = np.array([1.0, 2.0, 2.5, 10.0, 11.0, 13.0])
-    assert _largest_step(axis, 10.5, 12.0) == (2.0, 12.0)
-    step, at = _largest_step(axis, 2.0, 12.0)
+    assert largest_step(axis, 10.5, 12.0) == (2.0, 12.0)
+    step, at = largest_step(axis, 2.0, 12.0)
     assert (step, at) == (7.5, 6.25)
     # a step that only reaches into the range counts, at the range's edge
-    assert _largest_step(axis, 9.0, 11.0) == (7.5, 9.0)
+    assert largest_step(axis, 9.0, 11.0) == (7.5, 9.0)
 
 
-def test_limits_between_known_frequencies_lie_on_a_power_law():
-    frequency = np.array([1.0, 4.0, 16.0])
-    found = Detection(frequency, -0.01, 0.95, np.array([[1.0, 1.0], [16.0, np.inf], [256.0, 4.0]]))
-    grid, limits = _limits(found, 2.0, 8.0)
-    assert grid.tolist() == [2.0, 4.0, 8.0]
-    assert limits[:, 0] == pytest.approx([4.0, 16.0, 64.0], rel=1e-12)
-    assert np.isinf(limits[:, 1]).all(), "beside a blind frequency nothing is promised"
-    beyond, held = _limits(found, 16.0, 20.0)
-    assert beyond.tolist() == [16.0, 20.0]
-    assert held[:, 1].tolist() == pytest.approx([4.0, 4.0])
-
-
-def test_blind_stretches_reach_to_the_nearest_seeing_frequency():
-    grid = np.array([1.0, 2.0, 3.0, 4.0, 5.0])
-    blind = np.array([True, False, False, True, False])
-    assert _stretches(grid, blind) == ((1.0, 2.0), (3.0, 5.0))
-    assert _stretches(grid, ~blind) == ((1.0, 4.0), (4.0, 5.0))
-    assert _stretches(grid, np.zeros(5, dtype=bool)) == ()
-    assert _stretches(grid, np.ones(5, dtype=bool)) == ((1.0, 5.0),)
+def blind(result, everywhere, single=()):
+    """The result with blind stretches: of all nodes, and of the first one besides."""
+    own = ((*everywhere, *single),) + (everywhere,) * (len(result.channels) - 1)
+    return replace(
+        result, detection=replace(result.detection, blind_hz=own, blind_everywhere_hz=everywhere)
+    )
 
 
 def test_the_view_of_the_example():
-    """Peaks are |r|/(|ζ|·2πf) at the least favourable frequency; the best node comes first."""
+    """Of each node the least favourable frequency in the range counts; the best node first."""
     result = example("stable")
     view = view_of(result, Range(1.5e9, 0.1))
-    axis = result.responses[0].frequency_hz
+    axis, known = result.responses[0].frequency_hz, result.detection
     assert view.points == np.count_nonzero((axis >= 1.35e9) & (axis <= 1.65e9))
     assert view.step_hz == pytest.approx(2.49e9 / 300, rel=1e-9)
-    assert coarsest_step(view) == pytest.approx(COARSEST_STEP * 0.01 * view.step_at_hz)
+    inside = (known.frequency_hz >= 1.35e9) & (known.frequency_hz <= 1.65e9)
+    assert np.count_nonzero(inside) > 0
+    assert np.array_equal(view.detection.frequency_hz, known.frequency_hz[inside])
+    assert (view.detection.damping_ratio, view.detection.power) == (-0.01, 0.95)
     assert {one.channel for one in view.limits} == set(result.channels)
-    ratios = [one.peak / one.response for one in view.limits]
+    ratios = [one.relative for one in view.limits]
     assert ratios == sorted(ratios)
     for one in view.limits:
-        column = result.detection.residue[:, result.channels.index(one.channel)]
-        frequency = result.detection.frequency_hz
-        near = (frequency > 1.2e9) & (frequency < 1.9e9)
-        assert column[near].min() <= one.residue <= column[near].max()
-        assert one.peak == pytest.approx(one.residue / (0.01 * 2 * np.pi * 1.5e9), rel=0.12)
+        column = result.channels.index(one.channel)
+        assert one.relative == known.relative[inside, column].max()
+        (at,) = np.flatnonzero(known.frequency_hz == one.frequency_hz)
+        assert one.residue == known.residue[at, column]
+        assert one.peak == known.peak[at, column]
+        assert one.blind_hz == ()
     assert view_of(result, Range(5e9, 0.1)) is None
+
+
+def test_of_a_range_between_two_frequencies_tried_the_nearest_counts():
+    result = example("stable")
+    known = result.detection.frequency_hz
+    between = np.sqrt(known[20] * known[21])
+    for near, nearest in ((between / 1.01, 20), (between * 1.01, 21)):
+        view = view_of(result, Range(near, 1e-4))
+        assert view.detection.frequency_hz.tolist() == [known[nearest]]
+
+
+def test_blind_stretches_are_those_of_the_range():
+    result = blind(example("stable"), ((0.3e9, 0.4e9), (1.3e9, 1.5e9)), ((1.6e9, 1.7e9),))
+    view = view_of(result, Range(1.5e9, 0.1))
+    assert view.detection.blind_everywhere_hz == ((1.35e9, 1.5e9),)
+    first = next(one for one in view.limits if one.channel == result.channels[0])
+    assert first.blind_hz == ((1.35e9, 1.5e9), (1.6e9, pytest.approx(1.65e9)))
+    # 18 of 36 samples: 8.3 MHz apart
+    assert view.detection.blind_share == pytest.approx(0.5, abs=1 / 36)
+    assert view_of(result, Range(0.7e9, 0.1)).detection.blind_share == 0.0
+
+
+def test_closer_points_help_where_samples_lie_far_apart():
+    """Steps of 83 MHz at 31 points, 8.3 MHz at 301; a half-width of ζ = −0.01 is 14 MHz."""
+    for points, helps in ((31, True), (301, False)):
+        result = blind(example("stable", points=points), ((1.4e9, 1.5e9),))
+        view = view_of(result, Range(1.5e9, 0.1))
+        assert undersampled(result, view) == (((1.4e9, 1.5e9),) if helps else ())
 
 
 @pytest.mark.parametrize(("low", "high"), [(1.35e9, 1.65e9), (997.0, 1203.0), (3.3e6, 4.1e6)])
@@ -86,3 +104,9 @@ def test_long_sweeps_keep_their_ratio():
     assert ratio.max() < 1.0051
     assert points.size < 2 * MOST_POINTS
     assert (points[0], points[-1]) == (1e8, 2e9)
+
+
+def test_no_sweep_is_without_bounds():
+    points = sweep(1e9, 1.1e9, -1e-9)
+    assert len(points) == AT_MOST
+    assert np.all(np.diff(points) > 0)

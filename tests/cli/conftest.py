@@ -22,7 +22,7 @@ class Session:
 
     def __init__(self, capsys):
         self.verdict = "stable"
-        self.read, self.identified, self.saved, self.asked = [], [], [], []
+        self.read, self.identified, self.saved, self.asked, self.how = [], [], [], [], []
         self.capsys = capsys
         self.error = None
 
@@ -50,10 +50,11 @@ def polefit_command(monkeypatch, capsys):
         session.read.append((str(file), options))
         return (f"responses of {file}",)
 
-    def identify(responses, *, band_hz=None, confidence=0.95, progress=None):
+    def identify(responses, *, band_hz=None, confidence=0.95, progress=None, **how):
         if session.error is not None:
             raise session.error
         session.identified.append((responses, band_hz, confidence))
+        session.how.append(how)
         progress("fitting")
         return session.answer()
 

@@ -148,6 +148,19 @@ def test_band_and_confidence_reach_the_engine(polefit_command):
     assert polefit_command.identified[-1][1:] == (None, 0.95)
 
 
+@pytest.mark.parametrize("command", [["identify"], ["confirm", "--near", "1.5GHz"]])
+def test_noise_and_detection_damping_reach_the_engine(polefit_command, command):
+    polefit_command(
+        *command, "a", "--noise-relative", "0.003", "--noise-absolute", "2e-6",
+        "--detection-damping", "-0.002",
+    )  # fmt: skip
+    polefit_command(*command, "a")
+    assert polefit_command.how == [
+        {"noise_relative": 0.003, "noise_absolute": 2e-6, "detection_damping": -0.002},
+        {"noise_relative": None, "noise_absolute": None, "detection_damping": -0.01},
+    ]
+
+
 @pytest.mark.parametrize(
     ("text", "hertz"),
     [
@@ -198,6 +211,10 @@ def test_name_lists():
         (["identify", "a", "--band", "1Gz", "2GHz"], "is not a frequency"),
         (["identify", "a", "--confidence", "1.5"], "--confidence"),
         (["identify", "a", "--confidence", "0.5"], "not in the range 0.5<x<1"),
+        (["identify", "a", "--detection-damping", "-1"], "not in the range -1<x<1"),
+        (["identify", "a", "--noise-relative", "0"], "'--noise-relative': 0.0 is not in the range"),
+        (["identify", "a", "--noise-absolute", "-1e-3"], "not in the range x>0"),
+        (["identify", "a", "--noise-absolute", "inf"], "--noise-absolute"),
         (["identify", "a", "--quantity", "loop-gain"], "'loop-gain' is not one of 'impedance'"),
         (["identify", "a", "--figure-format", "svg"], "give --figures DIR, too"),
         (["identify", "a", "--json", "--html", "x.html"], "'--html' would be its path"),
@@ -386,6 +403,9 @@ def test_a_reader_that_goes_away_is_no_error():
         ("reference_ohm: needed; say it", "--reference-ohm: needed; say it"),
         ("a.csv: pump_hz: states it; leave it out", "a.csv: --pump: states it; leave it out"),
         ("band_hz: no point; the data", "--band: no point; the data"),
+        ("noise_relative: 0 is none; give", "--noise-relative: 0 is none; give"),
+        ("noise_absolute: 0 is none; give", "--noise-absolute: 0 is none; give"),
+        ("detection_damping: 0 is none; give", "--detection-damping: 0 is none; give"),
         ("a; say quantity= (--quantity)", "a; say --quantity"),
         ("a; say form= (--form) decibel-angle", "a; say --form decibel-angle"),
         ("a; say decimal=',' (--decimal ,) for b", "a; say --decimal , for b"),

@@ -103,6 +103,9 @@ def test_separately_the_worst_decides(polefit_command, tmp_path):
         (["confirm", "a", "--near", "1GHz", "--within", "nan"], "--within"),
         (["confirm", "a", "--near", "1GHz", "--within", "10%"], "--within"),
         (["confirm", "a", "--near", "1GHz", "--quantity", "loop-gain"], "is not one of"),
+        (["confirm", "a", "--near", "1GHz", "--noise-relative", "0"], "not in the range x>0"),
+        (["confirm", "a", "--near", "1GHz", "--noise-absolute", "nan"], "--noise-absolute"),
+        (["confirm", "a", "--near", "1GHz", "--detection-damping", "1"], "not in the range -1<x<1"),
         (["confirm", "a", "--near", "1GHz", "--html", "-"], "only --json can go"),
     ],
 )

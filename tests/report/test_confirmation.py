@@ -54,7 +54,8 @@ def test_the_answer_comes_first_in_one_sentence():
     )
     assert verdict_sentence(answer_to("refuted")).startswith(
         "REFUTED: nothing grows near 1.5 GHz ± 10 %; the resonance at 1.504 GHz with damping ratio "
-        "0.01450 ± 0.00020 decays; a mode with damping ratio −0.01 there that raises a peak above "
+        "0.01450 ± 0.00020 decays; in the range a mode with damping ratio −0.01 "
+        "would have been found with 95 % probability from a peak of "
     )
     assert verdict_sentence(answer_to("unsettled")).startswith(
         "UNDECIDED: whether a mode grows near 1.5 GHz ± 10 % cannot be told: the mode at 1.504 GHz "
@@ -155,16 +156,25 @@ def test_indices_point_into_the_identification():
     assert modes[document["modes_elsewhere"][0]]["frequency_hz"]["value"] == pytest.approx(0.812e9)
 
 
-def test_blind_nodes_are_null():
+def test_blind_nodes_are_null_and_named():
     result = example("stable")
-    residue = np.full_like(result.detection.residue, math.inf)
-    blind = replace(result, detection=replace(result.detection, residue=residue))
-    answer = hold_against(blind, checked_range(1.5e9, 0.1))
+    band = (result.band_hz,)
+    blind = replace(
+        result.detection,
+        residue=np.full_like(result.detection.residue, math.inf),
+        blind_hz=(band,) * len(result.channels),
+        blind_everywhere_hz=band,
+        blind_share=1.0,
+    )
+    answer = hold_against(replace(result, detection=blind), checked_range(1.5e9, 0.1))
     document = answer.to_dict()
     VALIDATOR.validate(document)
-    assert document["range_view"]["limits"][0]["peak"] is None
+    first = document["range_view"]["limits"][0]
+    assert (first["peak"], first["blind_hz"]) == (None, [pytest.approx([1.35e9, 1.65e9])])
     assert document["range_view"]["blind_hz"] == [pytest.approx([1.35e9, 1.65e9])]
+    assert document["range_view"]["blind_share"] == 1.0
     assert str(answer).count("  blind  ") == 5
+    assert str(answer).count("  everywhere\n") == 5
 
 
 def test_several_answers_in_one_document():
@@ -201,7 +211,7 @@ def test_the_page_says_what_the_text_says():
         "Modes in the range, 1.35 GHz to 1.65 GHz",
         "Modes elsewhere, nearest first",
         "1 mode was found between 1.35 GHz and 1.65 GHz, and it decays",
-        "What would have been found in the range, of a mode of damping ratio −0.01",
+        "What would have been found in the range, of a mode with damping ratio −0.01",
         "The identification behind it",
         "STABLE: no unstable mode between 10 MHz and 2.5 GHz",
         "Radio-frequency power burns",
@@ -214,6 +224,7 @@ def test_what_is_open_asks_for_more_and_numbers_stay_those_of_the_identification
     text = Page(confirmation_html(answer_to("beyond", points=151))).text
     assert "None was found there." in text
     assert "What to simulate next" in text
+    assert "start 2500000000 stop" in text, "evenly spaced, to paste"
     elsewhere = Page(confirmation_html(answer_to("elsewhere", points=151))).text
     table = elsewhere.split("Modes elsewhere, nearest first")[1].split("What the answer")[0]
     assert table.index("812.00") < table.index("1.50432"), "nearest first"

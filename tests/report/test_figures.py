@@ -234,15 +234,47 @@ def test_many_nodes_are_cut_and_counted(build):
     assert len(plot_overview(result).axes) == 30
 
 
-def test_detection_shades_what_is_blind(unstable):
-    residue = unstable.detection.residue.copy()
-    residue[5] = np.inf
-    blind = replace(unstable, detection=replace(unstable.detection, residue=residue))
-    assert "blind" in texts(figure_of(plot_detection(blind)))
-    assert "blind" not in texts(figure_of(plot_detection(unstable)))
-    residue[:] = np.nan
-    nothing = replace(unstable, detection=replace(unstable.detection, residue=residue))
-    drawing.figure_bytes(figure_of(plot_detection(nothing)), "png", 40)
+def test_detection_hatches_where_every_node_is_blind(unstable):
+    found = unstable.detection
+    blind = replace(unstable, detection=replace(found, blind_everywhere_hz=((20e6, 50e6),)))
+    ax = plot_detection(blind)
+    hatched = [p for p in ax.patches if p.get_hatch()]
+    assert [(p.get_x(), p.get_x() + p.get_width()) for p in hatched] == [(20e6, 50e6)]
+    assert "every node blind" in texts(figure_of(ax))
+    assert not [p for p in plot_detection(unstable).patches if p.get_hatch()]
+
+
+def test_detection_of_nothing_can_be_drawn(unstable):
+    found = unstable.detection
+    nothing = replace(found, residue=np.full_like(found.residue, np.inf))
+    drawing.figure_bytes(figure_of(plot_detection(replace(unstable, detection=nothing))), "png", 40)
+
+
+def test_detection_shows_limits_and_modes_in_decibels_of_the_response(build):
+    """One channel with a flat response of 10 Ω: a peak of 0.1 Ω is at −40 dB, one of 1 Ω at −20."""
+    result = build(nodes=("gate2",))
+    found, mode = result.detection, result.modes[0]
+    omega = 2 * np.pi * found.frequency_hz[:, None]
+    flat = replace(
+        found,
+        residue=0.1 * omega * 0.01 / np.sqrt(1 - 0.01**2),
+        response=np.full_like(found.residue, 10.0),
+    )
+    view = replace(mode.nodes[0], residue=1.0 * abs(mode.pole_rad_per_s.real) + 0j)
+    result = replace(result, modes=(replace(mode, nodes=(view,)),), detection=flat)
+    curve, mark = [line for line in plot_detection(result).lines if line.get_zorder() != 1]
+    assert np.allclose(curve.get_ydata(), -40)
+    assert mark.get_ydata() == pytest.approx([-20])
+    assert mark.get_xdata() == pytest.approx([mode.frequency_hz.value])
+
+
+def test_many_channels_leave_the_detection_readable(build):
+    result = build(nodes=tuple(f"n{i}" for i in range(30)), points=31)
+    legend = plot_detection(result).get_legend()
+    shown = [entry.get_text() for entry in legend.get_texts()]
+    assert "single nodes" in shown
+    assert "the best node" in shown
+    assert len(shown) <= 6
 
 
 def test_wrong_arguments_are_refused(unstable, tmp_path):

@@ -70,9 +70,27 @@ def test_detection_and_noise_are_kept(written):
     with h5py.File(path) as file:
         stored = file["identification/detection"]
         assert np.array_equal(stored["residue"][:], result.detection.residue)
+        assert np.array_equal(stored["peak"][:], result.detection.peak)
+        assert np.array_equal(stored["peak_over_response"][:], result.detection.relative)
+        assert np.array_equal(stored["leverage"][:], result.detection.leverage)
+        assert stored["blind_hz"].shape == (0, 2)
+        assert stored["channel_blind_hz"].shape == (0, 3)
         assert stored.attrs["power"] == result.detection.power
         for i, std in enumerate(result.noise_std):
             assert np.array_equal(file[f"identification/noise_std/{i}"][:], std)
+
+
+def test_blind_stretches_are_kept(unstable, tmp_path):
+    blind = ((1e8, 2e8),)
+    several = (blind, ((1e8, 3e8), (1e9, 2e9)), blind, blind, blind)
+    found = replace(unstable.detection, blind_hz=several, blind_everywhere_hz=blind)
+    write_identification(tmp_path / "blind.h5", replace(unstable, detection=found))
+    with h5py.File(tmp_path / "blind.h5") as file:
+        stored = file["identification/detection"]
+        assert stored["blind_hz"][:].tolist() == [[1e8, 2e8]]
+        assert stored["channel_blind_hz"][:3].tolist() == [
+            [0, 1e8, 2e8], [1, 1e8, 3e8], [1, 1e9, 2e9],
+        ]  # fmt: skip
 
 
 def test_what_is_not_known_is_left_out(written, tmp_path):

@@ -37,6 +37,11 @@ def test_it_says_everything_that_the_text_says(page):
         "Suspect loop 1: mode 1, 1.504 GHz",
         "stable-model misfit passed",
         "rank not made",
+        "What these tests ask",
+        "can a model without a growing pole explain the same data?",
+        "What would have gone unnoticed",
+        "A mode with damping ratio −0.01 would have been found with 95 % probability",
+        "Smallest peak found at each node",
         "order 10; lowest BIC",
         "every probed port open",
         "not claimed as modes",
@@ -54,6 +59,7 @@ def test_the_other_verdicts(build, verdict):
     text = Page(identification_html(build(verdict, points=31))).text
     assert f"{verdict.upper()}:" in text
     assert ("What to simulate next" in text) is (verdict == "undecided")
+    assert ("1490000000 1493750000 1497500000" in text) is (verdict == "undecided")
 
 
 def test_hostile_names_stay_text(build):
@@ -77,7 +83,8 @@ def test_thirty_channels_stay_usable(build):
         build("stable", nodes=tuple(f"n{i}" for i in range(30)), points=51)
     )
     assert markup.count("<details open>") == 3
-    assert markup.count("<details>") == 27 + 2  # and the poles not claimed, the modes of no concern
+    # and the poles not claimed, the modes of no concern, what tests ask, the limits
+    assert markup.count("<details>") == 27 + 4
     assert "All channels" in markup
     assert len(markup) < 5_000_000
 

@@ -68,7 +68,11 @@ def test_the_schema_names_every_member_that_is_written(unstable):
     node = defs["mode"]["properties"]["nodes"]["items"]["properties"]
     assert mode["nodes"][0].keys() == node.keys()
     assert document["sources"][0].keys() == defs["source"]["properties"].keys()
-    assert document["detection"].keys() == defs["detection"]["properties"].keys()
+    limits = defs["detection"]["properties"]
+    assert document["detection"].keys() == limits.keys()
+    assert (
+        document["detection"]["limits"][0].keys() == limits["limits"]["items"]["properties"].keys()
+    )
 
 
 def test_values_are_those_of_the_result(unstable):
@@ -101,6 +105,24 @@ def test_source_is_one_file_or_null(build):
     assert arrays["sources"] == []
 
 
+def test_limits_come_as_residue_peak_and_leverage(unstable):
+    found = unstable.detection
+    blind = ((1e8, 2e8),)
+    leverage = found.leverage.copy()
+    leverage[:, 1] = np.nan
+    found = replace(
+        found, leverage=leverage, blind_hz=(blind, (), (), (), ()), blind_everywhere_hz=()
+    )
+    document = identification_dict(replace(unstable, detection=found))["detection"]
+    first, second = document["limits"][:2]
+    assert first["leverage"] == first["residue"] == found.residue[:, 0].tolist()
+    assert second["leverage"] is None
+    assert first["peak"] == found.peak[:, 0].tolist()
+    assert first["peak_over_response"] == found.relative[:, 0].tolist()
+    assert (first["blind_hz"], second["blind_hz"]) == ([[1e8, 2e8]], [])
+    assert (document["blind_hz"], document["blind_share"]) == ([], 0.0)
+
+
 def test_not_finite_becomes_null(unstable):
     mode = replace(
         unstable.modes[0], damping_ratio=Estimate(math.nan), significance=np.float64("inf")
@@ -110,6 +132,7 @@ def test_not_finite_becomes_null(unstable):
     assert document["modes"][0]["damping_ratio"]["value"] is None
     assert document["modes"][0]["significance"] is None
     assert document["detection"]["limits"][0]["residue"][0] is None
+    assert document["detection"]["limits"][0]["peak_over_response"][0] is None
     VALIDATOR.validate(document)
     json.dumps(document, allow_nan=False)
 

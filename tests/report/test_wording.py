@@ -47,13 +47,21 @@ def test_comparison_with_the_stable_model(stable, ratio, words):
     assert basis(replace(stable, fit=fit))["Stable model"].endswith(words)
 
 
-def test_detection_limit_of_exact_data_is_not_a_number_of_femtoohms(stable):
-    exact = replace(
-        stable, detection=replace(stable.detection, residue=stable.detection.residue * 1e-14)
-    )
-    text = wording.detection_limit(exact)
-    assert "raises a peak above a millionth of the typical response at" in text
-    assert "Ω" not in text
+def test_points_to_simulate_read_back_as_the_same_numbers():
+    points = (1.4900000000000001e9, 1.5e9 + 1 / 3, 1.61e9)
+    assert tuple(float(word) for word in wording.pasteable(points).split(" ")) == points
+    text = wording.next_points(points)
+    assert text.startswith("Simulate 3 more points from 1.49 GHz to 1.61 GHz")
+    assert wording.as_sweep(points) == ""
+    assert wording.next_points(()) == ""
+    assert wording.next_points((2e9,)).startswith("Simulate one more point, 2 GHz")
+
+
+def test_evenly_spaced_points_are_told_as_a_sweep_too():
+    even = tuple(1e9 + 2.5e6 * i for i in range(11))
+    assert wording.as_sweep(even) == "start 1000000000 stop 1025000000 step 2500000"
+    assert wording.as_sweep((*even[:-1], even[-1] + 1e3)) == ""
+    assert wording.as_sweep((1e9,) * 6) == ""
 
 
 @pytest.mark.parametrize(

@@ -144,13 +144,16 @@ def example(verdict="unstable", nodes=NODES, points=301, noise=2e-3, wide=False,
         BackgroundPole(complex(2e7, TWO_PI * 1.9e9), "residue 1.2 std at best: not significant"),
         BackgroundPole(complex(-2e9, TWO_PI * 2.9e9), "above the band"),
     )
+    tried = np.geomspace(max(low, 1e6), high, 40)
+    limits = rng.uniform(0.6, 1.6, len(channels)) * np.geomspace(2e7, 2e9, 40)[:, np.newaxis]
     detection = Detection(
-        frequency_hz=np.geomspace(max(low, 1e6), high, 40),
+        frequency_hz=tried,
         damping_ratio=-0.01,
         power=0.95,
-        residue=np.abs(
-            rng.uniform(0.6, 1.6, len(channels)) * np.geomspace(2e7, 2e9, 40)[:, np.newaxis]
-        ),
+        residue=limits,
+        response=np.abs(model.response(tried)),
+        leverage=limits,
+        blind_hz=((),) * len(channels),
     )
     return Identification(
         verdict=verdict,
