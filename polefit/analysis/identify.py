@@ -18,6 +18,7 @@ from polefit.analysis.detection import (
 from polefit.analysis.evidence import MOSTLY_NOISE
 from polefit.analysis.folding import coverage
 from polefit.analysis.judgement import Judged, judge
+from polefit.analysis.next_points import next_plans
 from polefit.analysis.noise_origin import StatedNoise, noise_origin
 from polefit.analysis.preparation import Prepared, node_names, prepare
 from polefit.engine import complex_poles, sections
@@ -158,6 +159,7 @@ def _answer(
     verdict, reason = in_view_of(
         *_run_verdict(judged, fit, _poor(estimation, errors, noises)), detection
     )
+    plans = next_plans(estimation, judged.modes, detection, verdict, prepared.scale_rad_per_s)
     return Identification(
         verdict=verdict,
         reason=reason,
@@ -175,7 +177,9 @@ def _answer(
             *_delay_notes(model),
             *_edge_notes(judged.beyond, band),
             *blind_notes(detection, channels),
+            *(plan.note for plan in plans),
         ),
+        next_points_hz=tuple(sorted({point for plan in plans for point in plan.points_hz})),
         noise_std=tuple(np.sqrt(v.sum(axis=1)).T for v in estimation.noise),
     )
 

@@ -20,9 +20,9 @@ from polefit.engine.noise import variance
 from polefit.engine.projection import Projected, Solution, model_values
 from polefit.engine.significance import invert
 from polefit.estimates import si
-from polefit.modes import Mode
+from polefit.modes import Detection, Mode, Verdict
 
-MOST_POINTS = 24
+FEWEST_POINTS, MOST_POINTS = 5, 24
 WANTED = 6.0
 """Growth rate over its expected uncertainty at which no more points are asked for: twice what a
 verdict needs, since estimates and expectations err."""
@@ -41,6 +41,7 @@ FEW_PER_WIDTH = 2.0
 SURE = 10.0
 """Growth rates known so well need no more points, however few there are in the width."""
 MODES = 3
+MOST_IN_STRETCH, MOST_IN_ALL = 200, 1000
 
 
 @dataclass(frozen=True)
@@ -59,8 +60,14 @@ class Plan:
     note: str
 
 
-def plan_for(estimation: Estimation, modes: Sequence[Mode], scale: float) -> list[Plan]:
-    """Plan further points for modes whose growth rate is in question or that are under-sampled.
+def next_plans(
+    estimation: Estimation,
+    modes: Sequence[Mode],
+    detection: Detection | None,
+    verdict: Verdict,
+    scale: float,
+) -> list[Plan]:
+    """Plan further points where the run is undecided or modes are under-sampled.
 
     Parameters
     ----------
@@ -68,28 +75,57 @@ def plan_for(estimation: Estimation, modes: Sequence[Mode], scale: float) -> lis
         The model.
     modes : sequence of Mode
         Most dangerous first; at most three are planned for.
+    detection : Detection or None
+        What would have gone unnoticed.
+    verdict : str
+        Of the run.
     scale : float
         rad/s in the normalised frequency unit.
 
     Returns
     -------
     list of Plan
-        One for each mode that more points would help.
+        One for each mode that more points would help; one for the blind stretches where they
+        leave a run undecided.
     """
-    asked = [m for m in modes if m.in_band and m.pole_rad_per_s.imag > 0 and _in_question(m)]
-    asked += [m for m in modes if m not in asked and m.in_band and _sparse(m, estimation, scale)]
+    ringing = [m for m in modes if m.in_band and (m.pole_rad_per_s.imag > 0 or m.seen_hz)]
+    asked = [m for m in ringing if m.verdict == "undecided"]
+    asked += [m for m in ringing if m not in asked and _sparse(m, estimation, scale)]
     plans = [_plan(estimation, mode, scale) for mode in asked[:MODES]]
-    return [plan for plan in plans if plan is not None]
+    found = [plan for plan in plans if plan is not None]
+    if verdict == "undecided" and not found and detection is not None:
+        found += _into_blind_stretches(detection)
+    return found
 
 
-def _in_question(mode: Mode) -> bool:
-    return mode.verdict == "undecided"
+def _into_blind_stretches(detection: Detection) -> list[Plan]:
+    """Plan points evenly over the stretches where every node is blind, a mode's width apart."""
+    stretches = detection.blind_everywhere_hz
+    points: list[float] = []
+    for low, high in stretches:
+        step = abs(detection.damping_ratio) * max(low, high / 100)
+        count = min(max(math.ceil((high - low) / step), 2), MOST_IN_STRETCH)
+        points += np.linspace(low, high, count).tolist()
+    if not points or len(points) > MOST_IN_ALL:
+        return []
+    listed = tuple(sorted({float(f"{point:.12g}") for point in points}))
+    note = (
+        f"{len(listed)} points fill the stretches where every node is blind to a mode with damping "
+        f"ratio {detection.damping_ratio:g}, half its width apart or as near to that as fits"
+    )
+    return [Plan(listed, note)]
+
+
+def _centre(mode: Mode) -> complex:
+    """Return where the strongest line of a mode lies in the sweep, rad/s."""
+    pole = mode.pole_rad_per_s
+    return complex(pole.real, 2 * math.pi * mode.seen_hz[0]) if mode.seen_hz else pole
 
 
 def _sparse(mode: Mode, estimation: Estimation, scale: float) -> bool:
     """Tell whether too few samples lie within the width of a mode that is not yet sure."""
-    pole, std = mode.pole_rad_per_s / scale, mode.growth_rate_per_s.std
-    if pole.imag <= 0 or (std is not None and abs(mode.pole_rad_per_s.real) > SURE * std):
+    pole, std = _centre(mode) / scale, mode.growth_rate_per_s.std
+    if std is not None and abs(mode.pole_rad_per_s.real) > SURE * std:
         return False
     axis = np.unique(np.concatenate([block.s.imag for block in estimation.blocks]))
     inside = np.sum(np.abs(axis - pole.imag) < abs(pole.real))
@@ -98,7 +134,7 @@ def _sparse(mode: Mode, estimation: Estimation, scale: float) -> bool:
 
 def _plan(estimation: Estimation, mode: Mode, scale: float) -> Plan | None:
     solution = estimation.solution
-    pole = mode.pole_rad_per_s / scale
+    pole = _centre(mode) / scale
     index = int(np.argmin(np.abs(solution.sections.own_poles() - pole)))
     which = _best_channels(estimation, index)
     tried = _candidates(estimation, pole, mode)
@@ -114,12 +150,11 @@ def _plan(estimation: Estimation, mode: Mode, scale: float) -> Plan | None:
     if not chosen or before == 0:
         return None
     points = tuple(sorted(float(f"{tried[i] * scale / (2 * math.pi):.12g}") for i in chosen))
-    count = "1 point" if len(points) == 1 else f"{len(points)} points"
     note = (
-        f"{count} around {si(mode.frequency_hz.value, 'Hz')} are expected to lower the standard "
-        f"uncertainty of that mode's growth rate from {si(before * scale, '1/s', 3)} to "
-        f"{si(after * scale, '1/s', 3)}, in the model as it is; simulate them at the same nodes "
-        "and add them to the sweep"
+        f"further points ({len(points)}) around {si(mode.frequency_hz.value, 'Hz')} are expected "
+        "to lower the standard uncertainty of that mode's growth rate from "
+        f"{si(before * scale, '1/s', 3)} to {si(after * scale, '1/s', 3)}, in the model as it is; "
+        "simulate them at the same nodes and add them to the sweep"
     )
     return Plan(points, note)
 
@@ -237,7 +272,7 @@ def _greedy(
     free = np.ones(len(rows), dtype=bool)
     gap = CLOSEST * size
     while len(chosen) < MOST_POINTS and free.any():
-        if size > WANTED * math.sqrt(left):
+        if len(chosen) >= FEWEST_POINTS and size > WANTED * math.sqrt(left):
             break
         seen = rows @ (covariance @ direction)
         spread = rows @ covariance @ rows.transpose(0, 2, 1) + np.eye(rows.shape[1])
