@@ -212,7 +212,8 @@ def _mode(
         std = c.line.firm_std  # no evidence of growth: what hides behind it need not be feared
     distance = c.pole.real / std if std > 0 else math.copysign(math.inf, c.pole.real)
     limit = claim_limit(c.line.pole, estimation)
-    evidence = evidence_for(c.line, estimation, against, distance, factor, scale, limit)
+    share = max(view.share for view in nodes)
+    evidence = evidence_for(c.line, estimation, against, distance, factor, scale, limit, share)
     evidence = (*evidence, *c.evidence)
     return Mode(
         pole_rad_per_s=c.pole,

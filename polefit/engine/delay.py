@@ -274,7 +274,7 @@ def _change(
         moved = list(blocks)
         moved[which] = turned_block(blocks[which], np.where(shared, change, 0.0))
         start = solve(moved, solution.sections, solution.direct)
-        return math.log(refine(moved, start, iterations=3, tolerance=1.0).misfit)
+        return math.log(max(refine(moved, start, iterations=3, tolerance=1.0).misfit, 1e-300))
 
     change = _bounded(miss, 0.0, REACH / width, FINE / width)
     return change if miss(change) < miss(0.0) else 0.0

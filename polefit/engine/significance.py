@@ -86,6 +86,8 @@ def leverage(blocks: Sequence[Block], solution: Solution, info: Information) -> 
     -------
     list of (K, 2, N) float ndarray
         Between 0 and 1; the variance of a residual is that of the noise times one minus this.
+        They sum to the number of parameters that the data know; where nearly dependent columns
+        make it more than there are, that number is spread evenly.
 
     Notes
     -----
@@ -107,8 +109,20 @@ def leverage(blocks: Sequence[Block], solution: Solution, info: Information) -> 
             columns = solution.sections.evaluate_with_slopes(piece.s, solution.direct)
             share = np.sum((weighted(piece, columns) @ mix) ** 2, axis=2)
             followed.append(share.reshape(block.channels, 2, -1))
-        found.append(np.minimum(np.concatenate(followed, axis=2), 1.0))
-    return found
+        found.append(np.concatenate(followed, axis=2))
+    total, wanted = sum(float(one.sum()) for one in found), _parameters(solution)
+    if not total < (1 + UNEVEN) * wanted:
+        share = wanted / sum(one.size for one in found)
+        return [np.full_like(one, min(share, 1.0)) for one in found]
+    return [np.minimum(one, 1.0) for one in found]
+
+
+def _parameters(solution: Solution) -> int:
+    return solution.sections.order + sum(part.coefficients.size for part in solution.parts)
+
+
+UNEVEN = 0.05
+"""Share by which leverages may exceed their known sum."""
 
 
 SPARED_SAMPLES = 3
