@@ -2,13 +2,13 @@
 
 from __future__ import annotations
 
-import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
 
-from polefit.engine.blocks import ComplexArray, FloatArray
+from polefit.analysis.candidate import Candidate
+from polefit.analysis.persistence import persistence
 from polefit.engine.estimation import Estimation
 from polefit.engine.stable_model import StableModel, compare_with_stable
 from polefit.modes import Evidence
@@ -17,9 +17,6 @@ STABLE_MODEL_RISE = 10.8
 """Rise of χ² that speaks against every stable model (χ² with one degree, p = 0.001)."""
 COLOURED_MISFIT = 10.0
 """Where the residual is not noise-like a stable model must fit this many times worse."""
-CAPPED = 10
-"""A search that the number of points stopped at this many poles or more has not come to rest: its
-growing modes do not count. Below it, a few points may show a simple circuit."""
 GROWING_SCORE = 2.0
 """A growing mode is asked for so many times the χ² from which a pole is claimed. One whose growth
 is known to a sixth has three times that much; spare pairs that mend small errors of a model whose
@@ -42,44 +39,6 @@ COMPANION_RATIO = 5.0
 """... and how many times wider the other may be."""
 COMPARABLE = 0.3
 """Within one half-width a mode this much weaker counts like a stronger one: the two may cancel."""
-
-
-@dataclass(frozen=True)
-class Candidate:
-    """One section of the model, in rad/s.
-
-    Parameters
-    ----------
-    index : int
-        Number of the section.
-    pole : complex
-        Its upper or real pole.
-    covariance : (2, 2) float ndarray
-        Of real and imaginary part.
-    score : float
-        Wald χ² of its residues.
-    in_band, near_band : bool
-        Where it lies.
-    images : tuple of complex
-        Other growing poles of the model that stand for the same mode.
-    related : frozenset of int
-        Sections that are near for a known reason and cast no doubt on it.
-    spread : (float, float)
-        Part of the two variances that stands for what a model past the order makes of it.
-    firm_std : float or None
-        Standard deviation of its real part without the uncertainty that a richer model adds.
-    """
-
-    index: int
-    pole: complex
-    covariance: FloatArray
-    score: float
-    in_band: bool
-    near_band: bool
-    images: tuple[complex, ...] = ()
-    related: frozenset[int] = frozenset()
-    spread: tuple[float, float] = (0.0, 0.0)
-    firm_std: float | None = None
 
 
 @dataclass(frozen=True)
@@ -166,7 +125,7 @@ def evidence_for(
             f"{factor:.2f} are needed",
         ),
         _residue(c, limit, share),
-        _persistence(c, estimation, scale),
+        *persistence(c, estimation, scale, against is not None and c.index in against.companions),
     ]
     if against is not None and c.index in against.companions:
         items.append(_against_stable(c, against, estimation))
@@ -213,30 +172,6 @@ def _companions(c: Candidate, estimation: Estimation, scale: float) -> int:
     return int(near.sum()) - 1 if np.any(near & rival) else 0
 
 
-def _persistence(c: Candidate, estimation: Estimation, scale: float) -> Evidence:
-    """Check that the pole is there, on the same side, at a higher order."""
-    pole = c.pole / scale
-    std = math.sqrt(float(np.trace(c.covariance))) / scale
-    allowed = 5 * std + 0.5 * abs(pole.real)
-    name = "persistence over orders"
-    order = estimation.past.sections.poles().size
-    fewer = estimation.solution.sections.poles().size
-    if order == fewer:
-        reached = estimation.richest.sections.order >= CAPPED
-        too_few = "too few points for a model of higher order"
-        return Evidence(name, False if reached and c.pole.real > 0 else None, too_few)
-    other = nearest(pole, estimation.past.sections.poles())
-    shift = math.inf if other is None else abs(other - pole)
-    if shift == 0:
-        return Evidence(name, None, "a model of higher order could not be fitted any better")
-    passed = shift <= allowed
-    share = shift / max(abs(pole.real), 1e-300)
-    moves = f"{share:.2g} half-widths" if share > 1e-6 else "less than a millionth half-width"
-    detail = f"with {order} poles instead of {fewer} it "
-    detail += "is not found" if other is None else f"moves by {moves}"
-    return Evidence(name, passed, detail)
-
-
 def _against_stable(c: Candidate, against: Comparison, estimation: Estimation) -> Evidence:
     stable, whiteness = against.alone[c.index], estimation.whiteness
     companions = against.companions[c.index]
@@ -264,11 +199,3 @@ def _against_stable(c: Candidate, against: Comparison, estimation: Estimation) -
 
 def _times(ratio: float) -> str:
     return "more than 10000 times" if ratio > 1e4 else f"{ratio:.4g} times"
-
-
-def nearest(pole: complex, poles: ComplexArray) -> complex | None:
-    """Return the nearest pole of the same kind, real or one of a pair."""
-    same = poles[(poles.imag == 0) == (pole.imag == 0)]
-    if same.size == 0:
-        return None
-    return complex(same[int(np.argmin(np.abs(same - pole)))])

@@ -19,7 +19,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 import scipy.special
 
-from polefit.analysis.evidence import Candidate
+from polefit.analysis.candidate import Candidate
 from polefit.engine.blocks import FloatArray
 from polefit.estimates import si
 from polefit.modes import Evidence

@@ -9,7 +9,8 @@ from dataclasses import dataclass
 import numpy as np
 import scipy.special
 
-from polefit.analysis.evidence import Candidate, Comparison, compare, evidence_for
+from polefit.analysis.candidate import Candidate
+from polefit.analysis.evidence import Comparison, compare, evidence_for
 from polefit.analysis.folding import Claim, as_it_is, fold, images_in
 from polefit.analysis.images import with_images
 from polefit.analysis.pole_uncertainty import KnownPoles, joint_covariance, known_poles

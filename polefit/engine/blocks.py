@@ -120,6 +120,15 @@ def pieces(block: Block, shared: int = 0) -> list[Block]:
     ]
 
 
+def window(block: Block, low: float, high: float) -> Block | None:
+    """Return the samples from low to high; None where there are none."""
+    inside = (block.s.imag >= low) & (block.s.imag <= high)
+    if not inside.any():
+        return None
+    turn = None if block.turn is None else block.turn[:, inside]
+    return make_block(block.s[inside], block.values[:, inside], block.weight[:, :, inside], turn)
+
+
 def weighted_parts(block: Block, values: ComplexArray) -> FloatArray:
     """Return the weighted real rows, (K, 2N), of one complex (K, N) array."""
     if block.turn is not None:

@@ -141,11 +141,15 @@ def largest_order(blocks: Sequence[Block]) -> int:
 
 
 def first_model(
-    blocks: Sequence[Block], order: int, relocations: int = RELOCATIONS, kind: PoleSet = NONE
+    blocks: Sequence[Block],
+    order: int,
+    relocations: int = RELOCATIONS,
+    kind: PoleSet = NONE,
+    damping: float = 0.01,
 ) -> Solution:
     """Fit a model of given order from poles spread over the band."""
     low, high = _edges(blocks)
-    start = kind.like(starting_poles(low, high, min(order, largest_order(blocks))))
+    start = kind.like(starting_poles(low, high, min(order, largest_order(blocks)), damping))
     return _vector_fit(blocks, start, relocations)
 
 

@@ -7,7 +7,7 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from polefit.analysis.evidence import Candidate
+from polefit.analysis.candidate import Candidate
 from polefit.analysis.folding import as_it_is, coverage, fold, folded, images_in
 
 DRIVE = 2 * math.pi * 1e9

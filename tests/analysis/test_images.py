@@ -6,7 +6,7 @@ from dataclasses import replace
 import numpy as np
 import pytest
 
-from polefit.analysis.evidence import Candidate
+from polefit.analysis.candidate import Candidate
 from polefit.analysis.folding import fold
 from polefit.analysis.images import with_images
 from polefit.engine.complex_poles import NONE

@@ -17,7 +17,7 @@ from problems import (
     true_sections,
 )
 
-from polefit.analysis.evidence import nearest
+from polefit.analysis.candidate import nearest
 from polefit.analysis.judgement import CLAIM_CHANCE, _verdict, judge, residue_std
 from polefit.channels import as_channel
 from polefit.engine.estimation import Estimation, freedom, go_past
