@@ -21,7 +21,7 @@ _ASKS = {
     "chance result of the search would not come back.",
     "projection on unstable functions": "is there a part of the response that no sum of decaying "
     "modes can have, whatever the order? It must stand above the error of the interpolation.",
-    "frequency division": "does the mode lie at half the frequency of the drive, as one line, or is "
+    "frequency division": "does the mode lie at half the frequency of the drive as one line, or is "
     "it a pair mirrored about it? One line within its uncertainty is a division.",
     "images": "do its lines at other sidebands agree that it grows? The line alone and all of them "
     "together must say the same.",
