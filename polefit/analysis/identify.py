@@ -17,6 +17,7 @@ from polefit.analysis.detection import (
 )
 from polefit.analysis.evidence import MOSTLY_NOISE
 from polefit.analysis.folding import coverage
+from polefit.analysis.glitches import looks, suspicions
 from polefit.analysis.judgement import Judged, judge
 from polefit.analysis.next_points import next_plans
 from polefit.analysis.noise_origin import StatedNoise, noise_origin
@@ -156,10 +157,13 @@ def _answer(
     # under a drive −dσ/dG is the sum over the images at all harmonics, also unseen ones
     levers = sets[0].quantity == "impedance" and sets[0].pump_hz is None
     detection = detect(estimation, prepared.scale_rad_per_s, channels, damping, levers=levers)
+    scale = prepared.scale_rad_per_s
+    suspect = suspicions(estimation, judged.modes, scale)
     verdict, reason = in_view_of(
-        *_run_verdict(judged, fit, _poor(estimation, errors, noises)), detection
+        *_run_verdict(judged, fit, _poor(estimation, errors, noises), suspect), detection
     )
-    plans = next_plans(estimation, judged.modes, detection, verdict, prepared.scale_rad_per_s)
+    plans = next_plans(estimation, judged.modes, detection, verdict, scale)
+    plans += looks(suspect, estimation, scale)
     return Identification(
         verdict=verdict,
         reason=reason,
@@ -244,7 +248,9 @@ def _poor(estimation: Estimation, errors: FloatArray, noises: FloatArray) -> boo
     return missed > POOR_FIT**2 and float(np.mean(noises)) < missed / 4
 
 
-def _run_verdict(judged: Judged, fit: FitQuality, poor: bool) -> tuple[Verdict, str]:
+def _run_verdict(
+    judged: Judged, fit: FitQuality, poor: bool, suspect: Sequence[float]
+) -> tuple[Verdict, str]:
     inside = [mode for mode in judged.modes if mode.in_band]
     unstable = [mode for mode in inside if mode.verdict == "unstable"]
     undecided = [mode for mode in inside if mode.verdict == "undecided"]
@@ -265,6 +271,9 @@ def _run_verdict(judged: Judged, fit: FitQuality, poor: bool) -> tuple[Verdict, 
         return "undecided", f"a mode in the band may grow: {why}"
     if fit.noise_relative > MOSTLY_NOISE:
         return "undecided", MOSTLY_NOISE_REASON
+    if suspect:
+        at = ", ".join(si(omega / (2 * np.pi), "Hz") for omega in suspect)
+        return "undecided", f"a few samples alone tell of a mode that may grow at {at}"
     return "stable", "no mode in the band grows"
 
 

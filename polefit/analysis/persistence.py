@@ -13,7 +13,7 @@ import numpy as np
 from polefit.analysis.candidate import Candidate, nearest
 from polefit.engine.blocks import Block, ComplexArray, window
 from polefit.engine.estimation import Estimation
-from polefit.engine.order import count_places, first_model, largest_order, prune
+from polefit.engine.order import first_model, largest_order
 from polefit.engine.projection import Solution, solve
 from polefit.engine.refinement import refine
 from polefit.engine.unstable_part import project
@@ -63,7 +63,7 @@ def over_starts(c: Candidate, estimation: Estimation, scale: float) -> Evidence:
     solution, blocks = estimation.solution, estimation.blocks
     order = min(solution.sections.order + 2, largest_order(blocks))
     start = first_model(blocks, order, kind=solution.sections, damping=OTHER_DAMPING)
-    found = refine(blocks, start, iterations=15, tolerance=0.5)
+    found = refine(blocks, start, iterations=8, tolerance=0.5)
     if not found.misfit < WORSE * solution.misfit:
         return Evidence(name, None, "a search from other poles ended at a worse fit: no opinion")
     other = nearest(c.pole / scale, found.sections.poles())
@@ -97,8 +97,7 @@ def _within(estimation: Estimation, low: float, high: float) -> Solution | None:
     if min(2 * block.s.size for block in blocks) < FEWEST * per_channel:
         return None
     start = solve(blocks, solution.sections, solution.direct)
-    pruned = prune(blocks, refine(blocks, start, iterations=5, tolerance=0.5), count_places(blocks))
-    return refine(blocks, pruned, iterations=10, tolerance=0.1)
+    return refine(blocks, start, iterations=8, tolerance=0.5)
 
 
 def _compared(

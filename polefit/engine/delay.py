@@ -7,7 +7,6 @@ it need not be known well, and poles lose nothing by its being estimated.
 
 from __future__ import annotations
 
-import functools
 import math
 from collections.abc import Callable, Sequence
 from typing import NamedTuple
@@ -16,12 +15,21 @@ import numpy as np
 import scipy.optimize
 from numpy.typing import NDArray
 
-from polefit.engine.blocks import Block, FloatArray, make_block, samples, sketch
-from polefit.engine.order import Found, criterion, first_model, largest_order, search
+from polefit.engine.blocks import Block, FloatArray, make_block, samples, sketch, weighted
+from polefit.engine.order import (
+    Found,
+    count_places,
+    criterion,
+    first_model,
+    largest_order,
+    prune,
+    search,
+)
 from polefit.engine.pole_set import PoleSet
 from polefit.engine.projection import Solution, residuals, solve
 from polefit.engine.refinement import refine
 from polefit.engine.sections import NONE
+from polefit.engine.vector_fitting import relocate, starting_poles
 from polefit.engine.weighting import Measured
 from polefit.engine.whiteness import judge_whiteness
 
@@ -136,20 +144,28 @@ def take_out(
         else np.zeros(block.channels)
         for block, look in zip(blocks, looks, strict=True)
     )
-    number = sum(np.unique(delay[delay != 0]).size for delay in delays)
     moved = [turned_back(m, delay) for m, delay in zip(data, delays, strict=True)]
     with_delay = weigh(moved)
-    found = search(with_delay, kind=kind)
+    late = polish(Delayed(moved, with_delay, search(with_delay, kind=kind), delays))
+    advanced = _advanced(late.found.solution.sections)
     if plain is None:
-        order = found.solution.sections.order + MORE_POLES
+        order = late.found.solution.sections.order + MORE_POLES
         quick = refine(blocks, first_model(blocks, order, kind=kind), iterations=5, tolerance=1.0)
-        if quick.misfit > NO_MATCH * found.solution.misfit:
-            return Delayed(moved, with_delay, found, delays)
+        if not advanced and quick.misfit > NO_MATCH * late.found.solution.misfit:
+            return late
         plain = Delayed(data, blocks, search(blocks, kind=kind), none)
-    asked = criterion(with_delay, found.solution) + number * math.log(samples(blocks))
-    if criterion(blocks, plain.found.solution) < asked + WORTH:
+    if advanced and not _advanced(plain.found.solution.sections):
         return plain
-    return Delayed(moved, with_delay, found, delays)
+    number = sum(np.unique(delay[delay != 0]).size for delay in late.delays)
+    asked = criterion(late.blocks, late.found.solution) + number * math.log(samples(blocks))
+    return plain if criterion(blocks, plain.found.solution) < asked + WORTH else late
+
+
+def _advanced(sections: PoleSet) -> bool:
+    """Tell whether growing poles stand in for a delay: too much of it was taken out."""
+    sections = sections.split()
+    beyond, broad = _stand_ins(sections)
+    return bool(np.any(sections.own_poles()[beyond | broad].real > 0))
 
 
 def _stand_in_order(sections: PoleSet) -> tuple[int, int]:
@@ -161,12 +177,14 @@ def _stand_in_order(sections: PoleSet) -> tuple[int, int]:
 
 
 def polish(before: Delayed) -> Delayed:
-    """Refine the delays that were taken out, first without the poles that stand in for the rest."""
+    """Refine the delays that were taken out, and leave out the poles that stood in for the rest."""
     sections = before.found.solution.sections
     beyond, broad = _stand_ins(sections)
     kept = [~beyond, ~(beyond | broad), np.ones(sections.number, dtype=bool)]
     trials = [_polished(before, sections.keep(mask)) for mask in kept if mask.any()]
-    return min(trials, key=lambda one: criterion(one.blocks, one.found.solution))
+    best = min(trials, key=lambda one: criterion(one.blocks, one.found.solution))
+    pruned = prune(best.blocks, best.found.solution, count_places(best.blocks))
+    return best._replace(found=best.found._replace(solution=pruned))
 
 
 def _stand_ins(sections: PoleSet) -> tuple[NDArray[np.bool_], NDArray[np.bool_]]:
@@ -236,28 +254,23 @@ def find_delay(
     """
     thin, width = _thinned(block), _width(block)
 
-    def score(some: Block, delay: FloatArray) -> float:
-        return _score(some, orders, kind, np.broadcast_to(delay, some.channels))
+    def scanned(some: Block, means: FloatArray) -> float:
+        def score(delay: float, orders: Sequence[int]) -> float:
+            return _score(some, orders, kind, np.full(some.channels, delay))
+
+        low, high = float(means.min()) - EARLIER / width, float(means.max()) + LATER / width
+        tried = np.append(np.arange(low, high, STEP / width), 0.0)
+        middle = orders[len(orders) // 2 :][:1]
+        best = float(tried[int(np.argmin([score(float(one), middle) for one in tried]))])
+        return _bounded(lambda one: score(one, orders), best, STEP / width, FINE / width)
 
     if block.channels > SEPARATE:
-        thin = sketch(thin)
-        common = _scanned(functools.partial(score, thin), mean, width)
-        return np.full(block.channels, common)
-    alone = [functools.partial(score, _only(thin, k)) for k in range(block.channels)]
-    own = np.array([_scanned(one, mean[k : k + 1], width) for k, one in enumerate(alone)])
+        return np.full(block.channels, scanned(sketch(thin), mean))
+    own = np.array([scanned(_only(thin, k), mean[k : k + 1]) for k in range(block.channels)])
     if block.channels == 1:
         return own
-    together = functools.partial(score, thin)
-    common = _scanned(together, np.append(mean, own), width)
-    return min((own, np.full(block.channels, common)), key=together)
-
-
-def _scanned(score: Callable[[FloatArray], float], means: FloatArray, width: float) -> float:
-    """Return the delay of lowest score, looked for around the means and refined."""
-    low, high = float(means.min()) - EARLIER / width, float(means.max()) + LATER / width
-    tried = np.append(np.arange(low, high, STEP / width), 0.0)
-    best = float(tried[int(np.argmin([score(np.array([one])) for one in tried]))])
-    return _bounded(lambda one: score(np.array([one])), best, STEP / width, FINE / width)
+    common = np.full(block.channels, scanned(thin, np.append(mean, own)))
+    return min((own, common), key=lambda delay: _score(thin, orders, kind, delay))
 
 
 def _width(block: Block) -> float:
@@ -286,7 +299,7 @@ def _bounded(score: Callable[[float], float], centre: float, reach: float, fine:
         score,
         bounds=(centre - reach, centre + reach),
         method="bounded",
-        options={"xatol": fine, "maxiter": 14},
+        options={"xatol": fine, "maxiter": 10},
     )
     return float(outcome.x)
 
@@ -307,9 +320,19 @@ def _score(block: Block, orders: Sequence[int], kind: PoleSet, delay: FloatArray
     """Sum the logarithms of the misfit over several orders: the right delay needs the fewest."""
     forth = np.exp(block.s * delay[:, np.newaxis])
     moved = make_block(block.s, block.values * forth, block.weight)
-    total = 0.0
-    for order in orders:
-        if order > largest_order([block]):
-            break
-        total += math.log(max(first_model([moved], order, 2, kind).misfit, 1e-300))
-    return total
+    most = largest_order([block])
+    return sum(math.log(max(quick_misfit(moved, min(n, most), kind), 1e-300)) for n in orders)
+
+
+def quick_misfit(block: Block, order: int, kind: PoleSet) -> float:
+    """Return χ² of a linearised fit of given order, two relocations from poles spread evenly."""
+    low, high = float(block.s[0].imag), float(block.s[-1].imag)
+    poles = kind.like(starting_poles(low or high * 1e-3, high, order))
+    for _ in range(2):
+        poles = relocate([block], poles, 2)
+    rows = weighted(block, poles.evaluate(block.s, 2))
+    q = np.linalg.qr(rows)[0]
+    along = q.transpose(0, 2, 1) @ block.target[:, :, np.newaxis]
+    rest = block.target[:, :, np.newaxis] - q @ along
+    misfit = float(np.vdot(rest, rest))
+    return misfit if math.isfinite(misfit) else math.inf

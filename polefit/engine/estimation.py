@@ -19,7 +19,6 @@ from polefit.engine.order import (
     count_places,
     largest_order,
     parameters,
-    prune,
     search,
     split,
     take_up,
@@ -80,6 +79,8 @@ class Estimation(NamedTuple):
         Why this order was taken.
     delays : tuple of (K,) float ndarray
         Delay taken out of each channel, over the normalised angular frequency.
+    glitches : tuple of complex
+        Poles left out since a few samples alone speak for them.
     """
 
     blocks: tuple[Block, ...]
@@ -95,6 +96,7 @@ class Estimation(NamedTuple):
     places: int
     reason: str
     delays: tuple[FloatArray, ...]
+    glitches: tuple[complex, ...] = ()
 
 
 def estimate_model(
@@ -129,7 +131,7 @@ def estimate_model(
     for turn in range(4):
         progress("estimating the noise")
         if turn == 1 and any(delay.any() for delay in delays):
-            data, blocks, found, delays = _polish_delays(Delayed(data, blocks, found, delays))
+            data, blocks, found, delays = polish(Delayed(data, blocks, found, delays))
         seen = by_model(data, found.solution)
         if stated is None:
             followed = leverage(blocks, found.solution, information(found.solution))
@@ -170,16 +172,8 @@ def estimate_model(
         reason=found.reason
         + (f"; raised by {raised} as the residual was not noise-like" if raised > 0 else ""),
         delays=delays,
+        glitches=found.glitches,
     )
-
-
-def _polish_delays(before: Delayed) -> Delayed:
-    """Refine the delays at the order found, and leave out the poles that stood in for the rest."""
-    after = polish(before)
-    places = count_places(after.blocks)
-    moved = solve(after.blocks, before.found.solution.sections, before.found.solution.direct)
-    settled = prune(after.blocks, refine(after.blocks, moved), places)
-    return after._replace(found=before.found._replace(solution=settled))
 
 
 class _Settled(NamedTuple):

@@ -62,11 +62,14 @@ class Found(NamedTuple):
         The rich model from which it was pruned.
     reason : str
         Why this order was taken.
+    glitches : tuple of complex
+        Poles that left though they stand out of the noise, since a few samples alone say so.
     """
 
     solution: Solution
     richest: Solution
     reason: str
+    glitches: tuple[complex, ...] = ()
 
 
 def count_places(blocks: Sequence[Block]) -> int:
@@ -95,12 +98,13 @@ def search(blocks: Sequence[Block], start: Solution | None = None, kind: PoleSet
     else:
         richest = refine(blocks, solve(blocks, start.sections, 2), iterations=10, tolerance=0.1)
     places = count_places(blocks)
-    final = drop_direct(blocks, prune(blocks, richest, places))
+    glitches: list[complex] = []
+    final = drop_direct(blocks, prune(blocks, richest, places, glitches))
     reason = (
         f"pruned from {richest.sections.poles().size} poles; removing any further one raises the "
         f"misfit more than noise explains (chance {KEEP_CHANCE:g} over {places} places)"
     )
-    return Found(final, richest, reason)
+    return Found(final, richest, reason, tuple(glitches))
 
 
 def take_up(blocks: Sequence[Block], found: Found) -> Found:
@@ -108,10 +112,11 @@ def take_up(blocks: Sequence[Block], found: Found) -> Found:
     places = count_places(blocks)
     start = solve(blocks, found.solution.sections, found.solution.direct)
     start = refine(blocks, start, iterations=10, tolerance=0.1)
-    pruned = prune(blocks, start, places)
-    grown = grow(blocks, pruned, places)
-    settled = prune(blocks, grown, places) if grown is not pruned else pruned
-    return found._replace(solution=settled)
+    glitches = list(found.glitches)
+    pruned = prune(blocks, start, places, glitches)
+    grown = grow(blocks, pruned, places, glitches)
+    settled = prune(blocks, grown, places, glitches) if grown is not pruned else pruned
+    return found._replace(solution=settled, glitches=tuple(glitches))
 
 
 def parameters(blocks: Sequence[Block], solution: Solution) -> int:
@@ -215,8 +220,16 @@ def split(blocks: Sequence[Block], solution: Solution) -> Solution:
     return solve(blocks, flat, solution.direct)
 
 
-def prune(blocks: Sequence[Block], start: Solution, places: int) -> Solution:
-    """Remove sections that noise alone explains, weakest first, refining after each step."""
+def prune(
+    blocks: Sequence[Block],
+    start: Solution,
+    places: int,
+    glitches: list[complex] | None = None,
+) -> Solution:
+    """Remove sections that noise alone explains, weakest first, refining after each step.
+
+    Poles that a few samples alone speak for leave as well, and are added to `glitches`.
+    """
     current = split(blocks, start)
     kept = np.zeros(current.sections.number, dtype=bool)
     largest_batch = current.sections.number
@@ -248,6 +261,8 @@ def prune(blocks: Sequence[Block], start: Solution, places: int) -> Solution:
         trial = refine(blocks, trial, iterations=6, tolerance=0.1)
         rise = (trial.misfit - current.misfit) / level
         if rise < allowed or (take.size == 1 and glitch[take[0]]):
+            if rise >= allowed and glitches is not None:
+                glitches.append(complex(current.sections.own_poles()[take[0]]))
             current = split(blocks, trial)
             kept = np.zeros(current.sections.number, dtype=bool)
         elif take.size > 1:
@@ -294,7 +309,12 @@ def trial_grid(blocks: Sequence[Block], count: int) -> FloatArray:
     return picked
 
 
-def grow(blocks: Sequence[Block], start: Solution, places: int) -> Solution:
+def grow(
+    blocks: Sequence[Block],
+    start: Solution,
+    places: int,
+    glitches: list[complex] | None = None,
+) -> Solution:
     """Add pairs where the residual still holds one, until none stands out of the noise."""
     channels = sum(block.channels for block in blocks)
     limit = threshold(channels, places, KEEP_CHANCE)
@@ -313,9 +333,10 @@ def grow(blocks: Sequence[Block], start: Solution, places: int) -> Solution:
         trial = refine(blocks, trial, iterations=20, tolerance=0.1)
         trial_info = information(trial)
         own = trial.sections.twofold - 1
-        if section_scores(blocks, trial, trial_info).spared[own] < limit * variance_factor(
-            blocks, trial
-        ):
+        scores, least = section_scores(blocks, trial, trial_info), variance_factor(blocks, trial)
+        if scores.spared[own] < limit * least:
+            if scores.full[own] > limit * least and glitches is not None:
+                glitches.append(complex(trial.sections.own_poles()[own]))
             frequencies = frequencies[np.abs(frequencies - place.imag) > 3 * _gap(frequencies)]
             continue
         flat = split(blocks, trial)
