@@ -18,11 +18,9 @@ from polefit.engine.blocks import Block, ComplexArray, FloatArray
 from polefit.engine.order import TRIALS, trial_grid
 from polefit.engine.projection import Solution
 from polefit.engine.significance import (
-    NARROW_STEPS,
     Information,
     scan,
     step_at,
-    telling_share,
 )
 
 MASKED = 3.0
@@ -124,8 +122,7 @@ def residue_limits(
     found = scan(blocks, solution, info, poles).information
     a, b, c = found[..., 0, 0], found[..., 1, 1], found[..., 0, 1]
     smallest = (a + b) / 2 - np.sqrt(((a - b) / 2) ** 2 + c**2)
-    counted = 1 - np.concatenate([_concentrated(block, poles) for block in blocks])
-    counted = np.minimum(counted, _caught(blocks, poles))
+    counted = np.broadcast_to(_caught(blocks, poles), smallest.shape)
     usable = (smallest > 1e-9 * np.maximum((a + b) / 2, 1e-300)) & (counted > 1e-6)
     freedom = 2 * sum(block.channels for block in blocks)
     needed = _needed(
@@ -158,9 +155,8 @@ def _caught(blocks: Sequence[Block], poles: ComplexArray) -> FloatArray:
 def _needed(plain: float, freedom: int, counted: FloatArray, own: FloatArray) -> FloatArray:
     """Noncentrality needed of a pair of whose evidence only the share `counted` counts.
 
-    The search disregards the most telling samples of a narrow pair, or catches it by its skirts
-    only, and what it has not found yet it takes for noise: of a channel with `own` degrees of
-    freedom, noncentrality λ raises the level by 1 + λ/own, so that λ·counted / (1 + λ/own) is to
+    The search may catch a narrow pair by its skirts only, and what it has not found yet it takes
+    for noise: of a channel with `own` degrees of freedom, noncentrality λ raises the level by 1 + λ/own, so that λ·counted / (1 + λ/own) is to
     reach `plain`.
     """
     spared = (plain + freedom) / counted - freedom
@@ -176,20 +172,6 @@ def _own_freedom(blocks: Sequence[Block], solution: Solution) -> FloatArray:
         for block, part in zip(blocks, solution.parts, strict=True)
     ]
     return np.concatenate(left)
-
-
-def _concentrated(block: Block, poles: ComplexArray) -> FloatArray:
-    """Share, (K, C), of the evidence for each pole that its most telling samples would carry."""
-    share = np.zeros((block.channels, poles.size))
-    step = step_at(block.s.imag, poles.imag)
-    precision = np.sum(block.weight**2, axis=1)
-    narrow = np.flatnonzero(2 * np.abs(poles.real) < NARROW_STEPS * step)
-    several = max(1, AT_ONCE // precision.size)
-    for start in range(0, narrow.size, several):
-        some = narrow[start : start + several]
-        curve = 1 / np.abs(block.s - poles[some, np.newaxis]) ** 2
-        share[:, some] = telling_share(curve * precision[:, np.newaxis])
-    return share
 
 
 def noncentrality(threshold: float, freedom: int, power: float) -> float:
