@@ -11,6 +11,7 @@ from dataclasses import replace
 
 import numpy as np
 
+from polefit.analysis.continuity import has_step
 from polefit.analysis.judgement import Judged
 from polefit.engine import complex_poles
 from polefit.engine.estimation import Estimation
@@ -22,12 +23,20 @@ from polefit.responses import ResponseSet
 NAME = "plausibility of the data"
 REAL_CHANGE = 1e-3
 """A response without imaginary part may change by this share: digits after the point run out."""
-GROWING_DOUBTED = (4, 2)
-"""So many growing modes, so many of them in doubt, are the mark of data which no circuit gave."""
+CROWD = 4
+"""So many growing modes are the mark of data which no circuit gave ..."""
+CROWD_DOUBTED, CROWD_OVERLAPPING = 2, 3
+"""... if so many are in doubt themselves, or so many lie within the width of another one."""
+CROWD_REAL = (2, 3)
+"""So many growing modes that do not ring, among so many, count alike."""
+HAIR = 0.01
+"""A growing mode of which the half-width is so small a part of a step shows in one sample only."""
 ASYMMETRIC = 10.0
 """How much lower the criterion must be without conjugates."""
 ALL_GROWING = 3
-"""If so many modes grow and none decays, the sign of the imaginary part is asked about."""
+"""If so many modes grow and none decays, the sign of the imaginary part is asked about ..."""
+ALL_PASSIVE = 2
+"""... and so many are doubted if no probed port gives off power at any sample."""
 
 
 def refuse_without_phase(one: ResponseSet) -> None:
@@ -144,18 +153,40 @@ def _doubt(
             "too few for a long line; check the export"
         )
     doubted = sum(mode.verdict != "unstable" for mode in growing)
-    if len(growing) >= GROWING_DOUBTED[0] and doubted >= GROWING_DOUBTED[1]:
+    if _crowded(growing, doubted, sets):
         return (
-            f"{len(growing)} modes seem to grow, {doubted} of them in doubt, as where numbers are "
-            "no response of a circuit: phase lost or in the wrong unit, values clipped, sweeps "
-            "joined with a step; check the export"
+            f"{len(growing)} modes seem to grow, close together or in doubt themselves, as where "
+            "numbers are no response of a circuit: phase lost or in the wrong unit, values "
+            "clipped, sweeps joined with a step; check the export"
         )
-    if len(inside) >= ALL_GROWING and len(growing) == len(inside) and _passive(sets):
+    if doubted and any(has_step(one) for one in sets):
+        return (
+            "the response jumps between two samples as a whole, and more modes seem to grow than "
+            "are sure to, as where sweeps were joined with a step; simulate it in one run"
+        )
+    if len(inside) >= ALL_PASSIVE and len(growing) == len(inside) and _passive(sets):
         return (
             f"all {len(inside)} modes grow though every probed port looks passive, as where the "
             "sign of the imaginary parts is reversed; check that the data follow exp(+jωt)"
         )
     return None
+
+
+def _crowded(growing: Sequence[Mode], doubted: int, sets: Sequence[ResponseSet]) -> bool:
+    """Tell whether growing modes crowd as where they mend what is no response."""
+    real = sum(mode.real for mode in growing)
+    if len(growing) < CROWD:
+        return real >= CROWD_REAL[0] and len(growing) >= CROWD_REAL[1]
+    poles = np.array([mode.pole_rad_per_s for mode in growing])
+    apart = np.abs(poles[:, np.newaxis] - poles)
+    np.fill_diagonal(apart, np.inf)
+    overlapping = np.any(apart < poles.real[:, np.newaxis] + poles.real, axis=1)
+    step = min(float(np.median(np.diff(one.frequency_hz))) for one in sets)
+    doubted += sum(
+        mode.verdict == "unstable" and mode.pole_rad_per_s.real < HAIR * 2 * np.pi * step
+        for mode in growing
+    )
+    return doubted >= CROWD_DOUBTED or int(overlapping.sum()) >= CROWD_OVERLAPPING
 
 
 def asymmetric(estimation: Estimation) -> bool:
