@@ -28,9 +28,11 @@ CROWD = 4
 CROWD_DOUBTED, CROWD_OVERLAPPING = 2, 3
 """... if so many are in doubt themselves, or so many lie within the width of another one."""
 CROWD_REAL = (2, 3)
-"""So many growing modes that do not ring, among so many, count alike."""
+"""So many growing modes that do not ring, among so many or in doubt, count alike."""
 HAIR = 0.01
 """A growing mode of which the half-width is so small a part of a step shows in one sample only."""
+NOTHING = 0.02
+"""Share of the response up to which power given off may be noise."""
 ASYMMETRIC = 10.0
 """How much lower the criterion must be without conjugates."""
 ALL_GROWING = 3
@@ -159,7 +161,7 @@ def _doubt(
             "numbers are no response of a circuit: phase lost or in the wrong unit, values "
             "clipped, sweeps joined with a step; check the export"
         )
-    if doubted and any(has_step(one) for one in sets):
+    if doubted and len(growing) > 1 and any(has_step(one) for one in sets):
         return (
             "the response jumps between two samples as a whole, and more modes seem to grow than "
             "are sure to, as where sweeps were joined with a step; simulate it in one run"
@@ -176,7 +178,7 @@ def _crowded(growing: Sequence[Mode], doubted: int, sets: Sequence[ResponseSet])
     """Tell whether growing modes crowd as where they mend what is no response."""
     real = sum(mode.real for mode in growing)
     if len(growing) < CROWD:
-        return real >= CROWD_REAL[0] and len(growing) >= CROWD_REAL[1]
+        return real >= CROWD_REAL[0] and (len(growing) >= CROWD_REAL[1] or doubted > 0)
     poles = np.array([mode.pole_rad_per_s for mode in growing])
     apart = np.abs(poles[:, np.newaxis] - poles)
     np.fill_diagonal(apart, np.inf)
@@ -223,9 +225,9 @@ def _passive(sets: Sequence[ResponseSet]) -> bool:
         columns = [k for k, channel in enumerate(one.channels) if channel.driving_point]
         own = one.values[:, columns]
         if one.quantity in ("impedance", "admittance"):
-            given_off = own.real < 0
+            given_off = own.real < -NOTHING * np.abs(own)
         elif one.quantity == "scattering":
-            given_off = np.abs(own) > 1
+            given_off = np.abs(own) > 1 + NOTHING
         else:
             return False
         if np.any(given_off):

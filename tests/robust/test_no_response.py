@@ -84,7 +84,8 @@ NONSENSE = {
 
 @pytest.mark.parametrize("change", NONSENSE.values(), ids=NONSENSE)
 def test_nonsense_is_not_called_unstable(change):
-    assert answer(change(response())) in {"undecided", "refused"}
+    half = change(response())[::2]
+    assert answer(half, FREQUENCY[::2]) in {"undecided", "refused"}
 
 
 @pytest.mark.parametrize("at", [30, 60, 97, 150])
