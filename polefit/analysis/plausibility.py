@@ -12,6 +12,7 @@ from dataclasses import replace
 import numpy as np
 
 from polefit.analysis.continuity import has_step
+from polefit.analysis.evidence import MANY
 from polefit.analysis.judgement import Judged
 from polefit.engine import complex_poles
 from polefit.engine.estimation import Estimation
@@ -176,6 +177,8 @@ def _doubt(
 
 def _crowded(growing: Sequence[Mode], doubted: int, sets: Sequence[ResponseSet]) -> bool:
     """Tell whether growing modes crowd as where they mend what is no response."""
+    if len(growing) >= MANY:
+        return True
     real = sum(mode.real for mode in growing)
     if len(growing) < CROWD:
         return real >= CROWD_REAL[0] and (len(growing) >= CROWD_REAL[1] or doubted > 0)
