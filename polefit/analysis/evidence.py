@@ -24,6 +24,8 @@ order is finite stay below."""
 LEAST_SHARE = 1e-9
 """Peak over the response below which a growing mode is not believed, however little noise there
 seems to be: simulators solve to 1e-12 of their largest numbers, other libraries write less."""
+MANY = 6
+"""So many growing modes are the mark of data which no circuit gave; none is tested alone."""
 MOSTLY_NOISE = 0.5
 NOISY_MISFIT = 1.1
 """Where noise exceeds half of the response at most samples, its law is uncertain as well: a stable
@@ -85,7 +87,7 @@ def compare(
 
     stable = against(())
     alone = {c.index: stable for c in growing}
-    if len(growing) > 1:
+    if 1 < len(growing) < MANY:
         alone = {c.index: against([o for o in growing if o is not c]) for c in growing}
     companions = {c.index: _companions(c, estimation, scale) for c in growing}
     distorted = any(

@@ -8,6 +8,7 @@ from collections.abc import Callable, Sequence
 import numpy as np
 from threadpoolctl import ThreadpoolController
 
+from polefit.analysis.continuity import continuity_notes
 from polefit.analysis.detection import (
     DAMPING,
     blind_notes,
@@ -21,6 +22,7 @@ from polefit.analysis.glitches import looks, suspicions
 from polefit.analysis.judgement import Judged, judge
 from polefit.analysis.next_points import next_plans
 from polefit.analysis.noise_origin import StatedNoise, noise_origin
+from polefit.analysis.plausibility import put_in_doubt, sign_notes
 from polefit.analysis.preparation import Prepared, node_names, prepare
 from polefit.engine import complex_poles, sections
 from polefit.engine.blocks import FloatArray
@@ -151,6 +153,7 @@ def _answer(
         confidence,
         sets[0].pump_hz,
     )
+    judged = put_in_doubt(judged, sets, estimation)
     model = _model(estimation, prepared.scale_rad_per_s, channels)
     errors, noises = _relative(estimation)
     fit = _quality(prepared, estimation, judged, errors, noises, stated)
@@ -178,6 +181,8 @@ def _answer(
         detection=detection,
         notes=(
             *_notes(prepared, estimation, fit),
+            *sign_notes(judged.modes, sets),
+            *(continuity_notes(sets) if verdict == "undecided" else ()),
             *_delay_notes(model),
             *_edge_notes(judged.beyond, band),
             *blind_notes(detection, channels),

@@ -8,6 +8,7 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
+from polefit.analysis.plausibility import refuse_without_phase
 from polefit.engine.blocks import ComplexArray, FloatArray
 from polefit.engine.weighting import Measured
 from polefit.errors import ArgumentError, DataError, NotSupportedError
@@ -77,6 +78,7 @@ def prepare(
                 f"simulate at least {FEWEST_POINTS} in the band"
             )
         _check_sizes(one)
+        refuse_without_phase(one)
     scale = 2 * np.pi * max(one.band_hz[1] for one in usable)
     return Prepared(usable, tuple(_measured(one, scale) for one in usable), scale, tuple(notes))
 

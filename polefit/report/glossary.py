@@ -25,6 +25,8 @@ _ASKS = {
     "it a pair mirrored about it? One line within its uncertainty is a division.",
     "images": "do its lines at other sidebands agree that it grows? The line alone and all of them "
     "together must say the same.",
+    "plausibility of the data": "can a circuit have given these numbers? A phase that is missing, "
+    "wrong or of the wrong sign shows as growing modes.",
     "image consistency": "in a circuit under periodic drive, do the images of the mode at the "
     "sidebands agree with it? They must lie where the drive puts them.",
 }

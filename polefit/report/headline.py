@@ -15,6 +15,7 @@ _DOUBTS = {
     "growth rate": "its growth rate cannot be told from zero",
     "persistence over orders": "it does not stay where it is in a larger model",
     "stable-model misfit": "a model without it is not ruled out",
+    "plausibility of the data": "the data do not look like responses of a circuit",
 }
 _HYBRID = {
     "hybrid": " with port 1 open and port 2 shorted",
