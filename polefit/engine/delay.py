@@ -179,6 +179,8 @@ def _stand_in_order(sections: PoleSet) -> tuple[int, int]:
 def polish(before: Delayed) -> Delayed:
     """Refine the delays that were taken out, and leave out the poles that stood in for the rest."""
     sections = before.found.solution.sections
+    if not sections.number:
+        return before
     beyond, broad = _stand_ins(sections)
     kept = [~beyond, ~(beyond | broad), np.ones(sections.number, dtype=bool)]
     trials = [_polished(before, sections.keep(mask)) for mask in kept if mask.any()]

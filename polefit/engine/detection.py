@@ -156,8 +156,8 @@ def _needed(plain: float, freedom: int, counted: FloatArray, own: FloatArray) ->
     """Noncentrality needed of a pair of whose evidence only the share `counted` counts.
 
     The search may catch a narrow pair by its skirts only, and what it has not found yet it takes
-    for noise: of a channel with `own` degrees of freedom, noncentrality λ raises the level by 1 + λ/own, so that λ·counted / (1 + λ/own) is to
-    reach `plain`.
+    for noise: of a channel with `own` degrees of freedom, noncentrality λ raises the level by
+    1 + λ/own, so that λ·counted / (1 + λ/own) is to reach `plain`.
     """
     spared = (plain + freedom) / counted - freedom
     masked = 1 / np.maximum(1 - plain / (counted * own[:, np.newaxis]), 1 / MASKED)

@@ -84,9 +84,9 @@ def test_pole_of_a_negative_damping_ratio_grows():
 
 def test_a_mode_at_the_limit_is_found_with_the_promised_power(limit):
     """Least favourable phase; 250 draws know 95 % to 1.4 % (one σ). Threshold and noncentrality
-    both grow as a pair is caught by its skirts, and the noise level is known here, so that the power is the
-    promised one or more; part of the residue must be found as seldom as the square of that part
-    of the noncentrality says.
+    both grow as a pair is caught by its skirts, and the noise level is known here, so that the
+    power is the promised one or more; part of the residue must be found as seldom as the square of
+    that part of the noncentrality says.
     """
     size, worst, _, _ = limit
     share = counted(fitted(np.random.default_rng(0))[0])
