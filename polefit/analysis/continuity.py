@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
@@ -32,13 +31,6 @@ _STEP = np.array([0.0, -3.0, 7.0, -8.0, 7.0, -3.0, 0.0]) / 8.0
 _SPIKE = np.array([-3.0, 10.0, -15.0, 15.0, -10.0, 3.0]) / 8.0
 
 
-class _Place(NamedTuple):
-    """Where a response stands out: as a whole from there on, or in one sample."""
-
-    step: bool
-    text: str
-
-
 def continuity_notes(sets: Sequence[ResponseSet]) -> list[str]:
     """Tell of steps and single samples that stand out; a few at most.
 
@@ -58,30 +50,14 @@ def continuity_notes(sets: Sequence[ResponseSet]) -> list[str]:
         for k, channel in enumerate(one.channels):
             place = _place(one.frequency_hz, one.values[:, k])
             if place is not None:
-                found.setdefault(place.text, []).append(str(channel))
+                found.setdefault(place, []).append(str(channel))
     return [
         f"{', '.join(names[:3])}{f' and {len(names) - 3} more' if len(names) > 3 else ''}: {place}"
         for place, names in list(found.items())[:MOST_NOTES]
     ]
 
 
-def has_step(one: ResponseSet) -> bool:
-    """Tell whether a response of the set jumps as a whole between two samples.
-
-    Parameters
-    ----------
-    one : ResponseSet
-        Any data.
-
-    Returns
-    -------
-    bool
-    """
-    places = [_place(one.frequency_hz, column) for column in one.values.T]
-    return any(place is not None and place.step for place in places)
-
-
-def _place(frequency: FloatArray, values: ComplexArray) -> _Place | None:
+def _place(frequency: FloatArray, values: ComplexArray) -> str | None:
     """Find the first place of one response that stands out; None if none does."""
     if values.size < _FEWEST:
         return None
@@ -94,18 +70,16 @@ def _place(frequency: FloatArray, values: ComplexArray) -> _Place | None:
         gap = int(at) + 2  # the gap behind this sample
         if missed < MATCH:
             share = abs(step) / float(np.median(np.abs(values[gap - 2 : gap + 4])))
-            return _Place(
-                True,
+            return (
                 f"the response jumps by {share:.2g} of itself between "
                 f"{si(frequency[gap], 'Hz')} and {si(frequency[gap + 1], 'Hz')}: sweeps joined "
-                f"with a step, {_OR_A_MODE}",
+                f"with a step, {_OR_A_MODE}"
             )
         for back in (2, 3):
             if _match(jump[at - back : at - back + 6], _SPIKE)[1] < MATCH:
-                return _Place(
-                    False,
+                return (
                     f"the sample at {si(frequency[at - back + 5], 'Hz')} stands out of its "
-                    f"neighbours: a faulty point, {_OR_A_MODE}",
+                    f"neighbours: a faulty point, {_OR_A_MODE}"
                 )
     return None
 

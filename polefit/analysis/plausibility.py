@@ -11,7 +11,6 @@ from dataclasses import replace
 
 import numpy as np
 
-from polefit.analysis.continuity import has_step
 from polefit.analysis.evidence import MANY
 from polefit.analysis.judgement import Judged
 from polefit.engine import complex_poles
@@ -161,11 +160,6 @@ def _doubt(
             f"{len(growing)} modes seem to grow, close together or in doubt themselves, as where "
             "numbers are no response of a circuit: phase lost or in the wrong unit, values "
             "clipped, sweeps joined with a step; check the export"
-        )
-    if doubted and len(growing) > 1 and any(has_step(one) for one in sets):
-        return (
-            "the response jumps between two samples as a whole, and more modes seem to grow than "
-            "are sure to, as where sweeps were joined with a step; simulate it in one run"
         )
     if len(inside) >= ALL_PASSIVE and len(growing) == len(inside) and _passive(sets):
         return (
