@@ -67,6 +67,10 @@ class Comparison:
     distorted: bool
     noisy: bool
 
+    def asks_more_of(self, c: Candidate) -> bool:
+        """Whether a mode is worth tests that fit again: it grows, and few others do."""
+        return c.index in self.companions and len(self.companions) < MANY
+
 
 def compare(
     claimed: Sequence[Candidate], estimation: Estimation, scale: float
@@ -127,7 +131,7 @@ def evidence_for(
             f"{factor:.2f} are needed",
         ),
         _residue(c, limit, share),
-        *persistence(c, estimation, scale, against is not None and c.index in against.companions),
+        *persistence(c, estimation, scale, against is not None and against.asks_more_of(c)),
     ]
     if against is not None and c.index in against.companions:
         items.append(_against_stable(c, against, estimation))
