@@ -305,7 +305,7 @@ def distributed(seed: int, generator: Generator) -> Case:
         if growing is None or (growing > 0) == (seed % 2 == 0):
             continue
         poles = zeros_inside(circuit, (-0.6 * high, high, np.pi * band[0], 1.3 * high), generator)
-        if poles is None or int((poles.real > 0).sum()) != growing:
+        if poles is None or not poles.size or int((poles.real > 0).sum()) != growing:
             continue
         at = poles[poles.real > 0].imag / (2 * np.pi)
         if growing and not np.all((at > 1.2 * band[0]) & (at < 0.9 * band[1])):
