@@ -24,8 +24,9 @@ CAPPED = 10
 growing modes do not count. Below it, a few points may show a simple circuit."""
 OTHER_DAMPING = 0.1
 """Damping ratio of the poles of the other start; the usual one is ten times less."""
-WORSE = 1.5
-"""A fit from another start that misses so many times as much of χ² got stuck: no opinion."""
+WORSE = 10.8
+"""A fit from another start whose χ² is so much larger (p = 0.001, one degree) got stuck: it has no
+opinion."""
 CUT = 1 / 3
 """Share of the band on either side of a mode that a window leaves out."""
 FEWEST = 3.0
@@ -64,7 +65,7 @@ def over_starts(c: Candidate, estimation: Estimation, scale: float) -> Evidence:
     order = min(solution.sections.order + 2, largest_order(blocks))
     start = first_model(blocks, order, kind=solution.sections, damping=OTHER_DAMPING)
     found = refine(blocks, start, iterations=8, tolerance=0.5)
-    if not found.misfit < WORSE * solution.misfit:
+    if not found.misfit < solution.misfit + WORSE * estimation.level:
         return Evidence(name, None, "a search from other poles ended at a worse fit: no opinion")
     other = nearest(c.pole / scale, found.sections.poles())
     return _compared(name, c, scale, other, "found anew from broader starting poles")

@@ -135,7 +135,9 @@ def take_out(
     if plain is not None:
         core, stand_ins = _stand_in_order(plain.found.solution.sections)
         whiteness = judge_whiteness(residuals(blocks, plain.found.solution))
-        if stand_ins < STAND_INS and whiteness.white:
+        few = stand_ins < STAND_INS and whiteness.white
+        # poles that stand in for a delay decay; a broad growing one stands for itself
+        if few or _advanced(plain.found.solution.sections):
             return plain
         orders = tuple(core + more for more in BESIDE_CORE)
     delays = tuple(
@@ -146,15 +148,16 @@ def take_out(
     )
     moved = [turned_back(m, delay) for m, delay in zip(data, delays, strict=True)]
     with_delay = weigh(moved)
-    late = polish(Delayed(moved, with_delay, search(with_delay, kind=kind), delays))
+    late = Delayed(moved, with_delay, search(with_delay, kind=kind), delays)
     advanced = _advanced(late.found.solution.sections)
+    late = polish(late)
     if plain is None:
         order = late.found.solution.sections.order + MORE_POLES
         quick = refine(blocks, first_model(blocks, order, kind=kind), iterations=5, tolerance=1.0)
         if not advanced and quick.misfit > NO_MATCH * late.found.solution.misfit:
             return late
         plain = Delayed(data, blocks, search(blocks, kind=kind), none)
-    if advanced and not _advanced(plain.found.solution.sections):
+    if advanced:
         return plain
     number = sum(np.unique(delay[delay != 0]).size for delay in late.delays)
     asked = criterion(late.blocks, late.found.solution) + number * math.log(samples(blocks))
