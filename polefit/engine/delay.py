@@ -37,6 +37,8 @@ SUSPECT_TURN = 1.5 * np.pi
 """Net phase over the band, rad, from which a delay is tried: less costs a pair or two only."""
 LONG_TURN = 8 * np.pi
 """Net phase from which the delay is sought first: without it the search would be long."""
+MANY_POLES = 16
+"""A model of so many poles whose residual is not noise-like may have lost its way in a delay."""
 STAND_INS = 3
 """Poles beyond the band or broad that a delay worth taking out would need at least."""
 UNREADABLE_STEP = 2.0
@@ -135,9 +137,9 @@ def take_out(
     if plain is not None:
         core, stand_ins = _stand_in_order(plain.found.solution.sections)
         whiteness = judge_whiteness(residuals(blocks, plain.found.solution))
-        few = stand_ins < STAND_INS and whiteness.white
-        # poles that stand in for a delay decay; a broad growing one stands for itself
-        if few or _advanced(plain.found.solution.sections):
+        settled = whiteness.white or plain.found.solution.sections.order < MANY_POLES
+        few = stand_ins < STAND_INS and settled
+        if few:
             return plain
         orders = tuple(core + more for more in BESIDE_CORE)
     delays = tuple(
@@ -148,16 +150,15 @@ def take_out(
     )
     moved = [turned_back(m, delay) for m, delay in zip(data, delays, strict=True)]
     with_delay = weigh(moved)
-    late = Delayed(moved, with_delay, search(with_delay, kind=kind), delays)
+    late = polish(Delayed(moved, with_delay, search(with_delay, kind=kind), delays))
     advanced = _advanced(late.found.solution.sections)
-    late = polish(late)
     if plain is None:
         order = late.found.solution.sections.order + MORE_POLES
         quick = refine(blocks, first_model(blocks, order, kind=kind), iterations=5, tolerance=1.0)
         if not advanced and quick.misfit > NO_MATCH * late.found.solution.misfit:
             return late
         plain = Delayed(data, blocks, search(blocks, kind=kind), none)
-    if advanced:
+    if advanced and not _advanced(plain.found.solution.sections):
         return plain
     number = sum(np.unique(delay[delay != 0]).size for delay in late.delays)
     asked = criterion(late.blocks, late.found.solution) + number * math.log(samples(blocks))
