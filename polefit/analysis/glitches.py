@@ -12,6 +12,7 @@ from collections.abc import Sequence
 import numpy as np
 
 from polefit.analysis.next_points import Plan
+from polefit.engine.blocks import shared_axis
 from polefit.engine.estimation import Estimation
 from polefit.engine.order import largest_order
 from polefit.engine.projection import solve
@@ -42,7 +43,7 @@ def suspicions(estimation: Estimation, modes: Sequence[Mode], scale: float) -> l
         rad/s that is one in the engine.
     """
     blocks, solution = estimation.blocks, estimation.solution
-    axis = np.unique(np.concatenate([block.s.imag for block in blocks]))
+    axis = shared_axis(blocks)
     channels = sum(block.channels for block in blocks)
     limit = threshold(channels, estimation.places, CHANCE) * estimation.whiteness.inflation
     hertz = 2 * math.pi / scale
@@ -72,7 +73,7 @@ def suspicions(estimation: Estimation, modes: Sequence[Mode], scale: float) -> l
 
 def looks(at: list[float], estimation: Estimation, scale: float) -> list[Plan]:
     """Plan the points that tell a glitch from a mode at each of these angular frequencies."""
-    axis = np.unique(np.concatenate([block.s.imag for block in estimation.blocks])) * scale
+    axis = shared_axis(estimation.blocks) * scale
     plans = []
     for omega in at:
         step = float(step_at(axis, np.array([omega]))[0])

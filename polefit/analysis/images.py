@@ -75,7 +75,7 @@ def with_images(
     lines = sum(len(claim.seen_hz) for claim in claims)
     if _worse(tied, estimation, lines):
         return list(claims)
-    covariance = invert(tied.information) * estimation.level * estimation.whiteness.inflation
+    covariance = invert(tied.information) * estimation.factor
     told = [
         _updated(claim, tied.free[at], covariance[np.ix_(at, at)], scale)
         for claim, at in zip(claims, layout.places, strict=True)
@@ -143,7 +143,7 @@ def _worse(tied: Tied, estimation: Estimation, lines: int) -> bool:
     constraints = max(2 * lines - tied.free.size, 1)
     limit = float(scipy.special.chdtri(constraints, DIFFER))
     rise = tied.solution.misfit - estimation.solution.misfit
-    return not rise < limit * estimation.level * estimation.whiteness.inflation
+    return not rise < limit * estimation.factor
 
 
 def _lost(after: Claim, before: Claim) -> bool:

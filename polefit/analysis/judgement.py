@@ -14,7 +14,7 @@ from polefit.analysis.evidence import Comparison, compare, evidence_for
 from polefit.analysis.folding import Claim, as_it_is, fold, images_in
 from polefit.analysis.images import with_images
 from polefit.analysis.pole_uncertainty import KnownPoles, joint_covariance, known_poles
-from polefit.engine.blocks import FloatArray
+from polefit.engine.blocks import FloatArray, shared_axis
 from polefit.engine.estimation import Estimation, freedom
 from polefit.engine.propagation import pole_estimates
 from polefit.engine.significance import invert, threshold
@@ -159,7 +159,7 @@ def _place(
     low, high = (2 * np.pi * edge for edge in band_hz)
     rings = pole.imag > 0 or not estimation.solution.sections.paired
     at = pole.imag if rings else abs(pole)
-    axis = np.unique(np.concatenate([b.s.imag for b in estimation.blocks])) * scale
+    axis = shared_axis(estimation.blocks) * scale
     step = float(np.interp(at, axis[:-1], np.diff(axis)))
     part = 1 if rings else 0
     margin = step + 2 * math.sqrt(max(covariance[part, part], 0.0))
@@ -304,7 +304,7 @@ def residue_std(estimation: Estimation) -> FloatArray:
     """
     sections = estimation.solution.sections
     pole_covariance = invert(estimation.info.poles)
-    factor = estimation.level * estimation.whiteness.inflation
+    factor = estimation.factor
     per_block = []
     for part, linear in zip(estimation.solution.parts, estimation.info.linear, strict=True):
         out = np.zeros((sections.number, part.coefficients.shape[0], 2))

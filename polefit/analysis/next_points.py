@@ -14,7 +14,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from polefit.engine.blocks import Block, FloatArray, make_block, weighted
+from polefit.engine.blocks import Block, FloatArray, make_block, one_channel, shared_axis, weighted
 from polefit.engine.estimation import Estimation
 from polefit.engine.noise import variance
 from polefit.engine.projection import Projected, Solution, model_values
@@ -127,7 +127,7 @@ def _sparse(mode: Mode, estimation: Estimation, scale: float) -> bool:
     pole, std = _centre(mode) / scale, mode.growth_rate_per_s.std
     if std is not None and abs(mode.pole_rad_per_s.real) > SURE * std:
         return False
-    axis = np.unique(np.concatenate([block.s.imag for block in estimation.blocks]))
+    axis = shared_axis(estimation.blocks)
     inside = np.sum(np.abs(axis - pole.imag) < abs(pole.real))
     return bool(inside < FEW_PER_WIDTH)
 
@@ -175,7 +175,7 @@ def _best_channels(estimation: Estimation, index: int) -> list[tuple[int, int]]:
 
 def _candidates(estimation: Estimation, pole: complex, mode: Mode) -> FloatArray:
     """Return frequencies to try: around the mode and over the band, where none is yet."""
-    axis = np.unique(np.concatenate([block.s.imag for block in estimation.blocks]))
+    axis = shared_axis(estimation.blocks)
     width = max(abs(pole.real), 1e-9 * abs(pole))
     tried = np.concatenate(
         (pole.imag + width * AROUND, np.linspace(axis[0], axis[-1], ACROSS + 2)[1:-1])
@@ -201,7 +201,7 @@ class _Design:
         """Return that of all parameters, from the samples there are."""
         total = np.zeros((self.size, self.size))
         for at, (b, k) in enumerate(self.which):
-            jacobian = self._jacobian(_one(self.estimation.blocks[b], k), b, k, at)
+            jacobian = self._jacobian(one_channel(self.estimation.blocks[b], k), b, k, at)
             total += jacobian.T @ jacobian
         factor = self.estimation.level * self.estimation.whiteness.inflation
         return invert(total) * factor
@@ -251,11 +251,6 @@ class _Design:
 def _channel_of(solution: Solution, b: int, k: int) -> Projected:
     part = solution.parts[b]
     return part._replace(coefficients=part.coefficients[k : k + 1])
-
-
-def _one(block: Block, k: int) -> Block:
-    turn = None if block.turn is None else block.turn[k : k + 1]
-    return make_block(block.s, block.values[k : k + 1], block.weight[k : k + 1], turn)
 
 
 def _greedy(

@@ -51,14 +51,13 @@ def known_poles(estimation: Estimation) -> KnownPoles:
     past = estimation.past
     if past.sections.order == estimation.solution.sections.order or own.poles.size < 2:
         return own  # one mode alone: nothing hides behind others
-    factor = estimation.level * estimation.whiteness.inflation
-    return _widened(own, _at(past.sections, invert(information(past).poles) * factor))
+    joint = invert(information(past).poles) * estimation.factor
+    return _widened(own, _at(past.sections, joint))
 
 
 def joint_covariance(estimation: Estimation) -> FloatArray:
     """Return the covariance of the pole parameters in the model itself."""
-    factor = estimation.level * estimation.whiteness.inflation
-    return invert(estimation.info.poles) * factor
+    return invert(estimation.info.poles) * estimation.factor
 
 
 def _at(sections: PoleSet, joint: FloatArray) -> KnownPoles:

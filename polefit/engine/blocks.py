@@ -64,6 +64,18 @@ def samples(blocks: Sequence[Block]) -> int:
     return sum(block.rows for block in blocks)
 
 
+def shared_axis(blocks: Sequence[Block]) -> FloatArray:
+    """Return every frequency at which one of the blocks has samples, once, rising."""
+    axis: FloatArray = np.unique(np.concatenate([block.s.imag for block in blocks]))
+    return axis
+
+
+def one_channel(block: Block, k: int) -> Block:
+    """Return channel number k alone."""
+    turn = None if block.turn is None else block.turn[k : k + 1]
+    return make_block(block.s, block.values[k : k + 1], block.weight[k : k + 1], turn)
+
+
 def weighted(block: Block, columns: ComplexArray) -> FloatArray:
     """Return the weighted real rows of complex columns.
 

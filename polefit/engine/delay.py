@@ -15,7 +15,15 @@ import numpy as np
 import scipy.optimize
 from numpy.typing import NDArray
 
-from polefit.engine.blocks import Block, FloatArray, make_block, samples, sketch, weighted
+from polefit.engine.blocks import (
+    Block,
+    FloatArray,
+    make_block,
+    one_channel,
+    samples,
+    sketch,
+    weighted,
+)
 from polefit.engine.order import (
     Found,
     count_places,
@@ -136,10 +144,7 @@ def take_out(
     orders: Sequence[int] = LOOK_ORDERS
     if plain is not None:
         core, stand_ins = _stand_in_order(plain.found.solution.sections)
-        whiteness = judge_whiteness(residuals(blocks, plain.found.solution))
-        settled = whiteness.white or plain.found.solution.sections.order < MANY_POLES
-        few = stand_ins < STAND_INS and settled
-        if few:
+        if stand_ins < STAND_INS and _at_rest(blocks, plain.found.solution):
             return plain
         orders = tuple(core + more for more in BESIDE_CORE)
     delays = tuple(
@@ -163,6 +168,13 @@ def take_out(
     number = sum(np.unique(delay[delay != 0]).size for delay in late.delays)
     asked = criterion(late.blocks, late.found.solution) + number * math.log(samples(blocks))
     return plain if criterion(blocks, plain.found.solution) < asked + WORTH else late
+
+
+def _at_rest(blocks: Sequence[Block], solution: Solution) -> bool:
+    """Tell whether a search ended as one does that no delay has led astray."""
+    if solution.sections.order < MANY_POLES:
+        return True
+    return judge_whiteness(residuals(blocks, solution)).white
 
 
 def _advanced(sections: PoleSet) -> bool:
@@ -268,11 +280,11 @@ def find_delay(
         tried = np.append(np.arange(low, high, STEP / width), 0.0)
         middle = orders[len(orders) // 2 :][:1]
         best = float(tried[int(np.argmin([score(float(one), middle) for one in tried]))])
-        return _bounded(lambda one: score(one, orders), best, STEP / width, FINE / width)
+        return _bounded(lambda one: score(one, orders), best, STEP / width, FINE / width)[0]
 
     if block.channels > SEPARATE:
         return np.full(block.channels, scanned(sketch(thin), mean))
-    own = np.array([scanned(_only(thin, k), mean[k : k + 1]) for k in range(block.channels)])
+    own = np.array([scanned(one_channel(thin, k), mean[k : k + 1]) for k in range(block.channels)])
     if block.channels == 1:
         return own
     common = np.full(block.channels, scanned(thin, np.append(mean, own)))
@@ -295,19 +307,21 @@ def _change(
         start = solve(moved, solution.sections, solution.direct)
         return math.log(max(refine(moved, start, iterations=3, tolerance=1.0).misfit, 1e-300))
 
-    change = _bounded(miss, 0.0, REACH / width, FINE / width)
-    return change if miss(change) < miss(0.0) else 0.0
+    change, least = _bounded(miss, 0.0, REACH / width, FINE / width)
+    return change if least < miss(0.0) else 0.0
 
 
-def _bounded(score: Callable[[float], float], centre: float, reach: float, fine: float) -> float:
-    """Minimise a score within `reach` of `centre`."""
+def _bounded(
+    score: Callable[[float], float], centre: float, reach: float, fine: float
+) -> tuple[float, float]:
+    """Return where a score is least within `reach` of `centre`, and how much it is there."""
     outcome = scipy.optimize.minimize_scalar(
         score,
         bounds=(centre - reach, centre + reach),
         method="bounded",
         options={"xatol": fine, "maxiter": 10},
     )
-    return float(outcome.x)
+    return float(outcome.x), float(outcome.fun)
 
 
 def _thinned(block: Block) -> Block:
@@ -316,10 +330,6 @@ def _thinned(block: Block) -> Block:
     at = np.unique(np.linspace(0, points - 1, min(points, LOOK_POINTS)).astype(int))
     weight = np.sqrt(np.mean(block.weight**2, axis=1, keepdims=True))[:, :, at]
     return make_block(block.s[at], block.values[:, at], np.repeat(weight, 2, axis=1))
-
-
-def _only(block: Block, k: int) -> Block:
-    return make_block(block.s, block.values[k : k + 1], block.weight[k : k + 1])
 
 
 def _score(block: Block, orders: Sequence[int], kind: PoleSet, delay: FloatArray) -> float:

@@ -14,7 +14,7 @@ import numpy as np
 import scipy.special
 from numpy.typing import NDArray
 
-from polefit.engine.blocks import Block, ComplexArray, FloatArray
+from polefit.engine.blocks import Block, ComplexArray, FloatArray, shared_axis
 from polefit.engine.order import TRIALS, trial_grid
 from polefit.engine.projection import Solution
 from polefit.engine.significance import (
@@ -26,8 +26,6 @@ from polefit.engine.significance import (
 MASKED = 3.0
 """Factor by which a narrow pair may raise the noise level against which it is judged. The first
 fit takes its weights from differences: they do not see it, but were seen to be off by 2.5."""
-AT_ONCE = 100_000
-"""Samples of all curves that are worked on together."""
 LEAST_CAUGHT = 0.03
 """What a scan shows even of a pair between samples, which takes hold of one of them at least."""
 ALIKE = 2.0
@@ -64,7 +62,7 @@ def trial_cells(blocks: Sequence[Block], most: int) -> Trials | None:
     step of an end of the band no mode is judged: the outermost cells reach there, but are tried
     further in.
     """
-    axis = np.unique(np.concatenate([block.s.imag for block in blocks]))
+    axis = shared_axis(blocks)
     axis = axis[axis > 0]
     if axis.size < 4:
         return None

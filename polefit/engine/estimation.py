@@ -98,6 +98,11 @@ class Estimation(NamedTuple):
     delays: tuple[FloatArray, ...]
     glitches: tuple[complex, ...] = ()
 
+    @property
+    def factor(self) -> float:
+        """Variance of the weighted samples, raised where they are correlated."""
+        return self.level * self.whiteness.inflation
+
 
 def estimate_model(
     data: Sequence[Measured],

@@ -16,7 +16,7 @@ import numpy as np
 import scipy.special
 from numpy.typing import NDArray
 
-from polefit.engine.blocks import Block, FloatArray, samples, sketch
+from polefit.engine.blocks import Block, FloatArray, samples, shared_axis, sketch
 from polefit.engine.pole_set import PoleSet
 from polefit.engine.projection import Solution, residuals, solve
 from polefit.engine.refinement import refine
@@ -74,7 +74,7 @@ class Found(NamedTuple):
 
 def count_places(blocks: Sequence[Block]) -> int:
     """Return the number of frequencies at which a spare pair could settle."""
-    return int(np.unique(np.concatenate([block.s.imag for block in blocks])).size)
+    return int(shared_axis(blocks).size)
 
 
 def search(blocks: Sequence[Block], start: Solution | None = None, kind: PoleSet = NONE) -> Found:
@@ -301,7 +301,7 @@ def _allowed(
 
 def trial_grid(blocks: Sequence[Block], count: int) -> FloatArray:
     """Return frequencies at which to try a further mode: where the samples are."""
-    axis = np.unique(np.concatenate([block.s.imag for block in blocks]))
+    axis = shared_axis(blocks)
     axis = axis[axis > 0]
     if axis.size <= count:
         return axis
